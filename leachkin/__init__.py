@@ -1,0 +1,70 @@
+"""leachkin: from leach test sheets to extraction, kinetics, plant, cementation and a reagent budget.
+
+sheets -> tests -> metal balance -> observed extraction -> fitted rate law -> ore curve ->
+tanks, heap -> solution -> cementation -> reagents and budget -> report
+
+Public names are served on first use, so that importing the package costs nothing.
+"""
+
+from __future__ import annotations
+
+import importlib
+from typing import Any
+
+_HOME_OF = {
+    "LeachkinError": "leachkin.errors",
+    "InputProblems": "leachkin.errors",
+    "TableError": "leachkin.errors",
+    "UnitError": "leachkin.errors",
+    "MissingExtraError": "leachkin.errors",
+    "LeachkinWarning": "leachkin.errors",
+    "Problem": "leachkin.problems",
+    "ResultTable": "leachkin.result_table",
+    "SizeDistribution": "leachkin.testwork",
+    "Test": "leachkin.testwork",
+    "Observed": "leachkin.testwork",
+    "MetalBalance": "leachkin.testwork",
+    "metal_balance": "leachkin.testwork",
+    "observe": "leachkin.testwork",
+    "ParticleLaw": "leachkin.kinetics",
+    "RateLaw": "leachkin.kinetics",
+    "Resistance": "leachkin.kinetics",
+    "Reference": "leachkin.kinetics",
+    "OreCurve": "leachkin.kinetics",
+    "ReagentDemand": "leachkin.kinetics",
+    "FitResult": "leachkin.kinetics",
+    "fit_curve": "leachkin.kinetics",
+    "rank_laws": "leachkin.kinetics",
+    "fit_tests": "leachkin.kinetics",
+    "rank_tests": "leachkin.kinetics",
+    "fit_arrhenius": "leachkin.kinetics",
+    "tank_train": "leachkin.scaleup",
+    "heap": "leachkin.scaleup",
+    "standard_potential": "leachkin.chemistry",
+    "cell": "leachkin.chemistry",
+    "Solution": "leachkin.cementation",
+    "Precipitant": "leachkin.cementation",
+    "cementation_demand": "leachkin.cementation",
+    "reagent_budget": "leachkin.reagents",
+    "read_campaign": "leachkin.campaign",
+    "run_campaign": "leachkin.campaign",
+    "write_report": "leachkin.report",
+    "read_results": "leachkin.report",
+    "verify": "leachkin.published_checks",
+}
+
+__all__ = sorted([*_HOME_OF, "__version__"])
+
+
+def __getattr__(name: str) -> Any:
+    if name == "__version__":
+        from leachkin.run_record import program_version
+
+        return program_version()
+    if name in _HOME_OF:
+        return getattr(importlib.import_module(_HOME_OF[name]), name)
+    raise AttributeError(f"module 'leachkin' has no attribute {name!r}")
+
+
+def __dir__() -> list[str]:
+    return __all__

@@ -1,0 +1,5 @@
+"""Run the command line with ``python -m leachkin``."""
+
+from leachkin.cli.main import main
+
+main()

@@ -1,0 +1,260 @@
+"""What testwork hands on: tests, assays, balances and the observed values (frozen, no files)."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from typing import Literal
+
+import numpy as np
+from leachkin.testwork.sizes import SizeDistribution
+from numpy.typing import NDArray
+
+from leachkin.problems import Problem
+
+Array = NDArray[np.float64]
+AliquotPolicy = Literal[
+    "replaced by reagent solution", "replaced by water", "not replaced", "returned"
+]
+
+
+@dataclass(frozen=True)
+class Assays:
+    """Assays of one analyte at the times of a test.
+
+    Attributes
+    ----------
+    value : ndarray, shape (m,)
+        Concentration [g/L]; NaN where the cell was empty.
+    sd : ndarray, shape (m,)
+        One standard deviation [g/L].
+    bound : ndarray of int, shape (m,)
+        0 for a value, -1 for "less than value", +1 for "greater than value".
+    rows : tuple of int
+        Row of each assay in its file, as a person counts.
+    """
+
+    value: Array
+    sd: Array
+    bound: NDArray[np.int64]
+    rows: tuple[int, ...] = ()
+
+
+@dataclass(frozen=True)
+class History:
+    """Conditions of a test against time, piecewise linear between the given times.
+
+    Attributes
+    ----------
+    time_h, temperature_K : ndarray, shape (j,)
+    reagent_g_per_L : ndarray, shape (j,), or None
+        None where no reagent strength is known.
+    """
+
+    time_h: Array
+    temperature_K: Array
+    reagent_g_per_L: Array | None = None
+
+
+@dataclass(frozen=True)
+class Head:
+    """Head assay of one analyte in one domain or test.
+
+    Attributes
+    ----------
+    value_kg_per_t, sd_kg_per_t : float
+        Mean of the replicates and the standard deviation of that mean.
+    replicates : int
+    """
+
+    value_kg_per_t: float
+    sd_kg_per_t: float
+    replicates: int = 1
+
+
+@dataclass(frozen=True)
+class Product:
+    """A product weighed or measured and assayed when a test is closed out.
+
+    Attributes
+    ----------
+    name : str
+        filtrate, wash, residue, carbon, slurry, ...
+    is_solution : bool
+    amount : float
+        Mass [g] or volume [mL].
+    grade : mapping of analyte to Head-like (value, sd, count)
+        kg/t for a solid, g/L for a solution.
+    """
+
+    name: str
+    is_solution: bool
+    amount: float
+    grade: Mapping[str, tuple[float, float, int]]
+
+
+@dataclass(frozen=True)
+class Test:
+    """One test as read from the sheets, in base units.
+
+    Attributes
+    ----------
+    name, domain, kind : str
+        kind is "bottle roll", "stirred tank" or "column".
+    solids_g, solution_mL : float
+        Dry solids and starting solution.
+    sizes : SizeDistribution or None
+    temperature_K : float
+    reagent_g_per_L : float or None
+        Starting strength of the campaign's reagent.
+    stirring_rpm : float or None
+    history : History
+    aliquots : AliquotPolicy or None
+        None where the sheet does not say; then the balance is provisional.
+    time_h, aliquot_mL, makeup_mL : ndarray, shape (m,)
+    solution : mapping of analyte to Assays
+    reagent_added_g : ndarray, shape (m,), or None
+        Reagent added at or after each reading [g].
+    free_reagent_g_per_L : ndarray, shape (m,), or None
+    pH : ndarray, shape (m,), or None
+    products : tuple of Product
+    heads : mapping of analyte to Head
+        The assay heads that apply to this test.
+    residue_mass_sd_relative : float
+        Relative standard deviation of a weighed residue.
+    rows : mapping of file name to tuple of int
+        Where the test was read from.
+    problems : tuple of Problem
+    """
+
+    __test__ = False  # not a test case for pytest
+
+    name: str
+    domain: str
+    kind: str
+    solids_g: float
+    solution_mL: float
+    sizes: SizeDistribution | None
+    temperature_K: float
+    reagent_g_per_L: float | None
+    stirring_rpm: float | None
+    history: History
+    aliquots: AliquotPolicy | None
+    time_h: Array
+    aliquot_mL: Array
+    makeup_mL: Array
+    solution: Mapping[str, Assays]
+    reagent_added_g: Array | None = None
+    free_reagent_g_per_L: Array | None = None
+    pH: Array | None = None
+    products: tuple[Product, ...] = ()
+    heads: Mapping[str, Head] = field(default_factory=dict)
+    residue_mass_sd_relative: float = 0.003
+    rows: Mapping[str, tuple[int, ...]] = field(default_factory=dict)
+    problems: tuple[Problem, ...] = ()
+
+
+@dataclass(frozen=True)
+class MetalBalance:
+    """The metal balance of one analyte in one test.
+
+    Extractions are fractions of the head named in the field; NaN or None where they cannot be had.
+
+    Attributes
+    ----------
+    test, key, analyte : str
+        key is "domain/analyte".
+    time_h : ndarray, shape (m,)
+    dissolved_g : ndarray, shape (m,)
+        Metal dissolved by each reading, aliquots taken before it included [g].
+    uncorrected_g : ndarray, shape (m,)
+        Concentration times starting volume, what a sheet without correction would say [g].
+    extraction_on_assay_head, extraction_on_calculated_head : ndarray, shape (m,)
+    final_on_assay_head, final_on_calculated_head, final_by_tail : float or None
+        The three final extractions: solution over assay head, solution over calculated head,
+        assay head less tail.
+    head_assay_kg_per_t, head_calculated_kg_per_t : float or None
+    closure : float or None
+        Calculated head over assay head.
+    tail_kg_per_t, residue_g : float or None
+    sd : mapping of str to float
+        One standard deviation of each final figure, by field name.
+    provisional : bool
+        True where a tail or a policy is missing; the reasons stand in problems.
+    problems : tuple of Problem
+    """
+
+    test: str
+    key: str
+    analyte: str
+    time_h: Array
+    dissolved_g: Array
+    uncorrected_g: Array
+    extraction_on_assay_head: Array
+    extraction_on_calculated_head: Array
+    final_on_assay_head: float | None
+    final_on_calculated_head: float | None
+    final_by_tail: float | None
+    head_assay_kg_per_t: float | None
+    head_calculated_kg_per_t: float | None
+    closure: float | None
+    tail_kg_per_t: float | None
+    residue_g: float | None
+    sd: Mapping[str, float]
+    provisional: bool
+    problems: tuple[Problem, ...] = ()
+
+
+@dataclass(frozen=True)
+class Observed:
+    """Measured values of one analyte in one test, as a fit needs them.
+
+    The expected value of row i is ``head * (operator[i] @ E + offset[i]) + brought[i]`` with E the
+    extraction of all the metal at the m times. Extraction-only input has the identity operator and
+    a head held at 1.
+
+    Attributes
+    ----------
+    test, key : str
+        key is "domain/analyte".
+    time_h : ndarray, shape (m,)
+    operator : ndarray, shape (k, m)
+    offset, brought : ndarray, shape (k,)
+        offset in heads (a tail has head in it); brought is metal that came with make-up, in the
+        unit of value.
+    value, sd : ndarray, shape (k,)
+        g/L for solutions, kg/t for solids, fractions for extraction-only input.
+    bound : ndarray of int, shape (k,)
+        0 value, -1 "less than", +1 "greater than".
+    row_kind : tuple of str
+        "solution", "tail" or "extraction" for each row.
+    row_time_h : ndarray, shape (k,)
+    head_kg_per_t, head_sd_kg_per_t : float
+        Head assay and the standard deviation of this test's head about it (assay precision and
+        charge-to-charge scatter). head_sd 0 holds the head.
+    sizes : SizeDistribution or None
+    temperature_K : float
+    reagent_g_per_L, stirring_rpm : float or None
+    history : History or None
+    provisional : bool
+    """
+
+    test: str
+    key: str
+    time_h: Array
+    operator: Array
+    offset: Array
+    brought: Array
+    value: Array
+    sd: Array
+    bound: NDArray[np.int64]
+    row_kind: tuple[str, ...]
+    row_time_h: Array
+    head_kg_per_t: float
+    head_sd_kg_per_t: float
+    sizes: SizeDistribution | None = None
+    temperature_K: float = 298.15
+    reagent_g_per_L: float | None = None
+    stirring_rpm: float | None = None
+    history: History | None = None
+    provisional: bool = False
