@@ -83,6 +83,13 @@ def nearest_names(name: str, known: Iterable[str], count: int = 3) -> list[str]:
     >>> nearest_names("tempratur", ["temperature", "time", "reagent"])
     ['temperature']
     """
-    by_folded = {candidate.casefold(): candidate for candidate in known}
-    close = difflib.get_close_matches(name.casefold(), list(by_folded), n=count, cutoff=0.5)
-    return [by_folded[match] for match in close]
+    scored = [
+        (_likeness(name.casefold(), candidate.casefold()), _likeness(name, candidate), candidate)
+        for candidate in dict.fromkeys(known)
+    ]
+    near = sorted((item for item in scored if item[0] >= 0.5), key=lambda item: item[:2])
+    return [candidate for _, _, candidate in near[::-1][:count]]
+
+
+def _likeness(first: str, second: str) -> float:
+    return difflib.SequenceMatcher(None, first, second).ratio()

@@ -42,8 +42,9 @@ ONLY_IN = {
     "lmfit": {"inference"},
     "emcee": {"inference"},
 }
-MODULES = sorted(p for p in ROOT.rglob("*.py") if p.parent != ROOT or p.stem not in
-                 ("__init__", "__main__"))
+MODULES = sorted(
+    p for p in ROOT.rglob("*.py") if p.parent != ROOT or p.stem not in ("__init__", "__main__")
+)
 
 
 def part_of(module: Path) -> str:
@@ -84,6 +85,9 @@ def test_every_part_is_in_the_layers():
 
 
 def test_modules_stay_short():
-    long = {str(m.relative_to(ROOT)): n for m in MODULES
-            if (n := len(m.read_text(encoding="utf-8").splitlines())) > 500}
+    long = {
+        str(m.relative_to(ROOT)): n
+        for m in MODULES
+        if (n := len(m.read_text(encoding="utf-8").splitlines())) > 500
+    }
     assert not long, f"modules over 500 lines: {long}"

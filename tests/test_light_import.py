@@ -9,7 +9,9 @@ HEAVY = ("numpy", "scipy", "pandas", "lmfit", "matplotlib", "pint", "openpyxl", 
 def loaded_after(code: str) -> set[str]:
     run = subprocess.run(
         [sys.executable, "-W", "error", "-c", f"{code}\nimport sys; print(*sys.modules)"],
-        capture_output=True, text=True, check=True,
+        capture_output=True,
+        text=True,
+        check=True,
     )
     return {name.split(".")[0] for name in run.stdout.split()}
 
