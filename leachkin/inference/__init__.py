@@ -1,0 +1,39 @@
+"""Least squares, intervals, ranking and draws. Knows no law of leaching."""
+
+from leachkin.inference.covariance import Held, held_covariance, one_sided_reach
+from leachkin.inference.criteria import akaike_weights, corrected_aic, schwarz_bic
+from leachkin.inference.distributions import (
+    chi_square_upper_tail,
+    normal_multiplier,
+    student_multiplier,
+)
+from leachkin.inference.draws import draw_vectors
+from leachkin.inference.estimate import Estimate, Interval
+from leachkin.inference.least_squares import LeastSquaresProblem, least_squares
+from leachkin.inference.limits import below_limit_residual
+from leachkin.inference.scales import Scale, from_natural, natural_slope, to_natural
+from leachkin.inference.straight_line import StraightLine, weighted_line
+
+__all__ = [
+    "Estimate",
+    "Held",
+    "Interval",
+    "LeastSquaresProblem",
+    "Scale",
+    "StraightLine",
+    "akaike_weights",
+    "below_limit_residual",
+    "chi_square_upper_tail",
+    "corrected_aic",
+    "draw_vectors",
+    "from_natural",
+    "held_covariance",
+    "least_squares",
+    "natural_slope",
+    "normal_multiplier",
+    "one_sided_reach",
+    "schwarz_bic",
+    "student_multiplier",
+    "to_natural",
+    "weighted_line",
+]
