@@ -14,7 +14,8 @@ from typing import Protocol
 class _ProblemLike(Protocol):
     """Anything that prints as one problem."""
 
-    level: str
+    @property
+    def level(self) -> str: ...
 
     def __str__(self) -> str: ...
 
