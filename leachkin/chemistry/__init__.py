@@ -1,0 +1,83 @@
+"""Chemistry: formulas, stoichiometry, potentials, cells and cyanide; no ore and no plant in it."""
+
+from leachkin.chemistry.cells import Cell, cell, cell_from_potentials, residual_mol_per_L
+from leachkin.chemistry.cyanide import (
+    StabilityConstant,
+    check_pH,
+    hcn_headspace_ppm,
+    hcn_pKa,
+    hcn_share,
+    stability_constants,
+)
+from leachkin.chemistry.formulas import canonical_species, charge_of, molar_mass, parse_formula
+from leachkin.chemistry.potentials import (
+    SOURCE_ORDER,
+    Potential,
+    PotentialSpread,
+    canonical_couple,
+    complex_potential,
+    known_couples,
+    potential_by_source,
+    potentials_of,
+    standard_potential,
+)
+from leachkin.chemistry.stoichiometry import (
+    StoichiometricUse,
+    electron_factor,
+    factor,
+    hydrogen_Nm3_per_kg,
+    named_factor,
+    stoichiometric_use,
+    stoichiometric_uses,
+    stoichiometry_table,
+)
+from leachkin.chemistry.thermodynamics import (
+    check_temperature,
+    gibbs_from_potential,
+    ln_equilibrium_constant,
+    nernst,
+    potential_from_formation,
+    potential_from_gibbs,
+    temperature_coefficient_from_entropies,
+)
+
+__all__ = [
+    "SOURCE_ORDER",
+    "Cell",
+    "Potential",
+    "PotentialSpread",
+    "StabilityConstant",
+    "StoichiometricUse",
+    "canonical_couple",
+    "canonical_species",
+    "cell",
+    "cell_from_potentials",
+    "charge_of",
+    "check_pH",
+    "check_temperature",
+    "complex_potential",
+    "electron_factor",
+    "factor",
+    "gibbs_from_potential",
+    "hcn_headspace_ppm",
+    "hcn_pKa",
+    "hcn_share",
+    "hydrogen_Nm3_per_kg",
+    "known_couples",
+    "ln_equilibrium_constant",
+    "molar_mass",
+    "named_factor",
+    "nernst",
+    "parse_formula",
+    "potential_by_source",
+    "potential_from_formation",
+    "potential_from_gibbs",
+    "potentials_of",
+    "residual_mol_per_L",
+    "stability_constants",
+    "standard_potential",
+    "stoichiometric_use",
+    "stoichiometric_uses",
+    "stoichiometry_table",
+    "temperature_coefficient_from_entropies",
+]
