@@ -1,8 +1,14 @@
 """Testwork: sheets become tests, metal balances and observed values."""
 
+from leachkin.testwork.balance import metal_balance
+from leachkin.testwork.explain import explain_balance
+from leachkin.testwork.observe import observe, observed_from_extraction
+from leachkin.testwork.read import domain_heads, read_tests
+from leachkin.testwork.reagent_use import ReagentUse, reagent_use
 from leachkin.testwork.records import (
     AliquotPolicy,
     Assays,
+    Exclusion,
     Head,
     History,
     MetalBalance,
@@ -10,16 +16,33 @@ from leachkin.testwork.records import (
     Product,
     Test,
 )
+from leachkin.testwork.result_tables import balance_table, extraction_table, test_inventory
+from leachkin.testwork.settings import BalanceLimits, TestworkSettings, read_precision
 from leachkin.testwork.sizes import SizeDistribution
 
 __all__ = [
     "AliquotPolicy",
     "Assays",
+    "BalanceLimits",
+    "Exclusion",
     "Head",
     "History",
     "MetalBalance",
     "Observed",
     "Product",
+    "ReagentUse",
     "SizeDistribution",
     "Test",
+    "TestworkSettings",
+    "balance_table",
+    "domain_heads",
+    "explain_balance",
+    "extraction_table",
+    "metal_balance",
+    "observe",
+    "observed_from_extraction",
+    "read_precision",
+    "read_tests",
+    "reagent_use",
+    "test_inventory",
 ]

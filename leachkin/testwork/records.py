@@ -7,10 +7,10 @@ from dataclasses import dataclass, field
 from typing import Literal
 
 import numpy as np
-from leachkin.testwork.sizes import SizeDistribution
 from numpy.typing import NDArray
 
 from leachkin.problems import Problem
+from leachkin.testwork.sizes import SizeDistribution
 
 Array = NDArray[np.float64]
 AliquotPolicy = Literal[
@@ -65,11 +65,19 @@ class Head:
     value_kg_per_t, sd_kg_per_t : float
         Mean of the replicates and the standard deviation of that mean.
     replicates : int
+    scatter_kg_per_t : float
+        Standard deviation of one charge's head about the mean of its domain.
     """
 
     value_kg_per_t: float
     sd_kg_per_t: float
     replicates: int = 1
+    scatter_kg_per_t: float = 0.0
+
+    @property
+    def charge_sd_kg_per_t(self) -> float:
+        """Standard deviation of one charge's head about the assay, both parts together."""
+        return float(np.hypot(self.sd_kg_per_t, self.scatter_kg_per_t))
 
 
 @dataclass(frozen=True)
@@ -79,18 +87,45 @@ class Product:
     Attributes
     ----------
     name : str
-        filtrate, wash, residue, carbon, slurry, ...
+        filtrate, wash, residue, carbon, slurry solids, ...
     is_solution : bool
-    amount : float
-        Mass [g] or volume [mL].
-    grade : mapping of analyte to Head-like (value, sd, count)
-        kg/t for a solid, g/L for a solution.
+    amount : float or None
+        Mass [g] or volume [mL]; None where it was not written down.
+    grade : mapping of analyte to (value, sd of the value, count)
+        Mean of the replicates, kg/t for a solid, g/L for a solution.
+    bound : mapping of analyte to int
+        -1 where every replicate was below its limit, +1 above; absent for values.
     """
 
     name: str
     is_solution: bool
-    amount: float
+    amount: float | None
     grade: Mapping[str, tuple[float, float, int]]
+    bound: Mapping[str, int] = field(default_factory=dict)
+
+    @property
+    def is_dissolved_metal(self) -> bool:
+        """True for solutions, and for carbon or resin, which took their metal from solution."""
+        words = self.name.casefold().replace("-", " ").split()
+        return self.is_solution or "carbon" in words or "resin" in words
+
+
+@dataclass(frozen=True)
+class Exclusion:
+    """A point or a whole test that the user keeps out of the fits, with the reason.
+
+    Attributes
+    ----------
+    test : str
+    time_h : float or None
+        None for the whole test.
+    reason, by : str
+    """
+
+    test: str
+    time_h: float | None
+    reason: str
+    by: str
 
 
 @dataclass(frozen=True)
@@ -111,7 +146,10 @@ class Test:
     history : History
     aliquots : AliquotPolicy or None
         None where the sheet does not say; then the balance is provisional.
-    time_h, aliquot_mL, makeup_mL : ndarray, shape (m,)
+    time_h, aliquot_mL : ndarray, shape (m,)
+    makeup_mL : ndarray, shape (m,)
+        Made up after each reading; NaN where not written, then the policy says it: as much as the
+        aliquot where it is replaced, and nothing otherwise.
     solution : mapping of analyte to Assays
     reagent_added_g : ndarray, shape (m,), or None
         Reagent added at or after each reading [g].
@@ -125,6 +163,19 @@ class Test:
     rows : mapping of file name to tuple of int
         Where the test was read from.
     problems : tuple of Problem
+    reagent : str or None
+        What reagent_g_per_L, reagent_added_g and free_reagent_g_per_L are of.
+    start_metal_g_per_L : mapping of analyte to float
+        Metal in the starting solution.
+    makeup_metal_g_per_L : mapping of analyte to ndarray, shape (m,)
+        Metal in what was made up after each reading.
+    added_g : mapping of reagent to ndarray, shape (m,)
+        Every reagent added, the campaign's own among them [g].
+    sizes_by_analyte : mapping of analyte to SizeDistribution
+        Where sieve fractions were assayed.
+    exclusions : tuple of Exclusion
+    files : mapping of str to str
+        File that each kind of row came from: "tests", "readings", "closeout".
     """
 
     __test__ = False  # not a test case for pytest
@@ -152,13 +203,42 @@ class Test:
     residue_mass_sd_relative: float = 0.003
     rows: Mapping[str, tuple[int, ...]] = field(default_factory=dict)
     problems: tuple[Problem, ...] = ()
+    reagent: str | None = None
+    start_metal_g_per_L: Mapping[str, float] = field(default_factory=dict)
+    makeup_metal_g_per_L: Mapping[str, Array] = field(default_factory=dict)
+    added_g: Mapping[str, Array] = field(default_factory=dict)
+    sizes_by_analyte: Mapping[str, SizeDistribution] = field(default_factory=dict)
+    exclusions: tuple[Exclusion, ...] = ()
+    files: Mapping[str, str] = field(default_factory=dict)
+
+    @property
+    def is_excluded(self) -> bool:
+        """True where the user keeps the whole test out of the fits."""
+        return any(exclusion.time_h is None for exclusion in self.exclusions)
+
+    @property
+    def is_closed_out(self) -> bool:
+        """True where a solid product that holds what did not dissolve has been assayed."""
+        return any(not p.is_dissolved_metal and p.grade for p in self.products)
+
+    @property
+    def state(self) -> str:
+        """One of "excluded", "waiting for an answer", "no readings", "running" or "ready"."""
+        if self.is_excluded:
+            return "excluded"
+        if any(problem.level == "ask" for problem in self.problems):
+            return "waiting for an answer"
+        if not self.time_h.size:
+            return "no readings"
+        return "ready" if self.is_closed_out else "running"
 
 
 @dataclass(frozen=True)
 class MetalBalance:
     """The metal balance of one analyte in one test.
 
-    Extractions are fractions of the head named in the field; NaN or None where they cannot be had.
+    Extractions are fractions of the head named in the field. What cannot be had is None, and NaN
+    in an array: at a reading without an assay of this analyte, or everywhere without that head.
 
     Attributes
     ----------
@@ -182,6 +262,8 @@ class MetalBalance:
     provisional : bool
         True where a tail or a policy is missing; the reasons stand in problems.
     problems : tuple of Problem
+    final_dissolved_g, final_undissolved_g : float or None
+        Metal in all solutions and carbon, and in all other solids, at close-out [g].
     """
 
     test: str
@@ -203,6 +285,13 @@ class MetalBalance:
     sd: Mapping[str, float]
     provisional: bool
     problems: tuple[Problem, ...] = ()
+    final_dissolved_g: float | None = None
+    final_undissolved_g: float | None = None
+
+    @property
+    def correction_g(self) -> Array:
+        """What the aliquot and make-up arithmetic adds to concentration times volume [g]."""
+        return self.dissolved_g - self.uncorrected_g
 
 
 @dataclass(frozen=True)
@@ -231,12 +320,17 @@ class Observed:
     row_time_h : ndarray, shape (k,)
     head_kg_per_t, head_sd_kg_per_t : float
         Head assay and the standard deviation of this test's head about it (assay precision and
-        charge-to-charge scatter). head_sd 0 holds the head.
+        charge-to-charge scatter). head_sd 0 holds the head. Without an assay the calculated head
+        stands here with its own value as standard deviation, which tells a fit next to nothing.
     sizes : SizeDistribution or None
     temperature_K : float
     reagent_g_per_L, stirring_rpm : float or None
     history : History or None
     provisional : bool
+    sd_given : bool
+        False where no standard deviation is known and ``sd`` is 1 throughout (equal weights).
+    rows : tuple of int
+        Row in the file of each value, 0 where there is none.
     """
 
     test: str
@@ -258,3 +352,23 @@ class Observed:
     stirring_rpm: float | None = None
     history: History | None = None
     provisional: bool = False
+    sd_given: bool = True
+    rows: tuple[int, ...] = ()
+
+    def expected(self, extraction: Array, head_kg_per_t: float | None = None) -> Array:
+        """Return the expected values for an extraction history.
+
+        Parameters
+        ----------
+        extraction : ndarray, shape (..., m)
+            Extraction of all the metal at ``time_h``.
+        head_kg_per_t : float or None
+            Head of this charge; the assay by default.
+
+        Returns
+        -------
+        ndarray, shape (..., k)
+        """
+        head = self.head_kg_per_t if head_kg_per_t is None else head_kg_per_t
+        linear = np.asarray(extraction) @ self.operator.T + self.offset
+        return np.asarray(head * linear + self.brought)

@@ -1,0 +1,246 @@
+"""What a chemist would remark about a metal balance."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from leachkin.problems import Level, Problem
+from leachkin.testwork.records import MetalBalance, Test
+from leachkin.testwork.recursion import assays_for_balance, solution_ledger
+from leachkin.testwork.settings import BalanceLimits
+
+#: A fall of concentration is remarked on above this many standard deviations.
+_CLEAR_FALL_SD = 2.0
+#: Mass loss shown as the other bound where the residue was not weighed.
+_BOUND_OF_MASS_LOSS = 0.10
+
+
+def balance_notes(
+    test: Test, balance: MetalBalance, mass_is_known: bool, limits: BalanceLimits | None = None
+) -> list[Problem]:
+    """Return the remarks about a balance, most important first."""
+    chosen = limits or BalanceLimits()
+    return [
+        *_no_tail(test, balance),
+        *_no_head(test, balance),
+        *_over_extraction(test, balance, chosen),
+        *_closure(test, balance, chosen),
+        *_residue_mass(test, balance, mass_is_known),
+        *_fall(test, balance),
+        *_bounded(test, balance),
+    ]
+
+
+def policy_note(test: Test, replaced: MetalBalance, unreplaced: MetalBalance) -> Problem:
+    """Return the question about a blank aliquot policy, with the size of the difference."""
+    pairs = (
+        (replaced.final_on_calculated_head, unreplaced.final_on_calculated_head),
+        (replaced.final_on_assay_head, unreplaced.final_on_assay_head),
+    )
+    found = f"test {test.name} does not say whether aliquots were replaced"
+    for one, other in pairs:
+        if one is not None and other is not None:
+            found += (
+                f": the final {replaced.analyte} extraction is {_percent(one)} if they were and "
+                f"{_percent(other)} if not, {100 * abs(one - other):.1f} points apart; the first "
+                f"is taken meanwhile"
+            )
+            break
+    return _note(
+        test,
+        "tests",
+        "aliquots",
+        found,
+        "replaced by reagent solution / replaced by water / not replaced / returned",
+        "write one of these in the column aliquots",
+        level="ask",
+    )
+
+
+def unused_wash(test: Test, analyte: str, by_filtrate: bool) -> list[Problem]:
+    """Return a note where solutions were assayed and there is no filtrate to go with them."""
+    names = [p.name for p in test.products if p.is_solution and analyte in p.grade]
+    if by_filtrate or not names:
+        return []
+    return [
+        _note(
+            test,
+            "closeout",
+            "product",
+            f"test {test.name} has no filtrate with a volume and a {analyte} assay: "
+            f"{', '.join(names)} not counted, the last reading stands for all the solution",
+            "a filtrate row with a volume and an assay",
+            "add it, and the metal is summed over all solutions",
+        )
+    ]
+
+
+def _note(
+    test: Test,
+    sheet: str,
+    column: str,
+    found: str,
+    allowed: str = "",
+    try_this: str = "",
+    row: int | None = None,
+    level: Level = "note",
+) -> Problem:
+    file = test.files.get(sheet, "")
+    if row is None and sheet == "tests" and test.rows.get(file):
+        row = test.rows[file][0]
+    return Problem(file, row, column, level, found, allowed, try_this)
+
+
+def _percent(fraction: float) -> str:
+    return f"{100.0 * fraction:.1f} %"
+
+
+def _no_tail(test: Test, balance: MetalBalance) -> list[Problem]:
+    if balance.tail_kg_per_t is not None:
+        return []
+    state = "is not closed out" if not test.is_closed_out else "has no tail assay"
+    figure = "no extraction"
+    if balance.final_on_assay_head is not None:
+        figure = f"{_percent(balance.final_on_assay_head)} on the assay head"
+    found = f"test {test.name} {state} for {balance.analyte}: {figure}, provisional"
+    try_this = "add its residue to the close-out sheet when it is assayed"
+    return [_note(test, "closeout", "", found, "a residue mass and assay", try_this)]
+
+
+def _no_head(test: Test, balance: MetalBalance) -> list[Problem]:
+    if balance.head_assay_kg_per_t is not None:
+        return []
+    found = f"there is no {balance.analyte} head assay for test {test.name} ({test.domain})"
+    if balance.head_calculated_kg_per_t is None:
+        found += ", nor a calculated head: no extraction can be had"
+    return [
+        _note(
+            test, "heads", "", found, "a head for its domain or size", "add it to the heads sheet"
+        )
+    ]
+
+
+def _over_extraction(test: Test, balance: MetalBalance, limits: BalanceLimits) -> list[Problem]:
+    extraction = balance.extraction_on_assay_head
+    high = np.flatnonzero(np.nan_to_num(extraction) > limits.over_extraction)
+    if not high.size:
+        return []
+    i = int(high[np.argmax(extraction[high])])
+    assays = test.solution[balance.analyte]
+    return [
+        _note(
+            test,
+            "readings",
+            balance.analyte,
+            f"test {test.name} has {_percent(float(extraction[i]))} of the assay head in solution "
+            f"at {balance.time_h[i]:g} h",
+            f"up to about {_percent(limits.over_extraction)}",
+            "a head assay that reads low, an assay in mg/L under g/L, a dilution applied twice, "
+            "an aliquot counted twice, a wrong solids mass",
+            row=assays.rows[i] if assays.rows else None,
+        )
+    ]
+
+
+def _closure(test: Test, balance: MetalBalance, limits: BalanceLimits) -> list[Problem]:
+    low, high = limits.closure_of(balance.analyte)
+    if balance.closure is None or low <= balance.closure <= high:
+        return []
+    three = ", ".join(
+        f"{_percent(value)} {name}"
+        for value, name in (
+            (balance.final_on_assay_head, "on the assay head"),
+            (balance.final_on_calculated_head, "on the calculated head"),
+            (balance.final_by_tail, "by the tail"),
+        )
+        if value is not None
+    )
+    return [
+        _note(
+            test,
+            "closeout",
+            balance.analyte,
+            f"test {test.name} closes at {balance.closure:.3f} (calculated over assay head); the "
+            f"basis matters: {three}",
+            f"{low:.2f} to {high:.2f}",
+            "repeat the head assay, the tail assay or the last solution; the balance alone does "
+            "not say which",
+        )
+    ]
+
+
+def _residue_mass(test: Test, balance: MetalBalance, mass_is_known: bool) -> list[Problem]:
+    solids = [p for p in test.products if not p.is_dissolved_metal and p.amount is not None]
+    mass = sum(p.amount or 0.0 for p in solids)
+    if mass > test.solids_g * (1.0 + 2.0 * test.residue_mass_sd_relative):
+        found = f"test {test.name} has {mass:g} g of residue from a charge of {test.solids_g:g} g"
+        try_this = "was it dry? Salts left in it, or a filter paper, also weigh"
+        return [_note(test, "closeout", "mass (g)", found, "up to the charge", try_this)]
+    dissolved, left = balance.final_dissolved_g, balance.final_undissolved_g
+    if mass_is_known or not dissolved or left is None:
+        return []
+    lighter = dissolved / (dissolved + left * (1.0 - _BOUND_OF_MASS_LOSS))
+    found = (
+        f"the residue of test {test.name} was not weighed: "
+        f"{_percent(dissolved / (dissolved + left))} without a loss of mass, {_percent(lighter)} "
+        f"with a loss of {100 * _BOUND_OF_MASS_LOSS:.0f} %"
+    )
+    return [_note(test, "closeout", "mass (g)", found, "a dry mass", "weigh the residue")]
+
+
+def _fall(test: Test, balance: MetalBalance) -> list[Problem]:
+    """Say how much of a falling concentration is dilution by make-up."""
+    if balance.analyte not in test.solution or balance.time_h.size < 2:
+        return []
+    used = assays_for_balance(test, balance.analyte)
+    peak, last = int(np.argmax(used.value)), used.value.size - 1
+    noise = float(np.hypot(used.sd[peak], used.sd[last]))
+    fall = float(used.value[peak] - used.value[last])
+    if used.value[peak] <= 0.0 or fall <= _CLEAR_FALL_SD * noise or (used.bound != 0).any():
+        return []
+    diluted = _diluted(test, balance.analyte, float(used.value[peak]), peak, last)
+    rest = diluted - float(used.value[last])
+    words = "the rest is within the precision of the assays"
+    if rest > _CLEAR_FALL_SD * noise:
+        words = "the rest may be precipitation, or an assay"
+    elif rest < -_CLEAR_FALL_SD * noise:
+        words = "so it was still leaching"
+    share = 100.0 / float(used.value[peak])
+    found = (
+        f"{balance.analyte} in test {test.name} falls by {share * fall:.1f} % from "
+        f"{balance.time_h[peak]:g} h to {balance.time_h[last]:g} h; dilution at the aliquots "
+        f"accounts for {share * (used.value[peak] - diluted):.1f} %, {words}"
+    )
+    row = used.rows[last] if used.rows else None
+    return [_note(test, "readings", balance.analyte, found, row=row)]
+
+
+def _diluted(test: Test, analyte: str, concentration: float, first: int, last: int) -> float:
+    """Concentration at a later reading if nothing leached in between [g/L]."""
+    ledger = solution_ledger(test)
+    strength = test.makeup_metal_g_per_L.get(analyte, np.zeros(test.time_h.size))
+    for i in range(first, last):
+        kept = concentration * (ledger.volume_mL[i] - ledger.removed_mL[i])
+        came = float(np.nan_to_num(strength[i])) * ledger.makeup_mL[i]
+        concentration = (kept + came) / ledger.volume_mL[i + 1]
+    return float(concentration)
+
+
+def _bounded(test: Test, balance: MetalBalance) -> list[Problem]:
+    """Say where an assay above a limit makes the figures lower bounds."""
+    assays = test.solution.get(balance.analyte)
+    if assays is None or not (assays.bound > 0).any():
+        return []
+    i = int(np.flatnonzero(assays.bound > 0)[-1])
+    return [
+        _note(
+            test,
+            "readings",
+            balance.analyte,
+            f"{balance.analyte} in test {test.name} is above {assays.value[i]:g} g/L at "
+            f"{test.time_h[i]:g} h: its extraction is a lower bound",
+            "an assay in range",
+            "dilute and repeat it",
+            row=assays.rows[i] if assays.rows else None,
+        )
+    ]

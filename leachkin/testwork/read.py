@@ -1,0 +1,341 @@
+"""From sheets to tests: the sheets are read, and each test gets what belongs to it."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from leachkin.files import Sheet
+from leachkin.problems import Problem, unknown_name
+from leachkin.testwork.closeout_sheet import read_closeout_sheet
+from leachkin.testwork.heads_sheet import Heads, read_heads_sheet
+from leachkin.testwork.names import POLICIES, TestNames, fold_name
+from leachkin.testwork.readings_sheet import Readings, read_readings_sheet
+from leachkin.testwork.reagent_use import history_of
+from leachkin.testwork.records import Array, Exclusion, Head, History, Product, Test
+from leachkin.testwork.recursion import solution_ledger
+from leachkin.testwork.settings import TestworkSettings
+from leachkin.testwork.sieves_sheet import SieveTable, read_sieves_sheet
+from leachkin.testwork.sizes import SizeDistribution
+from leachkin.testwork.tests_sheet import ROOM_TEMPERATURE_K, TestRow, read_tests_sheet
+
+SHEETS = ("tests", "readings", "heads", "closeout", "sieves")
+
+
+@dataclass(frozen=True)
+class _Parts:
+    """What the sheets hold, by test."""
+
+    readings: Mapping[str, Readings]
+    closeout: Mapping[str, tuple[tuple[Product, ...], tuple[int, ...]]]
+    heads: Heads
+    sieves: Mapping[str, SieveTable]
+    files: Mapping[str, str]
+
+
+def read_tests(
+    tables: Mapping[str, Sheet], settings: TestworkSettings
+) -> tuple[tuple[Test, ...], tuple[Problem, ...]]:
+    """Read the sheets of a campaign into tests.
+
+    Parameters
+    ----------
+    tables : mapping of str to Sheet
+        Out of "tests", "readings", "heads", "closeout" and "sieves"; those that are there.
+    settings : TestworkSettings
+
+    Returns
+    -------
+    tests : tuple of Test
+        In the order of the tests sheet; empty without one.
+    problems : tuple of Problem
+        Everything that there is to say about the sheets, those of opening the files left out
+        (they stand in each ``Sheet.problems``). Those about the row of a test stand in its
+        ``problems`` too. After a stop the tests hold what could be read.
+    """
+    problems: list[Problem] = []
+    if "tests" not in tables:
+        return (), tuple(_no_tests_sheet(tables))
+    rows = read_tests_sheet(tables["tests"], settings, problems)
+    parts = _read_parts(tables, settings, rows, problems)
+    tests = [_test(row, parts, settings, problems) for row in rows.values()]
+    problems.extend(_exclusion_problems(settings, tests))
+    return tuple(_with_their_problems(tests, problems)), tuple(problems)
+
+
+def domain_heads(
+    sheet: Sheet, settings: TestworkSettings, domain: str
+) -> tuple[dict[str, Head], tuple[Problem, ...]]:
+    """Return the assay heads of a domain as a whole, by analyte, without any test.
+
+    Parameters
+    ----------
+    sheet : Sheet
+        The heads sheet.
+    settings : TestworkSettings
+    domain : str
+
+    Returns
+    -------
+    heads : dict of analyte to Head
+    problems : tuple of Problem
+    """
+    problems: list[Problem] = []
+    return read_heads_sheet(sheet, settings, (), problems).of(domain), tuple(problems)
+
+
+def _no_tests_sheet(tables: Mapping[str, Sheet]) -> list[Problem]:
+    for key in ("readings", "closeout"):
+        if key in tables:
+            return [
+                Problem(
+                    tables[key].file,
+                    None,
+                    "",
+                    "stop",
+                    "there is no tests sheet that says what these tests are",
+                    "a tests sheet with test, dry solids (g), solution (mL), aliquots",
+                    'name it in the settings: tests = "tests.csv" under [tables]',
+                )
+            ]
+    return []
+
+
+def _read_parts(
+    tables: Mapping[str, Sheet],
+    settings: TestworkSettings,
+    rows: Mapping[str, TestRow],
+    problems: list[Problem],
+) -> _Parts:
+    names = TestNames(rows)
+    readings: Mapping[str, Readings] = {}
+    closeout: Mapping[str, tuple[tuple[Product, ...], tuple[int, ...]]] = {}
+    heads, sieves = Heads(), {}
+    if "readings" in tables:
+        readings = read_readings_sheet(tables["readings"], settings, names, problems)
+    if "closeout" in tables:
+        closeout = read_closeout_sheet(tables["closeout"], settings, names, problems)
+    if "heads" in tables:
+        domains = [row.domain for row in rows.values()]
+        heads = read_heads_sheet(tables["heads"], settings, domains, problems)
+    if "sieves" in tables:
+        sieves = read_sieves_sheet(tables["sieves"], settings, problems)
+    files = {key: sheet.file for key, sheet in tables.items()}
+    return _Parts(readings, closeout, heads, sieves, files)
+
+
+def _test(row: TestRow, parts: _Parts, settings: TestworkSettings, problems: list[Problem]) -> Test:
+    readings = parts.readings.get(row.name)
+    products, closeout_rows = parts.closeout.get(row.name, ((), ()))
+    table = parts.sieves.get(fold_name(row.name))
+    if table is None and row.size_mm is None:
+        table = parts.sieves.get(fold_name(row.domain)) or parts.sieves.get("")
+    sizes = table.sizes if table is not None else None
+    if table is None and row.size_mm is not None:
+        sizes = SizeDistribution.from_classes(list(row.size_mm), [1.0])
+    floor, proportional = settings.precision_of("residue")
+    temperature = _temperature(row, readings, parts, problems)
+    test = Test(
+        name=row.name,
+        domain=row.domain,
+        kind=row.kind,
+        solids_g=row.solids_g,
+        solution_mL=row.solution_mL,
+        sizes=sizes,
+        temperature_K=temperature,
+        reagent_g_per_L=row.reagent_g_per_L,
+        stirring_rpm=row.stirring_rpm,
+        history=History(np.zeros(1), np.full(1, temperature)),
+        aliquots=row.aliquots,
+        time_h=np.zeros(0),
+        aliquot_mL=np.zeros(0),
+        makeup_mL=np.zeros(0),
+        solution={},
+        products=products,
+        heads=parts.heads.of(row.domain, row.size_mm, row.name),
+        residue_mass_sd_relative=proportional + floor / row.solids_g,
+        rows=_rows_of(row, readings, closeout_rows, parts),
+        reagent=settings.reagent or None,
+        start_metal_g_per_L=row.start_metal_g_per_L,
+        sizes_by_analyte=table.by_analyte if table is not None else {},
+        exclusions=tuple(e for e in settings.exclusions if e.test == row.name),
+        files=parts.files,
+    )
+    if readings is not None:
+        test = _with_readings(test, readings, settings, problems)
+    _policy_problem(test, row, problems)
+    return test
+
+
+def _temperature(
+    row: TestRow, readings: Readings | None, parts: _Parts, problems: list[Problem]
+) -> float:
+    """The temperature of a test: as written, or the mean of its log, or asked about."""
+    if row.temperature_K is not None:
+        return row.temperature_K
+    logged = readings.temperature_K if readings is not None else None
+    if logged is not None and not np.isnan(logged).all():
+        return float(np.nanmean(logged))
+    problems.append(
+        Problem(
+            parts.files["tests"],
+            row.row,
+            "temperature (degC)",
+            "ask",
+            f"test {row.name} has no temperature; 25 degC is taken meanwhile",
+            "a temperature for each test, here or at its readings",
+            "fill in the cell",
+        )
+    )
+    return ROOM_TEMPERATURE_K
+
+
+def _rows_of(
+    row: TestRow, readings: Readings | None, closeout_rows: tuple[int, ...], parts: _Parts
+) -> dict[str, tuple[int, ...]]:
+    found: dict[str, tuple[int, ...]] = {parts.files["tests"]: (row.row,)}
+    for key, rows in (
+        ("readings", readings.rows if readings is not None else ()),
+        ("closeout", closeout_rows),
+    ):
+        if rows:
+            file = parts.files[key]
+            found[file] = (*found.get(file, ()), *rows)
+    return found
+
+
+def _with_readings(
+    test: Test, readings: Readings, settings: TestworkSettings, problems: list[Problem]
+) -> Test:
+    count = readings.time_h.size
+    reagent = settings.reagent or _only(readings.free_g_per_L) or _only(readings.added_g)
+    test = replace(
+        test,
+        time_h=readings.time_h,
+        aliquot_mL=_aliquots(test, readings, problems),
+        makeup_mL=np.full(count, np.nan) if readings.makeup_mL is None else readings.makeup_mL,
+        solution=readings.assays,
+        pH=readings.pH,
+        reagent=reagent,
+        reagent_added_g=readings.added_g.get(reagent or ""),
+        free_reagent_g_per_L=readings.free_g_per_L.get(reagent or ""),
+        added_g=readings.added_g,
+        makeup_metal_g_per_L=readings.makeup_metal_g_per_L,
+    )
+    test = _start_strength(test, problems)
+    ledger = solution_ledger(test)
+    if count and (ledger.volume_mL - ledger.removed_mL).min() <= 0.0:
+        i = int(np.argmin(ledger.volume_mL - ledger.removed_mL))
+        problems.append(_drained(test, readings, i))
+        nothing = np.zeros(count)
+        return replace(test, aliquot_mL=nothing, makeup_mL=nothing)
+    return replace(test, history=history_of(test, readings.temperature_K))
+
+
+def _only(columns: Mapping[str, Array]) -> str | None:
+    return next(iter(columns)) if len(columns) == 1 else None
+
+
+def _aliquots(test: Test, readings: Readings, problems: list[Problem]) -> Array:
+    count = readings.time_h.size
+    written = np.full(count, np.nan) if readings.aliquot_mL is None else readings.aliquot_mL
+    if np.isnan(written).any() and test.aliquots != "returned":
+        i = int(np.flatnonzero(np.isnan(written))[0])
+        problems.append(
+            Problem(
+                test.files["readings"],
+                readings.rows[i],
+                "aliquot (mL)",
+                "ask",
+                f"test {test.name} has readings without an aliquot volume; taken as 0 mL meanwhile",
+                "a volume for each reading, 0 where nothing was taken out",
+                'fill in the cells, or add a column "aliquot (mL)"',
+            )
+        )
+    return np.nan_to_num(written)
+
+
+def _start_strength(test: Test, problems: list[Problem]) -> Test:
+    """The titration at time 0 where the tests sheet has no starting strength."""
+    free = test.free_reagent_g_per_L
+    if test.reagent_g_per_L is not None or free is None:
+        return test
+    if test.time_h[0] == 0.0 and not np.isnan(free[0]):
+        return replace(test, reagent_g_per_L=float(free[0]))
+    problems.append(
+        Problem(
+            test.files["tests"],
+            test.rows[test.files["tests"]][0],
+            f"start {test.reagent} (g/L)",
+            "ask",
+            f"test {test.name} has titrations and no starting strength; its reagent is not used",
+            "a strength above 0",
+            f'fill in the column "start {test.reagent} (g/L)"',
+        )
+    )
+    return test
+
+
+def _drained(test: Test, readings: Readings, i: int) -> Problem:
+    ledger = solution_ledger(test)
+    return Problem(
+        test.files["readings"],
+        readings.rows[i],
+        "aliquot (mL)",
+        "stop",
+        f"{ledger.removed_mL[i]:g} mL are taken out of the {ledger.volume_mL[i]:g} mL there are",
+        "less than what is in the vessel",
+        "look at the units of the aliquot and of the solution",
+    )
+
+
+def _policy_problem(test: Test, row: TestRow, problems: list[Problem]) -> None:
+    taken_out = test.aliquot_mL.any()
+    if test.aliquots is not None or not taken_out or not np.isnan(test.makeup_mL).any():
+        return
+    problems.append(
+        Problem(
+            test.files["tests"],
+            row.row,
+            "aliquots",
+            "ask",
+            f"test {test.name} does not say what happened after a sample was taken out; "
+            f"replaced is taken meanwhile",
+            " / ".join(POLICIES),
+            "write one of these in the column aliquots",
+        )
+    )
+
+
+def _exclusion_problems(settings: TestworkSettings, tests: list[Test]) -> list[Problem]:
+    by_name = {test.name: test for test in tests}
+    found = []
+    for number, exclusion in enumerate(settings.exclusions):
+        column = f"exclude[{number}]"
+        test = by_name.get(exclusion.test)
+        if test is None:
+            found.append(unknown_name("test", exclusion.test, by_name, column=f"{column}.test"))
+        elif not _has_time(test, exclusion):
+            times = ", ".join(f"{t:g}" for t in test.time_h)
+            what = f"test {test.name} has no reading at {exclusion.time_h:g} h"
+            found.append(Problem("", None, f"{column}.time", "stop", what, f"{times} h"))
+    return found
+
+
+def _has_time(test: Test, exclusion: Exclusion) -> bool:
+    if exclusion.time_h is None:
+        return True
+    return bool(np.isclose(test.time_h, exclusion.time_h, rtol=1e-9, atol=1e-9).any())
+
+
+def _with_their_problems(tests: list[Test], problems: list[Problem]) -> list[Test]:
+    """Each test with the problems of its rows."""
+    owner = {(f, n): test.name for test in tests for f, ns in test.rows.items() for n in ns}
+    by_test: dict[str, list[Problem]] = {}
+    for problem in problems:
+        name = owner.get((problem.file, problem.row or 0))
+        if name is not None:
+            by_test.setdefault(name, []).append(problem)
+    return [replace(test, problems=tuple(by_test.get(test.name, ()))) for test in tests]
