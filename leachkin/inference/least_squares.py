@@ -130,14 +130,16 @@ def _solve(
     minimizer = lmfit.Minimizer(
         lambda given: evaluate(vector_of(given))[0], parameters, calc_covar=False
     )
-    outcome = minimizer.least_squares(
-        max_nfev=max_evaluations,
-        jac=lambda given, **_: evaluate(vector_of(given))[1],
-        x_scale="jac",
-        ftol=1e-10,
-        xtol=1e-10,
-        gtol=1e-12,
-    )
+    # lmfit inverts an unscaled J'J on the way out; that covariance is not used here
+    with np.errstate(invalid="ignore", divide="ignore"):
+        outcome = minimizer.least_squares(
+            max_nfev=max_evaluations,
+            jac=lambda given, **_: evaluate(vector_of(given))[1],
+            x_scale="jac",
+            ftol=1e-10,
+            xtol=1e-10,
+            gtol=1e-12,
+        )
     if outcome.aborted or not getattr(outcome, "success", False):
         return vector_of(outcome.params), f"no minimum within {max_evaluations} evaluations"
     return vector_of(outcome.params), ""
