@@ -100,7 +100,7 @@ def metal_balance(test: Test, analyte: str, *, limits: BalanceLimits | None = No
     if test.aliquots is None and np.isnan(test.makeup_mL).any() and test.aliquot_mL.any():
         other = replace(test, aliquots="not replaced")
         unreplaced = _balance(other, analyte, leached_metal(other, analyte), solids)
-        problems.append(policy_note(test, balance, unreplaced))
+        problems += policy_note(test, balance, unreplaced)
         balance = replace(balance, provisional=True)
     problems += balance_notes(test, balance, solids.mass_is_known if solids else True, limits)
     return replace(balance, problems=tuple(problems))

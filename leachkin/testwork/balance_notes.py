@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from leachkin.problems import Level, Problem
+from leachkin.problems import Problem
 from leachkin.testwork.records import MetalBalance, Test
 from leachkin.testwork.recursion import assays_for_balance, solution_ledger
 from leachkin.testwork.settings import BalanceLimits
@@ -13,6 +13,8 @@ from leachkin.testwork.settings import BalanceLimits
 _CLEAR_FALL_SD = 2.0
 #: Mass loss shown as the other bound where the residue was not weighed.
 _BOUND_OF_MASS_LOSS = 0.10
+#: Difference of two extractions that nobody would ask about.
+_SMALL_DIFFERENCE = 0.0005
 
 
 def balance_notes(
@@ -31,30 +33,27 @@ def balance_notes(
     ]
 
 
-def policy_note(test: Test, replaced: MetalBalance, unreplaced: MetalBalance) -> Problem:
-    """Return the question about a blank aliquot policy, with the size of the difference."""
-    pairs = (
-        (replaced.final_on_calculated_head, unreplaced.final_on_calculated_head),
-        (replaced.final_on_assay_head, unreplaced.final_on_assay_head),
-    )
-    found = f"test {test.name} does not say whether aliquots were replaced"
-    for one, other in pairs:
+def policy_note(test: Test, replaced: MetalBalance, unreplaced: MetalBalance) -> list[Problem]:
+    """Return how much a blank aliquot policy matters, where it matters."""
+    for name in ("final_on_calculated_head", "final_on_assay_head"):
+        one, other = getattr(replaced, name), getattr(unreplaced, name)
         if one is not None and other is not None:
-            found += (
-                f": the final {replaced.analyte} extraction is {_percent(one)} if they were and "
-                f"{_percent(other)} if not, {100 * abs(one - other):.1f} points apart; the first "
-                f"is taken meanwhile"
-            )
             break
-    return _note(
-        test,
-        "tests",
-        "aliquots",
-        found,
-        "replaced by reagent solution / replaced by water / not replaced / returned",
-        "write one of these in the column aliquots",
-        level="ask",
+    else:
+        return []
+    if abs(one - other) < _SMALL_DIFFERENCE:
+        return []
+    found = (
+        f"test {test.name} does not say whether aliquots were replaced: the final "
+        f"{replaced.analyte} extraction is {_percent(one)} if they were and {_percent(other)} if "
+        f"not, {100.0 * abs(one - other):.1f} points apart; the first is taken meanwhile"
     )
+    allowed = "replaced by reagent solution / replaced by water / not replaced / returned"
+    return [
+        _note(
+            test, "tests", "aliquots", found, allowed, "write one of these in the column aliquots"
+        )
+    ]
 
 
 def unused_wash(test: Test, analyte: str, by_filtrate: bool) -> list[Problem]:
@@ -83,12 +82,11 @@ def _note(
     allowed: str = "",
     try_this: str = "",
     row: int | None = None,
-    level: Level = "note",
 ) -> Problem:
     file = test.files.get(sheet, "")
     if row is None and sheet == "tests" and test.rows.get(file):
         row = test.rows[file][0]
-    return Problem(file, row, column, level, found, allowed, try_this)
+    return Problem(file, row, column, "note", found, allowed, try_this)
 
 
 def _percent(fraction: float) -> str:

@@ -3,14 +3,17 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Literal
 
 import numpy as np
+from numpy.typing import NDArray
 
 from leachkin.testwork.records import Array, History, Test
 from leachkin.testwork.recursion import REPLACED, SolutionLedger, solution_ledger
 
 #: An addition is a step; its two sides stand this far apart in a history.
 STEP_h = 1e-6
+Additions = Literal["after the titration", "before the titration", "not titrated"]
 
 
 @dataclass(frozen=True)
@@ -24,9 +27,12 @@ class ReagentUse:
         reagent.
     before_g_per_L, after_g_per_L : ndarray, shape (m,)
         Strength before each sample, and after what was added and made up.
-    measured : bool
-        True where the strength was titrated; else each addition is taken to bring it back to the
-        start, so that the additions are the reagent taken.
+    additions : str
+        How the additions were understood. "after the titration": each row's addition follows its
+        titration. "before the titration": it held the strength since the row above. "not
+        titrated": each addition is taken to bring the strength back to the start, so that the
+        additions are the reagent taken. Of the first two, the one that keeps the strength nearer
+        the start is chosen.
     """
 
     time_h: Array
@@ -34,7 +40,7 @@ class ReagentUse:
     added_kg_per_t: Array
     before_g_per_L: Array
     after_g_per_L: Array
-    measured: bool
+    additions: Additions
 
 
 def reagent_use(test: Test) -> ReagentUse | None:
@@ -54,13 +60,23 @@ def reagent_use(test: Test) -> ReagentUse | None:
     fresh_mg = ledger.makeup_mL * _makeup_strength(test)
     kept_mL = ledger.volume_mL - ledger.removed_mL
     after_mL = kept_mL + ledger.makeup_mL
+    additions: Additions = "not titrated"
     if measured and free is not None:
         before = _between(test.time_h, free, test.reagent_g_per_L)
-        after = (before * kept_mL + fresh_mg + 1000.0 * added) / after_mL
+        held = (before * kept_mL + fresh_mg) / after_mL
+        after = held + 1000.0 * added / after_mL
+        additions = "after the titration"
+        if _nearer(before, after, test.reagent_g_per_L, added > 0.0):
+            after, additions = held, "before the titration"
     else:
         after = np.full(added.size, test.reagent_g_per_L)
         before = np.maximum((after * after_mL - fresh_mg - 1000.0 * added) / kept_mL, 0.0)
-    return _use(test, ledger, (before, after), added, fresh_mg, measured)
+    return _use(test, ledger, (before, after), added, fresh_mg, additions)
+
+
+def _nearer(one: Array, other: Array, aim: float, where: NDArray[np.bool_]) -> bool:
+    """Whether the first strengths lie nearer an aim than the others, over the chosen rows."""
+    return bool(np.abs(one - aim)[where].sum() < np.abs(other - aim)[where].sum())
 
 
 def _use(
@@ -69,20 +85,22 @@ def _use(
     strength: tuple[Array, Array],
     added: Array,
     fresh_mg: Array,
-    measured: bool,
+    additions: Additions,
 ) -> ReagentUse:
     before, after = strength
     start_mg = (test.reagent_g_per_L or 0.0) * ledger.start_mL
-    came_mg = start_mg + _earlier(fresh_mg + 1000.0 * added)
+    added_by_then = np.cumsum(1000.0 * added)
+    in_time = added_by_then if additions == "before the titration" else _earlier(1000.0 * added)
+    came_mg = start_mg + _earlier(fresh_mg) + in_time
     left_mg = before * ledger.volume_mL + _earlier(before * ledger.removed_mL)
     per_t = 1.0 / test.solids_g
     return ReagentUse(
         test.time_h,
         (came_mg - left_mg) * per_t,
-        (start_mg + np.cumsum(1000.0 * added)) * per_t,
+        (start_mg + added_by_then) * per_t,
         before,
         after,
-        measured,
+        additions,
     )
 
 
