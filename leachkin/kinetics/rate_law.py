@@ -38,6 +38,8 @@ Array = NDArray[np.float64]
 __all__ = ["ClassConversions", "DataBox", "RateLaw", "Reference", "Resistance", "knot_weights"]
 #: A strength below this share of the reference counts as this share: the clock all but stands.
 LEAST_STRENGTH = 1e-9
+#: Slopes at the nodes of a curve are those just before, where a class completes at a node.
+_JUST_BEFORE = 1.0 - 1e-13
 #: Orders and activation energies that differ by less are one [-, kJ/mol].
 _SAME = 1e-9
 
@@ -284,10 +286,11 @@ class RateLaw:
         weight = self.class_weights(sizes)
         extraction = self.extraction(nodes, sizes, temperature)
         root = np.sqrt(nodes)
-        first = 1e-6 * nodes[1:2]  # E over root time just above 0: the slope there, if it has one
-        start = self.extraction(first, sizes, temperature) / np.sqrt(first)
-        rate = law.rate_of_time(self._class_times(nodes[1:]))
+        rate = law.rate_of_time(self._class_times(nodes[1:] * _JUST_BEFORE))
         later = 2.0 * root[1:] * np.sum(weight[..., None] * rate, axis=-2)
+        near = np.array([1.0, 4.0]) * 1e-6 * nodes[1]
+        early = self.extraction(near, sizes, temperature) / np.sqrt(near)
+        start = np.maximum(2.0 * early[..., :1] - early[..., 1:], 0.0)  # of E = a q + b q^2: a
         return OreCurve(
             nodes,
             extraction,
@@ -364,7 +367,8 @@ class RateLaw:
         if not np.all(np.isfinite(at)) or np.any(at < 0.0):
             raise argument_error("time_h", "a time below 0 or not finite", "finite, from 0 h up")
         late = np.asarray(self.lag_h)
-        return np.maximum(at - (late[..., None] if late.ndim else late), 0.0)[..., None, :]
+        after = np.maximum(at - (late[..., None] if late.ndim else late), 0.0)
+        return np.asarray(after[..., None, :])
 
     def _common(self, name: str) -> Array | None:
         values = [np.asarray(getattr(r, name)) for r in self.resistances]
