@@ -1,7 +1,18 @@
 """Kinetics: particle laws, the rate law of an ore, its curve against equivalent leach time."""
 
+from leachkin.kinetics.arrhenius import (
+    ArrheniusFit,
+    activation_energy_of_slope,
+    arrhenius_rate_constant,
+    fit_arrhenius,
+)
 from leachkin.kinetics.box import DataBox
 from leachkin.kinetics.demand import ReagentDemand
+from leachkin.kinetics.fit_curve import curve_observed, fit_curve, straightened_slope
+from leachkin.kinetics.fit_layout import Layout, Quantity
+from leachkin.kinetics.fit_result import FitResult, Parameter, Residual
+from leachkin.kinetics.fit_tests import fit_tests
+from leachkin.kinetics.gangue import GangueFit, GangueLaw, GangueReadings, fit_gangue
 from leachkin.kinetics.grain_path import extraction_along
 from leachkin.kinetics.ore_curve import OreCurve
 from leachkin.kinetics.other_laws import (
@@ -23,10 +34,59 @@ from leachkin.kinetics.particle_law import (
     conversion_and_log_sensitivities,
     particle_conversion,
 )
+from leachkin.kinetics.rank import (
+    DEFAULT_LAWS,
+    RankedLaw,
+    Ranking,
+    contains,
+    in_words,
+    rank_laws,
+    rank_tests,
+)
 from leachkin.kinetics.rate_law import RateLaw, knot_weights
 from leachkin.kinetics.resistance import ClassConversions, Reference, Resistance
+from leachkin.kinetics.simulate import (
+    Bottle,
+    Noise,
+    SimulatedTest,
+    observed_of,
+    simulate_observed,
+    simulate_tests,
+    solution_operator,
+)
 
 __all__ = [
+    "ArrheniusFit",
+    "activation_energy_of_slope",
+    "arrhenius_rate_constant",
+    "fit_arrhenius",
+    "curve_observed",
+    "fit_curve",
+    "straightened_slope",
+    "Layout",
+    "Quantity",
+    "FitResult",
+    "Parameter",
+    "Residual",
+    "fit_tests",
+    "GangueFit",
+    "GangueLaw",
+    "GangueReadings",
+    "fit_gangue",
+    "DEFAULT_LAWS",
+    "RankedLaw",
+    "Ranking",
+    "contains",
+    "in_words",
+    "rank_laws",
+    "rank_tests",
+    "Bottle",
+    "Noise",
+    "SimulatedTest",
+    "observed_of",
+    "simulate_observed",
+    "simulate_tests",
+    "solution_operator",
     "CLOCK_LAWS",
     "LAW_NAMES",
     "MECHANISTIC",

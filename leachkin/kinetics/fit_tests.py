@@ -20,6 +20,7 @@ from leachkin.inference import (
 )
 from leachkin.kinetics.fit_design import FitDesign
 from leachkin.kinetics.fit_layout import Layout, Quantity
+from leachkin.kinetics.fit_open import Side, open_sides
 from leachkin.kinetics.fit_remarks import remarks, what_to_look_at
 from leachkin.kinetics.fit_result import FitResult, Parameter, Residual
 from leachkin.kinetics.fit_setup import FitOptions, layout_of
@@ -236,10 +237,12 @@ def _result(
         message = f"{message}. Look at: {what_to_look_at(tests, design, estimate)}"
     said = [*assumed, *remarks(tests, design, estimate, options.level)]
     said += [f"{kind} resistance not needed: below 1 % of the total" for kind in dropped]
+    opened = open_sides(tests, design, estimate, options.level)
+    said += [f"{name}: {why}" for name, (_, why) in opened.items()]
     heads = layout.heads(estimate.vector)
     return FitResult(
         law=layout.law(estimate.vector),
-        parameters=_parameters(design, estimate, options.level, dropped),
+        parameters=_parameters(design, estimate, options.level, dropped, opened),
         names=estimate.names,
         vector=estimate.vector,
         covariance=estimate.covariance,
@@ -262,7 +265,11 @@ def _result(
 
 
 def _parameters(
-    design: FitDesign, estimate: Estimate, level: float, dropped: tuple[str, ...]
+    design: FitDesign,
+    estimate: Estimate,
+    level: float,
+    dropped: tuple[str, ...],
+    opened: Mapping[str, tuple[Side, str]],
 ) -> tuple[Parameter, ...]:
     layout = design.layout
     full = layout.expand(estimate.vector)
@@ -270,7 +277,8 @@ def _parameters(
     fitted = 0
     for i, quantity in enumerate(layout.quantities):
         if quantity.free:
-            found.append(_from_interval(quantity, estimate.interval(fitted, level)))
+            parameter = _from_interval(quantity, estimate.interval(fitted, level))
+            found.append(_opened(parameter, opened.get(quantity.name)))
             fitted += 1
         elif quantity.role == "time" and quantity.which in dropped:
             found.append(_absent(design, estimate, quantity, level))
@@ -293,6 +301,21 @@ def _from_interval(quantity: Quantity, interval: Interval) -> Parameter:
         interval.level,
         interval.method,
         interval.why_not,
+    )
+
+
+def _opened(parameter: Parameter, side: tuple[Side, str] | None) -> Parameter:
+    """Return a parameter without the end of its interval that the data leave open."""
+    if side is None:
+        return parameter
+    end, why = side
+    return replace(
+        parameter,
+        standard_error=None,
+        low=None if end == "low" else parameter.low,
+        high=None if end == "high" else parameter.high,
+        method="one-sided, linearised",
+        why_no_interval=why,
     )
 
 
