@@ -8,7 +8,7 @@ from leachkin.kinetics.arrhenius import (
 )
 from leachkin.kinetics.box import DataBox
 from leachkin.kinetics.demand import ReagentDemand
-from leachkin.kinetics.fit_curve import curve_observed, fit_curve, straightened_slope
+from leachkin.kinetics.fit_curve import fit_curve, straightened_slope
 from leachkin.kinetics.fit_layout import Layout, Quantity
 from leachkin.kinetics.fit_result import FitResult, Parameter, Residual
 from leachkin.kinetics.fit_tests import fit_tests
@@ -60,7 +60,6 @@ __all__ = [
     "activation_energy_of_slope",
     "arrhenius_rate_constant",
     "fit_arrhenius",
-    "curve_observed",
     "fit_curve",
     "straightened_slope",
     "Layout",

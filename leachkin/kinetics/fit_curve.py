@@ -12,7 +12,7 @@ from leachkin.kinetics.fit_setup import FitOptions
 from leachkin.kinetics.fit_tests import fit_with_options
 from leachkin.kinetics.resistance import Reference
 from leachkin.problems import argument_error
-from leachkin.testwork import Observed, SizeDistribution
+from leachkin.testwork import SizeDistribution, observed_from_extraction
 
 Array = NDArray[np.float64]
 
@@ -88,34 +88,13 @@ def fit_curve(
         ultimate="one" if ultimate == "free" else ultimate,
         reference=Reference(size_mm=size),
         level=level,
-        stated=errors is not None,
         time_unit="",
         one_curve=True,
     )
-    return fit_with_options((curve_observed(t, E, sd, sizes),), options)
-
-
-def curve_observed(
-    time: Array, extraction: Array, sd: Array, sizes: SizeDistribution | None = None
-) -> Observed:
-    """Return extraction-only input as observed values: identity operator, head held at 1."""
-    m = time.size
-    return Observed(
-        test="curve",
-        key="curve",
-        time_h=time,
-        operator=np.eye(m),
-        offset=np.zeros(m),
-        brought=np.zeros(m),
-        value=extraction,
-        sd=sd,
-        bound=np.zeros(m, dtype=np.int64),
-        row_kind=("extraction",) * m,
-        row_time_h=time,
-        head_kg_per_t=1.0,
-        head_sd_kg_per_t=0.0,
-        sizes=sizes,
+    observed = observed_from_extraction(
+        t, E, None if errors is None else sd, test="curve", sizes=sizes
     )
+    return fit_with_options((observed,), options)
 
 
 def straightened_slope(time: ArrayLike, extraction: ArrayLike, law: str) -> float:

@@ -59,7 +59,6 @@ class FitOptions:
     size_exponents: Literal["theory", "free"] = "theory"
     reagent_order: float | Literal["free"] = 1.0
     level: float = 0.95
-    stated: bool = True
     time_unit: str = "h"
     one_curve: bool = False
 

@@ -106,19 +106,28 @@ def fit_tests(
 
 def fit_with_options(observed: Sequence[Observed], options: FitOptions) -> FitResult:
     """Return the fit that options ask for; ``fit_tests`` and ``fit_curve`` both end here."""
-    tests = tuple(observed)
+    tests, assumed = _with_rows(tuple(observed))
     _check_tests(tests)
-    layout, assumed = layout_of(options, tests)
+    stated = all(o.sd_given for o in tests)
+    layout, more = layout_of(options, tests)
+    assumed = (*assumed, *more)
     design = FitDesign.of(layout, tests)
     _check_count(design)
-    estimate = _best_estimate(design, options.stated)
+    estimate = _best_estimate(design, stated)
     asked = len(layout.free)
     dropped = _not_needed(design, estimate)
     if dropped:
         layout = _without(layout, dropped, design, estimate)
         design = FitDesign.of(layout, tests)
-        estimate = least_squares(_problem(design, _within(layout, estimate), options.stated))
+        estimate = least_squares(_problem(design, _within(layout, estimate), stated))
     return _result(tests, design, estimate, options, assumed, dropped, asked)
+
+
+def _with_rows(tests: tuple[Observed, ...]) -> tuple[tuple[Observed, ...], tuple[str, ...]]:
+    """Return the tests that have measured rows, and which were left out."""
+    empty = [o.test for o in tests if not o.value.size]
+    said = (f"no measured value left in {', '.join(empty)}: left out of the fit",) if empty else ()
+    return tuple(o for o in tests if o.value.size), said
 
 
 def _check_tests(tests: tuple[Observed, ...]) -> None:

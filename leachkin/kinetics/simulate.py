@@ -31,7 +31,7 @@ class Bottle:
     temperature_K : float
     time_h : ndarray, shape (m,)
     reagent_g_per_L : float
-        Start and set-point: reagent is restored to it after every reading.
+        Start and set-point: reagent is added as the ore takes it, so that it holds.
     solids_g, solution_mL, aliquot_mL : float
     aliquots : str
         "replaced by reagent solution", "replaced by water", "not replaced", "returned".
@@ -61,7 +61,7 @@ class Noise:
     tail: float = 0.03
     head: float = 0.02
     residue: float = 0.003
-    titration: float = 0.0
+    titration: float = 0.005
     mass_loss: float = 0.03
 
 
@@ -75,8 +75,8 @@ class SimulatedTest:
     solution_g_per_L : ndarray, shape (m,)
         Metal assays.
     free_reagent_g_per_L, reagent_added_g : ndarray, shape (m,)
-        Titration before restoring, and what was then added to restore the set-point, on top of
-        what came with the make-up.
+        Titration at each reading, and what was added since the one before to hold the set-point,
+        on top of what came with the make-up.
     tail_kg_per_t, residue_g : float
     head_assay_kg_per_t, head_true_kg_per_t : float
     extraction_true : ndarray, shape (m,)
@@ -134,7 +134,7 @@ def simulate_tests(
     Parameters
     ----------
     law : RateLaw
-        The truth; reagent stays at its set-point.
+        The truth; reagent is held at its set-point.
     bottles : sequence of Bottle
     head_kg_per_t : float
         Head assay; the true head of each charge scatters about it.
@@ -232,7 +232,7 @@ def _one(
     tail_measured = tail * (1.0 + noise.tail * generator.standard_normal())
     residue_measured = residue * (1.0 + noise.residue * generator.standard_normal())
     errors = noise.titration * generator.standard_normal(m)
-    free, added, found = _restored(bottle, taken, errors)
+    free, added, found = _held_strength(bottle, taken, errors)
     return SimulatedTest(
         bottle=bottle,
         solution_g_per_L=measured,
@@ -248,33 +248,20 @@ def _one(
     )
 
 
-def _restored(bottle: Bottle, taken: Array, errors: Array) -> tuple[Array, Array, Array]:
+def _held_strength(bottle: Bottle, taken: Array, errors: Array) -> tuple[Array, Array, Array]:
     """Return titrated strength, reagent added [g], and the cumulative take the numbers give [kg/t].
 
-    What is added restores the set-point by the titration, which may be off.
+    The strength is held by what is added as the ore takes it; the titration may be off.
     """
-    set_point, v = bottle.reagent_g_per_L, bottle.aliquot_mL / 1000.0
-    volume = bottle.solution_mL / 1000.0
-    inside = set_point * volume
-    supplied = inside
-    removed = 0.0
-    free, added, found = np.zeros((3, taken.size))
-    before = 0.0
-    for i, total in enumerate(taken):
-        inside -= (total - before) * bottle.solids_g / 1000.0
-        before = total
-        free[i] = inside / volume * (1.0 + errors[i])
-        found[i] = (supplied - removed - free[i] * volume) * 1000.0 / bottle.solids_g
-        if bottle.aliquots == "returned":
-            out, makeup = 0.0, 0.0
-        else:
-            out = inside / volume * v
-            makeup = set_point * v if bottle.aliquots == "replaced by reagent solution" else 0.0
-        if bottle.aliquots == "not replaced":
-            volume -= v
-        kept = free[i] * (volume if bottle.aliquots == "not replaced" else volume - v * (out > 0))
-        added[i] = max(set_point * volume - kept - makeup, 0.0)
-        inside += makeup + added[i] - out
-        supplied += makeup + added[i]
-        removed += free[i] * v if out > 0 else 0.0
-    return free, added, found
+    set_point, litres = bottle.reagent_g_per_L, 0.001 * bottle.solution_mL
+    drawn = 0.0 if bottle.aliquots == "returned" else 0.001 * bottle.aliquot_mL
+    shrinks, watered = bottle.aliquots == "not replaced", bottle.aliquots == "replaced by water"
+    earlier = np.arange(taken.size)
+    volume = litres - drawn * earlier * shrinks
+    per_t = 1000.0 / bottle.solids_g
+    free = set_point * (1.0 + errors)
+    added = np.diff(taken, prepend=0.0) / per_t
+    added[1:] += watered * drawn * set_point
+    came = set_point * (litres + drawn * earlier * (not (shrinks or watered))) + np.cumsum(added)
+    left = free * volume + drawn * np.concatenate([[0.0], np.cumsum(free)[:-1]])
+    return free, added, np.asarray((came - left) * per_t)

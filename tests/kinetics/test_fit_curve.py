@@ -6,10 +6,9 @@ from numpy.testing import assert_allclose
 
 from leachkin.errors import InputProblems
 from leachkin.kinetics import LAW_NAMES, SHAPE_PARAMETERS, fit_curve, straightened_slope
-from leachkin.kinetics.fit_curve import curve_observed
 from leachkin.kinetics.fit_design import FitDesign
 from leachkin.kinetics.fit_setup import FitOptions, layout_of
-from leachkin.testwork import SizeDistribution
+from leachkin.testwork import SizeDistribution, observed_from_extraction
 
 TIME = np.array([0.5, 1, 2, 4, 8, 12, 24, 36, 48, 72.0])
 #: Reduction of UO3 grains, conversion against time [h] [levenspiel1999, ch. 25].
@@ -20,7 +19,9 @@ TRUE_SHAPES = {"fast_share": 0.4, "ratio": 20.0, "n": 0.7, "slope": 0.15}
 
 def curve_of(law, time, *, tau=20.0, ultimate=0.85, sizes=None):
     """Exact data from the residual function's own law, by name."""
-    observed = curve_observed(time, np.full(time.size, 0.5), np.ones(time.size), sizes)
+    observed = observed_from_extraction(
+        time, np.full(time.size, 0.5), np.ones(time.size), sizes=sizes
+    )
     layout, _ = layout_of(FitOptions(law=law, ultimate=ultimate, one_curve=True), (observed,))
     design = FitDesign.of(layout, (observed,))
     vector = layout.starts[layout.free_index].copy()

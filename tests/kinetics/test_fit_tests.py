@@ -15,10 +15,9 @@ from leachkin.kinetics import (
     fit_tests,
     simulate_observed,
 )
-from leachkin.kinetics.fit_curve import curve_observed
 from leachkin.kinetics.fit_design import FitDesign
 from leachkin.kinetics.fit_setup import FitOptions, layout_of
-from leachkin.testwork import History, SizeDistribution
+from leachkin.testwork import History, SizeDistribution, observed_from_extraction
 
 HOURS = np.array([2, 6, 12, 24, 48, 72, 120, 168, 240.0])
 SIZES_MM = {"A": 1.416, "B": 5.641, "C": 10.90}
@@ -217,7 +216,11 @@ def test_falling_reagent_enters_exactly_and_is_remarked():
     )
     sd = np.full(HOURS.size, 0.005)
     tests = (
-        replace(curve_observed(HOURS, path, sd, sizes), history=history, reagent_g_per_L=20.0),
+        replace(
+            observed_from_extraction(HOURS, path, sd, sizes=sizes),
+            history=history,
+            reagent_g_per_L=20.0,
+        ),
     )
     given = {"activation_energy_chemical": 46.0, "activation_energy_ash_layer": 19.0}
     fit = fit_tests(tests, "ash_layer+chemical", fixed=given, reference=REFERENCE)

@@ -1,0 +1,105 @@
+import numpy as np
+import pytest
+from numpy.testing import assert_allclose
+
+from leachkin.errors import InputProblems
+from leachkin.kinetics import (
+    MECHANISTIC,
+    Bottle,
+    ParticleLaw,
+    RateLaw,
+    Reference,
+    Resistance,
+    contains,
+    in_words,
+    rank_laws,
+    rank_tests,
+    simulate_observed,
+)
+from leachkin.testwork import SizeDistribution
+
+HOURS = np.array([1, 2, 4, 8, 12, 18, 24, 36, 48, 72.0])
+#: Reduction of UO3 grains, conversion against time [h] [levenspiel1999, ch. 25].
+UO3_TIME = [0.180, 0.347, 0.453, 0.567, 0.733]
+UO3_CONVERSION = [0.45, 0.68, 0.80, 0.95, 0.98]
+
+
+def test_uo3_is_under_chemical_control():
+    # the answer of the text; "ash control" circulates and is wrong
+    ranking = rank_laws(UO3_TIME, UO3_CONVERSION, ultimate=1.0)
+    assert ranking.indistinguishable == ("chemical",)
+    assert ranking.mechanisms == ("chemical",)
+    assert ranking.verdict.startswith("Chemical reaction at the core: chemical.")
+    assert ranking.rows[0].law == "chemical" and ranking.rows[0].delta == 0
+
+
+@pytest.mark.parametrize("law", ["film", "ash_layer", "chemical"])
+@pytest.mark.parametrize("seed", [3, 4])
+def test_one_resistance_is_recognised_in_precise_data(law, seed):
+    rng = np.random.default_rng(seed)
+    truth = ParticleLaw(**{law: 60.0})
+    E = 0.8 * truth.conversion(HOURS) + 0.003 * rng.standard_normal(HOURS.size)
+    ranking = rank_laws(HOURS, E, errors=0.003)
+    assert ranking.mechanisms == (law,)
+    assert not any(contains(name, law) for name in ranking.indistinguishable)
+
+
+def test_few_rough_points_cannot_be_told_apart():
+    time = [1.0, 2, 3, 4, 5, 6, 7]  # the first third: both are still straight lines
+    E = ParticleLaw(chemical=60.0).conversion(time) + 0.02 * np.array([1, -1, 1, -1, 0, 1, -1])
+    ranking = rank_laws(
+        time, E, laws=["film", "chemical", "first_order"], errors=0.02, ultimate=1.0
+    )
+    assert len(ranking.mechanisms) > 1
+    assert ranking.verdict.startswith("These cannot be told apart")
+
+
+def test_two_fractions_are_none_of_the_particle_laws():
+    E = 0.5 * (1 - np.exp(-2.0 * HOURS)) + 0.4 * (1 - np.exp(-0.02 * HOURS))
+    ranking = rank_laws(HOURS, E + 0.003 * np.cos(9 * HOURS), errors=0.003)
+    assert ranking.rows[0].law == "two_rate"
+    assert ranking.verdict.startswith("None of the particle laws describes these data")
+    assert ranking.mechanisms == ()
+    plain = rank_laws(HOURS, E + 0.003 * np.cos(9 * HOURS))
+    assert plain.verdict.startswith("None of the particle laws describes these data")
+
+
+def test_weights_sum_to_one_and_a_law_that_cannot_be_fitted_stays_as_a_row():
+    ranking = rank_laws([1.0, 2, 4], [0.3, 0.5, 0.7], laws=["chemical", "film", "series"])
+    assert_allclose(sum(row.weight for row in ranking.rows), 1.0)
+    series = next(row for row in ranking.rows if row.law == "series")
+    assert series.fit is None and "for 4 quantities" in series.note
+    assert ranking.table().column("law") == [row.law for row in ranking.rows]
+    assert ranking.fit_of("series") is None
+
+
+def test_nothing_to_rank_is_an_error():
+    with pytest.raises(InputProblems, match="divide by 100"):
+        rank_laws([1.0, 2, 4], [30.0, 50, 70])
+
+
+def test_all_tests_together_find_the_mixed_law():
+    reference = Reference(298.15, 20.0, 1.416)
+    truth = RateLaw(
+        "ash_layer+chemical",
+        (Resistance("ash_layer", np.log(7.0), 19.0), Resistance("chemical", np.log(3.0), 46.0)),
+        reference,
+        [1.0],
+        [0.85],
+    )
+    made = [
+        Bottle(f"{d}_{c}", SizeDistribution.single(d), 273.15 + c, 2 * HOURS, 20.0)
+        for d in (1.416, 5.641, 10.9)
+        for c in (25, 55)
+    ]
+    tests = simulate_observed(truth, made, head_kg_per_t=6.8, seed=1)
+    ranking = rank_tests(
+        tests, laws=["chemical", "ash_layer", "ash_layer+chemical", "first_order"], ultimate="one"
+    )
+    assert ranking.mechanisms == ("ash_layer+chemical",)
+    assert ranking.best.law_name == "ash_layer+chemical"
+
+
+def test_every_mechanism_has_words():
+    assert len({in_words(law) for law in MECHANISTIC}) == len(MECHANISTIC)
+    assert in_words("series").count(" in series") == 1
