@@ -22,6 +22,8 @@ REACHED = 0.97
 HEAD_DEVIATIONS = 2.0
 HEAD_SHARE = 0.03
 HALF = 0.5
+#: A logged temperature further than this from the one used is worth a word [K].
+TEMPERATURE_SLACK_K = 2.0
 
 
 def shares_dissolved(design: FitDesign, vector: Array) -> list[Array]:
@@ -42,6 +44,7 @@ def remarks(
         *_short_of_points(tests, shares),
         *_not_reached(tests, shares, design),
         *_starved(tests, shares),
+        *_drifting(tests),
         *_odd_heads(tests, design, estimate),
         *_wide_intervals(design, estimate, level),
         *_left_open(design, estimate),
@@ -104,6 +107,21 @@ def _starved(tests: Sequence[Observed], shares: list[Array]) -> list[str]:
     return [
         f"reagent fell below half of its start in {', '.join(found)}: a plateau there may be want "
         "of reagent and not the ultimate extraction"
+    ]
+
+
+def _drifting(tests: Sequence[Observed]) -> list[str]:
+    found = []
+    for observed in tests:
+        if observed.history is not None:
+            off = np.abs(observed.history.temperature_K - observed.temperature_K).max()
+            if off > TEMPERATURE_SLACK_K:
+                found.append(f"{observed.test} (by {off:.1f} K)")
+    if not found:
+        return []
+    return [
+        f"the logged temperature strays from the test's in {', '.join(found)}: the fit used the "
+        "test's one temperature"
     ]
 
 

@@ -229,6 +229,49 @@ def test_falling_reagent_enters_exactly_and_is_remarked():
     assert any("reagent fell below half" in w for w in fit.warnings)
 
 
+def test_temperature_that_strays_is_remarked():
+    tests = list(copper())
+    log = History(np.array([0.0, 2.0]), np.array([293.15, 298.15]), np.full(2, 20.0))
+    tests[0] = replace(tests[0], history=log)
+    fit = fit_tests(tests, "ash_layer+chemical", reference=REFERENCE)
+    assert any("temperature strays" in w and "A25 (by 5.0 K)" in w for w in fit.warnings)
+
+
+def test_a_test_without_values_is_left_out_and_named():
+    tests = list(copper())
+    empty = np.zeros(0)
+    tests[8] = replace(
+        tests[8],
+        operator=np.zeros((0, HOURS.size)),
+        offset=empty,
+        brought=empty,
+        value=empty,
+        sd=empty,
+        bound=np.zeros(0, dtype=int),
+        row_kind=(),
+        row_time_h=empty,
+    )
+    fit = fit_tests(tests, "ash_layer+chemical", reference=REFERENCE)
+    assert fit.n_tests == 8 and "no measured value left in C55" in fit.warnings[0]
+
+
+def test_extractions_without_precision_use_the_scatter_found():
+    tests = [
+        observed_from_extraction(
+            HOURS,
+            TRUTH.extraction(HOURS, b.sizes, b.temperature_K) + 0.004 * np.cos(3 * HOURS + i),
+            test=b.name,
+            sizes=b.sizes,
+            temperature_K=b.temperature_K,
+        )
+        for i, b in enumerate(bottles())
+    ]
+    fit = fit_tests(tests, "ash_layer+chemical", reference=REFERENCE)
+    assert fit.estimate.student_degrees == 81 - 7
+    assert 0.001 < fit.residual_sd < 0.006
+    assert_allclose(fit.parameter("tau_ash_layer").value, 7.0, rtol=0.1)
+
+
 def test_sizes_within_a_test_are_integrated():
     ore = SizeDistribution.gates_gaudin_schuhmann(19.0, 0.65, [19.0, 9.5, 4.75, 2.36, 0.6, 0.05])
     made = [replace(b, sizes=ore) for b in bottles() if b.name.startswith("B")]
