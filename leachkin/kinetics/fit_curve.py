@@ -76,7 +76,7 @@ def fit_curve(
     >>> time = [1, 2, 4, 8, 16, 32]
     >>> fit = fit_curve(time, [0.21, 0.36, 0.53, 0.68, 0.74, 0.75], "first_order")
     >>> round(fit.parameter("ultimate").value, 2)
-    0.75
+    0.74
     """
     t, E = _checked(time, extraction)
     sd = _standard_deviations(E, errors, errors_are)

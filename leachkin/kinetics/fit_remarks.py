@@ -22,6 +22,8 @@ REACHED = 0.97
 HEAD_DEVIATIONS = 2.0
 HEAD_SHARE = 0.03
 HALF = 0.5
+#: A test that ends unfinished with less than this share of its reagent was starved.
+STARVED = 0.05
 #: A logged temperature further than this from the one used is worth a word [K].
 TEMPERATURE_SLACK_K = 2.0
 
@@ -98,10 +100,10 @@ def _starved(tests: Sequence[Observed], shares: list[Array]) -> list[str]:
         if history is None or history.reagent_g_per_L is None:
             continue
         strength = history.reagent_g_per_L
-        if strength.min() < HALF * strength[0]:
-            low = 100 * strength.min() / strength[0]
-            end = "starved" if share[-1] < REACHED or low < 5 else "not starved at the end"
-            found.append(f"{observed.test} (to {low:.0f} % of the start, {end})")
+        left = strength.min() / strength[0]
+        if left < HALF:
+            starved = left < STARVED and share[-1] < REACHED
+            found.append(f"{observed.test} ({100 * left:.0f} %{': starved' if starved else ''})")
     if not found:
         return []
     return [
