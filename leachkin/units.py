@@ -6,6 +6,7 @@ a spelling that is not there never reaches it, and one with two meanings is aske
 
 from __future__ import annotations
 
+import math
 import re
 from functools import cache, lru_cache
 from typing import Any
@@ -15,7 +16,21 @@ from leachkin.errors import UnitError, nearest_names
 from leachkin.tables import Row, read_table
 
 _NUMBER = re.compile(r"^\s*([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)\s*(.*?)\s*$")
-_HEADING = re.compile(r"^\s*(.*?)\s*[\(\[]\s*([^\(\)\[\]]*?)\s*[\)\]]\s*$")
+#: Signs that mean the same: micro and mu, superscripts, degree signs, minus signs.
+_SAME_SIGNS = str.maketrans(
+    {
+        "\u00b5": "u",
+        "\u03bc": "u",
+        "\u00b9": "1",
+        "\u00b2": "2",
+        "\u00b3": "3",
+        "\u00b0": "deg",
+        "\u00ba": "deg",
+        "\u207b": "-",
+        "\u2212": "-",
+    }
+)
+_CLOSERS = {")": "(", "]": "["}
 
 
 def parse_quantity(text: str, target: str) -> float:
@@ -53,6 +68,14 @@ def parse_quantity(text: str, target: str) -> float:
             f'write it as "{_example(target)}"',
         )
     value, spelling = float(match.group(1)), match.group(2)
+    if not math.isfinite(value):
+        raise UnitError(f"{text!r} is too large", "a finite number", f"{_example(target)}")
+    if re.match(r"[,.][0-9]", spelling):
+        raise UnitError(
+            f"{text!r} has a decimal comma or a thousands mark",
+            "a number with a decimal point and no thousands marks",
+            f'write it as "{_example(target)}"',
+        )
     if not spelling:
         if target == "1":
             return value
@@ -104,14 +127,20 @@ def split_heading(heading: str) -> tuple[str, str | None]:
     >>> split_heading("remark")
     ('remark', None)
     """
-    match = _HEADING.match(heading)
-    if match is None:
-        return heading.strip(), None
-    return match.group(1), match.group(2)
+    text = heading.strip()
+    opener = _CLOSERS.get(text[-1:])
+    if opener is None:
+        return text, None
+    depth = 0
+    for position in range(len(text) - 1, -1, -1):
+        depth += (text[position] == text[-1]) - (text[position] == opener)
+        if depth == 0:
+            return text[:position].strip(), text[position + 1 : -1].strip()
+    return text, None
 
 
 def known_spellings(target: str) -> list[str]:
-    """Return the unambiguous spellings that convert to the target unit, as the table orders them."""
+    """Return the unambiguous spellings that convert to the target unit, in order of the table."""
     return [
         row.text("spelling")
         for row in read_table("unit_spellings").rows
@@ -185,9 +214,7 @@ def _by_spelling() -> dict[str, Row]:
 
 def _fold(spelling: str) -> str:
     """Spaces, the micro signs, superscripts and dots do not make another unit; case does."""
-    folded = spelling.strip().replace("\u00b5", "u").replace("\u03bc", "u")
-    folded = folded.replace("\u00b2", "2").replace("\u00b3", "3").replace("\u00b0", "deg")
-    return re.sub(r"[\s\u00b7]+", "", folded)
+    return re.sub(r"[\s\u00b7]+", "", spelling.translate(_SAME_SIGNS))
 
 
 @lru_cache(maxsize=1)
