@@ -1,0 +1,8 @@
+"""Scale-up: what tanks and heaps make of an ore's law."""
+
+from leachkin.scaleup.bands import Bands, bands
+from leachkin.scaleup.heap import HeapResult, heap
+from leachkin.scaleup.lengthen import lengthen
+from leachkin.scaleup.tanks import TankTrain, tank_train
+
+__all__ = ["Bands", "HeapResult", "TankTrain", "bands", "heap", "lengthen", "tank_train"]
