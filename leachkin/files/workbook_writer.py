@@ -43,11 +43,14 @@ def write_xlsx(tables: Iterable[ResultTable], path: str | Path) -> None:
     listed = list(tables)
     if not listed:
         raise ValueError("a workbook needs at least one table")
-    book = Workbook(write_only=True)
-    names: set[str] = set()
     for table in listed:
         if len(table.rows) >= _MOST_ROWS:
             raise ValueError(f"table {table.name!r} has {len(table.rows)} rows; write it as CSV")
+        for row in table.rows:
+            check_finite(table, row)
+    book = Workbook(write_only=True)
+    names: set[str] = set()
+    for table in listed:
         _add_sheet(book, table, _sheet_name(table.name, names))
     buffer = io.BytesIO()
     book.save(buffer)
@@ -74,7 +77,6 @@ def _add_sheet(book: Any, table: ResultTable, name: str) -> None:
         sheet.column_dimensions[get_column_letter(position)].width = width
     sheet.append([_text_cell(sheet, column.title, bold=True) for column in table.columns])
     for row in table.rows:
-        check_finite(table, row)
         sheet.append([_cell(sheet, value) for value in row])
 
 
