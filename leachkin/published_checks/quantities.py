@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from typing import Any
 
 import numpy as np
 
@@ -45,7 +46,8 @@ def quantity(name: str) -> Callable[[Case], float]:
 
 
 def _particle(law: str, tau: float | list[float]) -> ParticleLaw:
-    return ParticleLaw(**{law: np.asarray(tau, dtype=float)})
+    resistances: dict[str, Any] = {law: np.asarray(tau, dtype=float)}
+    return ParticleLaw(**resistances)
 
 
 def _plug_flow_conversion(case: Case) -> float:

@@ -17,6 +17,8 @@ class CheckOutcome:
     Attributes
     ----------
     case, source, unit, note : str
+    as_printed : str
+        The printed value in its own digits.
     printed, computed, tolerance : float
     ok : bool
         True where the computed value lies within the tolerance of the printed one.
@@ -33,6 +35,7 @@ class CheckOutcome:
     status: str
     unit: str = ""
     note: str = ""
+    as_printed: str = ""
 
 
 def verify() -> tuple[CheckOutcome, ...]:
@@ -70,6 +73,7 @@ def check(case: Case) -> CheckOutcome:
         status=case.status,
         unit=case.unit,
         note=case.note,
+        as_printed=case.printed,
     )
 
 
@@ -78,7 +82,7 @@ def outcomes_table(outcomes: tuple[CheckOutcome, ...]) -> ResultTable:
     columns = (
         Column("case", "case"),
         Column("unit", "unit"),
-        Column("printed", "printed", digits=6),
+        Column("as_printed", "printed"),
         Column("computed", "computed", digits=6),
         Column("tolerance", "tolerance", digits=2),
         Column("verdict", "verdict"),

@@ -41,7 +41,9 @@ def format_number(value: float, digits: int = 4) -> str:
     return _fixed(value, _decimals(value, digits))
 
 
-def format_column(column: Column, cells: Sequence[Cell], empty: str = "-") -> list[str]:
+def format_column(
+    column: Column, cells: Sequence[Cell], empty: str = "-", *, one_by_one: bool = False
+) -> list[str]:
     """Return a column's cells as text, with one number of decimals where the range allows it.
 
     Parameters
@@ -51,12 +53,14 @@ def format_column(column: Column, cells: Sequence[Cell], empty: str = "-") -> li
     cells : sequence
     empty : str
         What stands for an empty cell.
+    one_by_one : bool
+        Give each number its own decimals, as where the rows have different units.
 
     Returns
     -------
     list of str
     """
-    decimals = _common_decimals(column, cells)
+    decimals = None if one_by_one else _common_decimals(column, cells)
     return [_cell_text(cell, column.digits, decimals, empty) for cell in cells]
 
 
@@ -76,7 +80,7 @@ def _cell_text(cell: Cell, digits: int, decimals: int | None, empty: str) -> str
     if isinstance(cell, int):
         return str(cell)
     if isinstance(cell, float):
-        if decimals is None or not math.isfinite(cell):
+        if decimals is None or cell == 0 or not math.isfinite(cell):
             return format_number(cell, digits)
         return _fixed(cell, decimals)
     return str(cell)

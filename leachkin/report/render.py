@@ -16,6 +16,9 @@ from leachkin.result_table import ResultTable
 Form = Literal["terminal", "csv", "html"]
 _GAP = "  "
 _SMALLEST_TEXT_COLUMN = 12
+_NUMBER_WIDTH = 10
+_MANY_COLUMNS = 8
+_SHORT_TEXT = 12
 
 
 def render_table(table: ResultTable, form: Form = "terminal", width: int | None = None) -> str:
@@ -50,9 +53,13 @@ def render_table(table: ResultTable, form: Form = "terminal", width: int | None 
 
 
 def cells_as_text(table: ResultTable, empty: str = "-") -> list[list[str]]:
-    """Return the rows of a table as text, each column with its significant digits."""
+    """Return the rows of a table as text, each column with its significant digits.
+
+    Where the unit stands in a column of its own, each number gets its own decimals.
+    """
+    mixed = any(column.key == "unit" for column in table.columns)
     columns = [
-        format_column(column, [row[i] for row in table.rows], empty)
+        format_column(column, [row[i] for row in table.rows], empty, one_by_one=mixed)
         for i, column in enumerate(table.columns)
     ]
     return [list(row) for row in zip(*columns, strict=True)]
@@ -70,7 +77,7 @@ def _terminal(table: ResultTable, width: int | None) -> str:
     ]
     body = cells_as_text(table)
     widths = _widths(heads, body, numeric, width)
-    lines = [table.caption or table.name.replace("_", " "), ""]
+    lines = [table_title(table), *_caption_lines(table, width), ""]
     lines += _lines(_head_cells(heads, widths), widths, numeric)
     lines.append(_GAP.join("-" * w for w in widths))
     for row in body:
@@ -82,6 +89,16 @@ def _terminal(table: ResultTable, width: int | None) -> str:
     return "\n".join(line.rstrip() for line in lines) + "\n"
 
 
+def table_title(table: ResultTable) -> str:
+    """Return the name of a table as a title: ``Heap figures``."""
+    words = table.name.replace("_", " ").strip()
+    return words[:1].upper() + words[1:]
+
+
+def _caption_lines(table: ResultTable, width: int | None) -> list[str]:
+    return textwrap.wrap(table.caption, max(width or 100, 40), break_on_hyphens=False)
+
+
 def _widths(
     heads: list[list[str]], body: list[list[str]], numeric: list[bool], width: int | None
 ) -> list[int]:
@@ -89,10 +106,10 @@ def _widths(
     needed = []
     for i, head in enumerate(heads):
         cells = [row[i] for row in body]
-        longest_word = max((len(word) for word in head[0].split()), default=1)
-        floor = max([longest_word, len(head[1]), *(len(c) for c in cells if numeric[i])])
-        natural = max([floor, len(head[0]), *(len(c) for c in cells)])
-        needed.append(min(natural, max(floor, 14)) if numeric[i] else natural)
+        longest_word = max((len(word) for part in head for word in part.split()), default=1)
+        floor = max([longest_word, *(len(c) for c in cells if numeric[i])])
+        natural = max([floor, len(head[0]), len(head[1]), *(len(c) for c in cells)])
+        needed.append(min(natural, max(floor, _NUMBER_WIDTH)) if numeric[i] else natural)
     if width is None:
         return needed
     spare = sum(needed) + len(_GAP) * (len(needed) - 1) - width
@@ -107,12 +124,10 @@ def _widths(
 
 
 def _head_cells(heads: list[list[str]], widths: list[int]) -> list[list[str]]:
-    """Wrapped headings set to the foot, so that units stand on one line."""
+    """Wrapped headings with their units, set to the foot."""
     stacks = []
     for (name, unit), width in zip(heads, widths, strict=True):
-        stacks.append([*_wrapped(name, width), unit])
-    if not any(unit for _, unit in heads):
-        stacks = [stack[:-1] for stack in stacks]
+        stacks.append([*_wrapped(name, width), *(_wrapped(unit, width) if unit else [])])
     tallest = max(len(stack) for stack in stacks)
     return [[""] * (tallest - len(stack)) + stack for stack in stacks]
 
@@ -143,9 +158,9 @@ def _csv(table: ResultTable) -> str:
 
 def _html(table: ResultTable) -> str:
     numeric = numeric_columns(table)
-    parts = ["<table>"]
-    if table.caption:
-        parts.append(f"<caption>{html.escape(table.caption)}</caption>")
+    parts = ['<table class="many">' if len(table.columns) > _MANY_COLUMNS else "<table>"]
+    below = f"<span>{html.escape(table.caption)}</span>" if table.caption else ""
+    parts.append(f"<caption>{html.escape(table_title(table))}{below}</caption>")
     parts.append("<thead><tr>" + "".join(_html_head(table, numeric)) + "</tr></thead>")
     parts.append("<tbody>")
     for row in cells_as_text(table, empty="\u2013"):
@@ -165,5 +180,6 @@ def _html_head(table: ResultTable, numeric: list[bool]) -> list[str]:
 
 
 def _html_cell(tag: str, text: str, right: bool) -> str:
-    attribute = ' class="n"' if right else ""
+    kind = "n" if right else "k" if len(text) <= _SHORT_TEXT else ""
+    attribute = f' class="{kind}"' if kind else ""
     return f"<{tag}{attribute}>{html.escape(text)}</{tag}>"

@@ -96,12 +96,13 @@ def residual_plot(
                 linestyle="none",
                 marker=MARKERS[i % len(MARKERS)],
                 color=SERIES[i % len(SERIES)],
+                markerfacecolor="none" if i >= len(SERIES) else None,
                 label=label,
             )
         axes.set_xscale("log")
         axes.xaxis.set_major_formatter(_plain_ticks())
         axes.set_xlabel("time (h), logarithmic")
-        axes.set_ylabel(f"(fitted - measured) / sd\n({unit})")
+        axes.set_ylabel(f"(fitted - measured) /\n{unit}")
         figure_legend(figure, axes, columns=min(len(names), 9))
 
     return draw(name, 2.7, paint)
@@ -110,7 +111,7 @@ def residual_plot(
 def parameter_forest(
     name: str, labels: Sequence[str], ratio_low: Sequence[float], ratio_high: Sequence[float]
 ) -> str:
-    """Return the SVG of intervals as a ratio to each estimate, on a logarithmic axis."""
+    """Return the SVG of intervals as a ratio to each estimate, logarithmic where they are wide."""
 
     def paint(figure: Any) -> None:
         axes = figure.subplots()
@@ -120,10 +121,12 @@ def parameter_forest(
             axes.plot([low, high], [y, y], color=SERIES[0], linewidth=2.2, solid_capstyle="butt")
             axes.plot([1.0], [y], marker="o", color=SERIES[0])
         axes.set_yticks(place, labels)
-        axes.set_xscale("log")
-        axes.xaxis.set_major_formatter(_plain_ticks())
-        axes.xaxis.set_minor_formatter(_plain_ticks())
-        axes.set_xlabel("interval / estimate (logarithmic; 1 is the estimate)")
+        wide = min(ratio_low, default=1.0) < 0.4 or max(ratio_high, default=1.0) > 2.5
+        if wide:
+            axes.set_xscale("log")
+            axes.xaxis.set_major_formatter(_plain_ticks())
+        scale = "logarithmic; 1 is the estimate" if wide else "1 is the estimate"
+        axes.set_xlabel(f"interval / estimate ({scale})")
         axes.grid(visible=False, axis="y")
         axes.set_ylim(-0.7, len(labels) - 0.3)
 
@@ -196,15 +199,16 @@ def _paint_panel(axes: Any, panel: Panel, band_label: str) -> None:
             linestyle="--",
             label="ultimate extraction",
         )
+    known = bool(np.any(panel.sd > 0))
     axes.errorbar(
         panel.time_h,
         100 * panel.extraction,
-        yerr=200 * panel.sd,
+        yerr=200 * panel.sd if known else None,
         fmt="o",
         color=SERIES[1],
         markersize=3.2,
         elinewidth=0.8,
-        label="measured, 2 sd",
+        label="measured, 2 sd" if known else "measured",
     )
     axes.set_title(", ".join(word for word in (panel.test, panel.size, panel.temperature) if word))
     axes.set_ylim(0, 105)

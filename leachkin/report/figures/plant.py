@@ -190,7 +190,7 @@ def _tint_rules(axes: Any, x: Array, rules: Sequence[str]) -> None:
         end = float(x[min(i, len(x) - 1)])
         tint = _RULE_TINTS[names.index(rules[start]) % len(_RULE_TINTS)]
         label = f"{rules[start]} rules" if rules[start] not in seen else None
-        axes.axvspan(float(x[start]), end, color=tint, linewidth=0, label=label)
+        axes.axvspan(float(x[start]) if start else 0.0, end, color=tint, linewidth=0, label=label)
         seen.add(rules[start])
         start = i
 

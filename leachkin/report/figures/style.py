@@ -20,7 +20,7 @@ TINTS = {"reagent supply": "#f3e3d3", "ore": "#dfe9ee"}
 MARKERS = ("o", "s", "^", "D", "v", "P")
 LINES = ("-", "--", "-.", ":")
 
-_SETTINGS = {
+_SETTINGS: dict[str, Any] = {
     "font.family": "sans-serif",
     "font.sans-serif": ["DejaVu Sans", "Arial", "Helvetica", "sans-serif"],
     "font.size": 8.0,
@@ -91,7 +91,8 @@ def draw(name: str, height_in: float, paint: Any, width_in: float = _PAGE_WIDTH_
     import matplotlib
     from matplotlib.figure import Figure
 
-    with matplotlib.rc_context({**_SETTINGS, "svg.hashsalt": name}):
+    settings: Any = {**_SETTINGS, "svg.hashsalt": name}
+    with matplotlib.rc_context(settings):
         figure = Figure(figsize=(width_in, height_in), layout="constrained")
         paint(figure)
         buffer = io.StringIO()
