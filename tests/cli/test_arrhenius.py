@@ -9,7 +9,7 @@ from leachkin.published_checks.cases import read_data
 
 
 @pytest.fixture
-def invoke(tmp_path):
+def arrhenius(tmp_path):
     def call(text, *options):
         path = tmp_path / "rates.csv"
         path.write_text(text, encoding="utf-8")
@@ -24,10 +24,10 @@ def iodide():
     return "\n".join([",".join(headings), *rows])
 
 
-def test_hydrogen_iodide_gives_the_published_energy(invoke):
-    result = invoke(iodide(), "--json")
+def test_hydrogen_iodide_gives_the_published_energy(arrhenius):
+    result = arrhenius(iodide(), "--json")
     assert result.exit_code == 0
-    assert "186.3" in invoke(iodide()).stdout
+    assert "186.3" in arrhenius(iodide()).stdout
     text = json.dumps(json.loads(result.stdout))
     assert "186.3" in text
 
@@ -45,8 +45,8 @@ def test_hydrogen_iodide_gives_the_published_energy(invoke):
         ("temperature (degC),k\n25,1\n35,-2\n45,3\n", "row 3.*a rate constant of -2"),
     ],
 )
-def test_wrong_input_is_told_with_its_place(invoke, text, message):
-    result = invoke(text)
+def test_wrong_input_is_told_with_its_place(arrhenius, text, message):
+    result = arrhenius(text)
     assert result.exit_code == 1
     assert "Traceback" not in result.output
     assert re.search(message, result.stderr), result.stderr

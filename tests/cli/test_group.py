@@ -4,14 +4,8 @@ import subprocess
 import sys
 
 import pytest
-from click.testing import CliRunner
 
-from leachkin.cli.main import _COMMANDS, main
-
-
-@pytest.fixture
-def invoke():
-    return lambda *words: CliRunner().invoke(main, list(words))
+from leachkin.cli.main import _COMMANDS
 
 
 def test_help_lists_what_exists_and_nothing_else(invoke):
@@ -61,7 +55,7 @@ def test_wrong_usage_is_exit_2(invoke, words, message):
 
 
 @pytest.mark.parametrize(
-    "name", ["check", "extraction", "fit", "tank", "heap", "cementation", "budget", "arrhenius"]
+    "name", ["extraction", "fit", "tank", "heap", "cementation", "budget", "arrhenius"]
 )
 def test_a_file_that_is_not_there_is_exit_1_with_a_message(invoke, tmp_path, name):
     result = invoke(name, f"{tmp_path.as_posix()}/nothing.csv")
@@ -77,14 +71,34 @@ def test_a_broken_program_is_not_hidden(invoke, monkeypatch):
     assert isinstance(invoke("verify").exception, ZeroDivisionError)
 
 
-def test_an_ascii_console_gets_question_marks_not_a_traceback(tmp_path):
-    name = f"{tmp_path.as_posix()}/\u03bcg_\u00b0.csv"
+def test_check_reports_a_missing_file_as_its_result(invoke, tmp_path):
+    result = invoke("check", f"{tmp_path.as_posix()}/nothing.csv")
+    assert result.exit_code == 1
+    assert "there is no such file" in result.stdout
+
+
+@pytest.mark.parametrize("encoding", ["cp1252", "cp437", "latin-1", "ascii"])
+def test_a_console_without_a_letter_never_crashes(tmp_path, encoding):
+    name = f"{tmp_path.as_posix()}/\u03c4_\u2192.csv"
     run = subprocess.run(
         [sys.executable, "-m", "leachkin", "arrhenius", name],
         capture_output=True,
-        text=True,
-        env={"PYTHONIOENCODING": "ascii", "PYTHONUTF8": "0"},
+        env={"PYTHONIOENCODING": encoding, "PYTHONUTF8": "0"},
     )
     assert run.returncode == 1
+    assert b"Traceback" not in run.stderr
+    assert b"there is no such file" in run.stderr
+    if encoding in ("cp1252", "latin-1"):
+        assert b"?_?.csv" in run.stderr
+
+
+@pytest.mark.skipif(sys.platform == "win32", reason="a POSIX pipe")
+def test_a_reader_that_leaves_early_is_no_crash():
+    run = subprocess.run(
+        f"{sys.executable} -m leachkin verify | head -n 1",
+        shell=True,
+        capture_output=True,
+        text=True,
+    )
     assert "Traceback" not in run.stderr
-    assert "?g_?.csv" in run.stderr
+    assert "Exception ignored" not in run.stderr

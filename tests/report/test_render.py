@@ -17,11 +17,11 @@ TABLE = ResultTable(
 def test_terminal_text_lines_up_and_is_plain_ascii():
     text = render_table(TABLE)
     lines = text.splitlines()
-    assert lines[0] == "Iron by sink"
+    assert lines[:2] == ["Sinks", "Iron by sink"]
     assert text.isascii()
     assert "1.701" in text
     assert "0.450" in text
-    ends = {len(line) for line in lines[2:4] if line} | {len(lines[-1]), len(lines[-2])}
+    ends = {len(line) for line in lines[3:5]} | {len(lines[-1]), len(lines[-2])}
     assert len(ends) == 1, "right-aligned numbers end in one column"
 
 
@@ -36,6 +36,21 @@ def test_terminal_wraps_words_and_never_cuts_a_number():
     assert "123500" in text
     for word in ("sentence", "that", "edge", "screen"):
         assert word in text
+
+
+def test_rows_with_units_of_their_own_keep_their_own_digits():
+    columns = (Column("item", "Item"), Column("value", "Value"), Column("unit", "Unit"))
+    rows = (("area", 99681.02, "m2"), ("flow", 797.448, "m3/h"), ("factor", 1.3264, "kg/kg"))
+    text = render_table(ResultTable("figures", columns, rows))
+    for number in ("99680", "797.4", "1.326"):
+        assert f" {number} " in text
+
+
+def test_long_headings_and_units_wrap_over_narrow_numbers():
+    columns = (Column("day", "Day"), Column("x", "Particles alone, not a heap", "% of total metal"))
+    text = render_table(ResultTable("heap", columns, ((1.0, 74.9), (2.0, 80.2))))
+    assert max(len(line) for line in text.splitlines()) < 20
+    assert "(% of" in text
 
 
 def test_an_empty_table_says_so():
