@@ -92,6 +92,8 @@ class LazyCommands(click.Group):
     def main(self, args: Sequence[str] | None = None, *more: Any, **settings: Any) -> Any:
         """Run the program; a console that knows no such letter gets a question mark."""
         _forgive_encoding()
+        if not more:
+            settings.setdefault("prog_name", "leachkin")
         return super().main(args, *more, **settings)
 
 

@@ -40,7 +40,7 @@ def run_options(function: Decorated) -> Decorated:
         type=click.FloatRange(0.5, 0.999),
         default=DEFAULT_LEVEL,
         show_default=True,
-        help="Level of the intervals of fitted parameters.",
+        help="Level of intervals and bands.",
     )(function)
     function = click.option(
         "--draws",

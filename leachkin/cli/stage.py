@@ -67,11 +67,16 @@ def print_stage(stage: str, result: CampaignResult, *, as_json: bool) -> None:
 def stop_where_not_done(stage: str, result: CampaignResult) -> None:
     """Raise every question about a stage that was asked for and could not be done."""
     from leachkin.errors import InputProblems
+    from leachkin.problems import Problem
     from leachkin.report import stage_tables
 
     if stage_tables(result, stage):
         return
-    raise InputProblems([problem for problem in result.problems if problem.level == "ask"])
+    asked = [problem for problem in result.problems if problem.level == "ask"]
+    found = f"there is nothing for leachkin {stage} in this campaign"
+    hint = "give extraction against time to leachkin fit instead" if stage == "extraction" else ""
+    nothing = Problem("", None, "", "stop", found, "test sheets under [tables]", hint)
+    raise InputProblems(asked or [nothing])
 
 
 def say_next(stage: str, campaign: str) -> None:

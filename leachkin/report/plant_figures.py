@@ -38,7 +38,7 @@ def _tanks(stage: TankStage, reagent: str) -> ReportFigure:
     svg = tank_bars("tanks", list(stage.extraction.value), left, (metal, reagent), stage.grade)
     caption = (
         f"{stage.grade}. Cumulative extraction of total {metal} at each outlet, ideally mixed "
-        f"tanks at {celsius(stage.temperature_K)}. Band in the table: "
+        f"tanks at {celsius(stage.temperature_K)}. Band, in the table: "
         f"{band_words(stage.extraction.level, stage.contains)}."
     )
     return ReportFigure("tanks", "plant", "Tank by tank", caption, svg)

@@ -110,7 +110,7 @@ def sections(result: CampaignResult, figures: Sequence[ReportFigure]) -> tuple[S
     tables = result.tables()
     found = []
     for key, title, names in _SECTIONS:
-        own = tuple(for_people(table) for table in tables if _begins(table, names))
+        own = tuple(for_people(t) for t in tables if t.rows and _begins(t, names))
         pictures = tuple(figure for figure in figures if figure.section == key)
         if own or pictures or (key == "hazards" and result.cautions):
             found.append(Section(key, title, _left_out(tables, own), pictures, own))

@@ -48,7 +48,7 @@ def file_word(text: str) -> str:
 def band_words(level: float | None, contains: Sequence[str]) -> str:
     """Return what a band is: ``P10 (low) to P90: fit, scale-up ranges``."""
     if level is None:
-        return "no band: no draws were made"
+        return "; ".join(contains) or "no band: no draws were made"
     low = 50 * (1 - level)
     ends = f"P{low:.3g} (low) to P{100 - low:.3g}"
     return f"{ends}: {', '.join(contains)}" if contains else ends

@@ -88,6 +88,15 @@ def test_wrong_explanations(invoke, bench, words, code, message):
     assert message in result.stderr
 
 
+def test_extraction_given_directly_has_no_balance_and_that_is_said(invoke, tmp_path):
+    path = tmp_path / "curve.csv"
+    path.write_text("time (h),extraction (%)\n1,10\n2,20\n4,35\n8,55\n")
+    result = invoke("extraction", path)
+    assert result.exit_code == 1
+    assert "nothing for leachkin extraction" in result.stderr
+    assert "leachkin fit" in result.stderr
+
+
 def test_check_counts_and_ends_with_what_to_type(invoke, bench):
     good = invoke("check", bench)
     assert good.exit_code == 0
