@@ -98,8 +98,8 @@ def depth_of_time(
     if shape == "sphere":
         return solve_depth(film, ash_layer, chemical, time)
     total = film + ash_layer + chemical
-    theta = np.minimum(time / total, 1.0)
-    left = np.maximum((total - time) / total, 0.0)
+    spent = np.minimum(time, total)
+    theta, left = spent / total, (total - spent) / total
     f, d, c = film / total, ash_layer / total, chemical / total
     if shape == "slab":
         z = _positive_root(d, f + c, theta)

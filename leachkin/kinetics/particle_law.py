@@ -54,7 +54,7 @@ class ParticleLaw:
     --------
     >>> law = ParticleLaw(ash_layer=7.0, chemical=3.0)
     >>> law.conversion([0.0, 1.0, 10.0]).round(4).tolist()
-    [0.0, 0.5187, 1.0]
+    [0.0, 0.4169, 1.0]
     """
 
     film: Array | float = 0.0

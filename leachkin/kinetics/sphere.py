@@ -70,8 +70,8 @@ def _solve_block(
     """Return the smaller of z and y, and where it is y."""
     total = film + ash_layer + chemical
     f, d, c = film / total, ash_layer / total, chemical / total
-    theta = np.minimum(time / total, 1.0)
-    left = np.maximum((total - time) / total, 0.0)
+    spent = np.minimum(time, total)
+    theta, left = spent / total, (total - spent) / total
     if not np.any(film) and not np.any(chemical):
         return _ash_alone(theta, left)
     near_end = theta > 0.875 * f + 0.5 * (d + c)
@@ -99,7 +99,7 @@ def _halley(first: Array, second: Array, third: Array, target: Array, u: Array) 
         bend = curve + 2.0 * third * u  # half the second derivative
         step = miss * slope / np.maximum(slope * slope - miss * bend, _SMALLEST)
         u = u - step
-    return u
+    return np.maximum(u, 0.0)  # a step may pass 0 where the target is below the normal numbers
 
 
 def _ash_alone(theta: Array, left: Array) -> tuple[Array, NDArray[np.bool_]]:

@@ -161,6 +161,15 @@ def test_ends(shape):
     assert_allclose(law.time([0.0, 1.0]), [0.0, law.complete_at], atol=1e-15)
 
 
+def test_numbers_at_the_edge_of_floating_point():
+    law = ParticleLaw(1.0, 108.0, 0.0)
+    X = law.conversion([0.0, 5e-324, 1e-300, 1e300])
+    assert np.all((X >= 0.0) & (X <= 1.0))
+    assert X[-1] == 1.0
+    for shape in SHAPES:
+        assert ParticleLaw(chemical=1e-200, shape=shape).conversion(1e200) == 1.0
+
+
 def test_more_resistance_is_never_faster():
     times = np.linspace(0.0, 12.0, 50)
     base = ParticleLaw(1.0, 2.0, 3.0).conversion(times)
