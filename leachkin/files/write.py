@@ -162,7 +162,7 @@ def _csv_cell(cell: Any) -> str:
         return ""
     if isinstance(cell, bool):
         return "yes" if cell else "no"
-    return repr(cell) if isinstance(cell, float) else str(cell)
+    return repr(float(cell)) if isinstance(cell, float) else str(cell)
 
 
 def check_finite(table: ResultTable, row: tuple[Any, ...]) -> None:

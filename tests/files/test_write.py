@@ -6,7 +6,8 @@ import numpy as np
 import pytest
 
 from leachkin.errors import InputProblems
-from leachkin.files import whole_directory, write_json, write_text
+from leachkin.files import whole_directory, write_csv, write_json, write_text
+from leachkin.result_table import Column, ResultTable
 
 
 def names(folder):
@@ -98,3 +99,9 @@ def test_json_has_plain_numbers(tmp_path):
         write_json({"heap": {"pls": [1.0, float("nan")]}}, tmp_path / "b")
     with pytest.raises(TypeError, match="heap: object cannot be written"):
         write_json({"heap": object()}, tmp_path / "b")
+
+
+def test_csv_has_plain_numbers_of_all_digits(tmp_path):
+    table = ResultTable("t", (Column("x", "X", "g/L"), Column("y", "Y")), ((np.float64(0.1), 2),))
+    write_csv(table, tmp_path / "a.csv")
+    assert (tmp_path / "a.csv").read_bytes() == b"X (g/L),Y\n0.1,2\n"
