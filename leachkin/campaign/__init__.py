@@ -1,0 +1,48 @@
+"""The campaign: the one input file, every default, and the order of the stages."""
+
+from leachkin.campaign.bands import Band, Quantity
+from leachkin.campaign.campaign import Campaign, read_campaign, read_leniently
+from leachkin.campaign.check import CheckOutcome, check_campaign
+from leachkin.campaign.file_page import campaign_file_page
+from leachkin.campaign.result import SCHEMA_VERSION, CampaignResult
+from leachkin.campaign.run import DEFAULT_DRAWS, DEFAULT_LEVEL, STAGES, run_campaign
+from leachkin.campaign.settings import Assumption, Settings, register_table
+from leachkin.campaign.stage_results import (
+    BudgetStage,
+    CementationStage,
+    GangueStage,
+    HeapStage,
+    KineticsStage,
+    LawElsewhere,
+    TankStage,
+)
+from leachkin.campaign.what_if import key_figures, what_if
+
+__all__ = [
+    "DEFAULT_DRAWS",
+    "DEFAULT_LEVEL",
+    "SCHEMA_VERSION",
+    "STAGES",
+    "Assumption",
+    "Band",
+    "BudgetStage",
+    "Campaign",
+    "CampaignResult",
+    "CementationStage",
+    "CheckOutcome",
+    "GangueStage",
+    "HeapStage",
+    "KineticsStage",
+    "LawElsewhere",
+    "Quantity",
+    "Settings",
+    "TankStage",
+    "campaign_file_page",
+    "check_campaign",
+    "key_figures",
+    "read_campaign",
+    "read_leniently",
+    "register_table",
+    "run_campaign",
+    "what_if",
+]

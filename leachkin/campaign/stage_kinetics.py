@@ -1,0 +1,208 @@
+"""The kinetics stage: which law each metal of each domain follows, from tests or from print."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Any
+
+from leachkin.campaign.campaign import Campaign
+from leachkin.campaign.printed_law import law_from_print
+from leachkin.campaign.settings import Settings
+from leachkin.campaign.sheets import exclusions
+from leachkin.campaign.stage_results import KineticsStage
+from leachkin.errors import InputProblems, LeachkinError
+from leachkin.kinetics import FitResult, Ranking, Reference, law_terms, rank_tests
+from leachkin.problems import Problem
+from leachkin.testwork import Observed, observe
+
+#: Fewest readings of all tests of a metal that a fit is tried on.
+FEWEST_READINGS = 4
+
+
+def kinetics_stage(
+    campaign: Campaign, level: float
+) -> tuple[dict[str, KineticsStage], tuple[Problem, ...]]:
+    """Return the rate law of every metal and domain, by "domain/metal".
+
+    A metal whose fit fails is a problem; the others still get theirs.
+    """
+    stages: dict[str, KineticsStage] = {}
+    problems: list[Problem] = []
+    observed, found = observed_by_key(campaign)
+    problems += found
+    printed = _printed_key(campaign)
+    for key, tests in observed.items():
+        if key == printed:
+            problems.append(_print_wins(key))
+            continue
+        try:
+            stages[key] = _fitted(campaign, key, tests, level)
+        except LeachkinError as error:
+            problems += _failed(key, error)
+    if printed is not None:
+        try:
+            stages[printed] = _printed(campaign.settings, printed)
+        except LeachkinError as error:
+            problems += _failed(printed, error)
+    return stages, tuple(problems)
+
+
+def observed_by_key(
+    campaign: Campaign,
+) -> tuple[dict[str, list[Observed]], tuple[Problem, ...]]:
+    """Return what the fits see, by "domain/metal": the metals of the campaign only."""
+    found: dict[str, list[Observed]] = {}
+    problems: list[Problem] = []
+    for one in campaign.observed:
+        found.setdefault(one.key, []).append(one)
+    for test in campaign.tests:
+        for metal in campaign.metals:
+            if metal not in test.solution:
+                problems.append(_not_assayed(test.name, metal))
+                continue
+            try:
+                one = observe(test, metal)
+            except InputProblems as error:
+                problems += [p for p in error.problems if isinstance(p, Problem)]
+                continue
+            if one.value.size:
+                found.setdefault(one.key, []).append(one)
+    return found, tuple(problems)
+
+
+def exclusion_texts(settings: Settings) -> tuple[str, ...]:
+    """Return every exclusion in words."""
+    texts = []
+    for one in exclusions(settings):
+        when = "all readings" if one.time_h is None else f"{one.time_h:g} h"
+        texts.append(f"{one.test}, {when}: {one.reason} ({one.by})")
+    return tuple(texts)
+
+
+def _not_assayed(test: str, metal: str) -> Problem:
+    return Problem("", None, "", "note", f"{test} has no {metal} assays: not in its fit")
+
+
+def _print_wins(key: str) -> Problem:
+    return Problem(
+        "",
+        None,
+        "rate_law",
+        "note",
+        f"{key} has tests and a printed law: the plant uses the printed one",
+        "one of them",
+        "take [rate_law] out to use the tests",
+    )
+
+
+def _failed(key: str, error: LeachkinError) -> list[Problem]:
+    if isinstance(error, InputProblems):
+        return [
+            Problem(
+                p.file,
+                p.row,
+                p.column,
+                "ask",
+                f"no rate law for {key}: {p.found}",
+                p.allowed,
+                p.try_this,
+            )
+            for p in error.problems
+            if isinstance(p, Problem)
+        ]
+    return [Problem("", None, "fit", "ask", f"no rate law for {key}: {error}")]
+
+
+def _printed_key(campaign: Campaign) -> str | None:
+    settings = campaign.settings
+    if not settings.has("rate_law"):
+        return None
+    metal = settings.get("rate_law.metal") or next(iter(campaign.metals), "metal")
+    return f"{settings.get('rate_law.domain')}/{metal}"
+
+
+def _printed(settings: Settings, key: str) -> KineticsStage:
+    source = settings.get("rate_law.source")
+    note = f"constants from {source}" if source else "constants from print, no source stated"
+    return KineticsStage(key, law_from_print(settings), "print", notes=(note,))
+
+
+def _fitted(campaign: Campaign, key: str, tests: Sequence[Observed], level: float) -> KineticsStage:
+    readings = sum(len(one.value) for one in tests)
+    if readings < FEWEST_READINGS:
+        raise InputProblems(
+            [
+                Problem(
+                    "",
+                    None,
+                    "",
+                    "ask",
+                    f"{readings} readings",
+                    f"{FEWEST_READINGS} or more",
+                    "add tests or readings",
+                )
+            ]
+        )
+    ranking = rank_tests(tests, **fit_options(campaign.settings, level))
+    fit = carried(ranking)
+    return KineticsStage(
+        key,
+        fit.law,
+        "fit",
+        tuple(tests),
+        ranking,
+        fit,
+        exclusion_texts(campaign.settings),
+    )
+
+
+def fit_options(settings: Settings, level: float) -> dict[str, Any]:
+    """Return the settings of a fit as the fitting functions take them."""
+    options: dict[str, Any] = {
+        "laws": settings.get("fit.laws"),
+        "ultimate": settings.get("fit.ultimate"),
+        "size_exponents": settings.get("fit.size_exponents"),
+        "reagent_order": settings.get("fit.reagent_order"),
+        "reference": _reference(settings),
+        "level": level,
+    }
+    return {name: value for name, value in options.items() if value is not None}
+
+
+def _reference(settings: Settings) -> Reference | None:
+    names = {"temperature_K": "temperature", "size_mm": "size", "reagent_g_per_L": "reagent"}
+    given = {n: settings.get(f"fit.reference_{key}") for n, key in names.items()}
+    stated = {name: value for name, value in given.items() if value is not None}
+    return Reference(**stated) if len(stated) == len(names) else None
+
+
+def carried(ranking: Ranking) -> FitResult:
+    """Return the fit that the plant uses: the best one that has a theory of size and strength.
+
+    Without any, the best one; the plant stages then say that they cannot use it elsewhere.
+    """
+    fits = [
+        row.fit
+        for row in sorted(ranking.rows, key=lambda row: row.delta)
+        if row.fit is not None and row.fit.converged
+    ]
+    if not fits:
+        raise InputProblems(
+            [
+                Problem(
+                    "",
+                    None,
+                    "fit",
+                    "ask",
+                    "no law could be fitted",
+                    "",
+                    "look for a test that never bends over, or starts complete",
+                )
+            ]
+        )
+    return next((fit for fit in fits if is_particle(fit.law.name)), fits[0])
+
+
+def is_particle(law: str) -> bool:
+    """Return True for a law of film, ash layer and chemical control in any sum."""
+    return all(term in ("film", "ash_layer", "chemical") for term in law_terms(law))
