@@ -1,4 +1,4 @@
-"""leachkin: from leach test sheets to extraction, kinetics, plant, cementation and a reagent budget.
+"""leachkin: leach test sheets to extraction, kinetics, plant, cementation and a reagent budget.
 
 sheets -> tests -> metal balance -> observed extraction -> fitted rate law -> ore curve ->
 tanks, heap -> solution -> cementation -> reagents and budget -> report

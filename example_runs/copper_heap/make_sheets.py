@@ -52,8 +52,12 @@ def bottles():
         times = np.array(((0.5, 1) if size == "A" else ()) + TIMES_h, dtype=float)
         for celsius in (25, 40, 55):
             yield Bottle(
-                f"{size}{celsius}", SizeDistribution.single(mean_size(size)), celsius + 273.15,
-                times, 20.0, domain="oxide",
+                f"{size}{celsius}",
+                SizeDistribution.single(mean_size(size)),
+                celsius + 273.15,
+                times,
+                20.0,
+                domain="oxide",
             )
 
 
@@ -85,7 +89,8 @@ def reading_rows(test, generator):
 
 
 def closeout_rows(test):
-    return [[test.bottle.name, "residue", f"{test.residue_g:.1f}", f"{test.tail_kg_per_t / 10:.4f}"]]
+    copper = f"{test.tail_kg_per_t / 10:.4f}"
+    return [[test.bottle.name, "residue", f"{test.residue_g:.1f}", copper]]
 
 
 def head_rows(generator):
@@ -98,8 +103,13 @@ def head_rows(generator):
 def main(folder):
     generator = np.random.default_rng(SEED)
     tests = simulate_tests(
-        true_law(), list(bottles()), head_kg_per_t=HEAD_KG_PER_T, seed=SEED, noise=NOISE,
-        per_metal_kg_per_kg=ACID_PER_COPPER, gangue=GANGUE,
+        true_law(),
+        list(bottles()),
+        head_kg_per_t=HEAD_KG_PER_T,
+        seed=SEED,
+        noise=NOISE,
+        per_metal_kg_per_kg=ACID_PER_COPPER,
+        gangue=GANGUE,
     )
     write(folder, "tests.csv",
           ["test", "domain", "kind", "dry solids (g)", "solution (mL)", "size lower (mm)",

@@ -101,12 +101,10 @@ def _print_variations(
     as_json: bool,
     **options: Any,
 ) -> None:
-    from leachkin.campaign import vary as vary_campaign
+    from leachkin.campaign import what_if
     from leachkin.cli.output import print_json, print_tables, progress_line
 
-    table = vary_campaign(
-        campaign, vary, stage, overrides=settings, progress=progress_line(), **options
-    )
+    table = what_if(campaign, stage, vary=vary, set=settings, progress=progress_line(), **options)
     if as_json:
         print_json(table.to_records())
     else:

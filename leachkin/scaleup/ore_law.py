@@ -156,7 +156,8 @@ def _of_rate_law(
         leachable = flat(law.class_weights(sizes), n, 1)
         measure = measure_of_particles(by_draw, leachable, flat(np.asarray(law.lag_h), n))
     else:
-        measure = measure_of_curve(law.ore_curve(sizes, base_K), n)
+        measure = measure_of_curve(law.ore_curve(sizes), n)
+        pace = pace * np.asarray(law.clock_rate(base_K))[..., None]
     return OreLaw(measure, batch, law.reference.reagent_g_per_L, law.order, pace)
 
 

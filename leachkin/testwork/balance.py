@@ -13,9 +13,10 @@ from leachkin.testwork.balance_notes import balance_notes, policy_note, unused_w
 from leachkin.testwork.records import Array, Assays, Head, MetalBalance, Product, Test
 from leachkin.testwork.recursion import (
     assays_for_balance,
-    balance_matrix,
     brought_mg,
+    metal_out_mg,
     solution_ledger,
+    weights_mL,
 )
 from leachkin.testwork.settings import BalanceLimits
 
@@ -116,15 +117,14 @@ def leached_metal(test: Test, analyte: str) -> Leached:
         final = _by_products(test, analyte, empty, np.zeros(0), float(brought[-1]))
         return Leached(nothing, nothing, final, final is not None)
     used = assays_for_balance(test, analyte)
-    matrix = balance_matrix(ledger)
     missing = np.isnan(test.solution[analyte].value)
-    dissolved = (matrix @ used.value - brought[:-1]) / 1000.0
+    dissolved = (metal_out_mg(ledger, used.value) - brought[:-1]) / 1000.0
     uncorrected = used.value * ledger.start_mL / 1000.0
     by_products = _by_products(test, analyte, used, ledger.removed_mL, float(brought[-1]))
     final = by_products
     if final is None and not missing.all():
         last = int(np.flatnonzero(~missing)[-1])
-        sd_g = float(np.linalg.norm(matrix[last] * used.sd)) / 1000.0
+        sd_g = float(np.linalg.norm(weights_mL(ledger, last) * used.sd)) / 1000.0
         final = _sum([Amount(float(dissolved[last]), sd_g), *_on_carbon(test, analyte)])
     dissolved[missing], uncorrected[missing] = np.nan, np.nan
     return Leached(dissolved, uncorrected, final, by_products is not None)

@@ -38,6 +38,7 @@ class CellReader:
     sheet: Sheet
     uses: Mapping[str, Use]
     problems: list[Problem]
+    _texts: dict[str, list[str]] = field(default_factory=dict)
     _missing: list[tuple[int, str, str]] = field(default_factory=list)
     _censored: list[tuple[int, str, str]] = field(default_factory=list)
 
@@ -48,10 +49,12 @@ class CellReader:
 
     def texts(self, key: str) -> list[str]:
         """Return a column as text, empty cells where there is no such column."""
-        use = self.uses.get(key)
-        if use is None:
-            return [""] * len(self.sheet.rows)
-        return [row.cells[use.position] for row in self.sheet.rows]
+        if key not in self._texts:
+            use = self.uses.get(key)
+            self._texts[key] = [
+                row.cells[use.position] if use is not None else "" for row in self.sheet.rows
+            ]
+        return self._texts[key]
 
     def numbers(self, key: str) -> Array | None:
         """Return a column in its target unit, NaN where a cell is blank; None without it."""

@@ -6,12 +6,7 @@ import numpy as np
 
 from leachkin.testwork.balance import leached_metal, metal_balance, undissolved_metal
 from leachkin.testwork.records import MetalBalance, Test
-from leachkin.testwork.recursion import (
-    assays_for_balance,
-    balance_matrix,
-    brought_mg,
-    solution_ledger,
-)
+from leachkin.testwork.recursion import assays_for_balance, brought_mg, solution_ledger
 
 _SHOWN_TERMS = 12
 
@@ -65,9 +60,9 @@ def _solution(test: Test, analyte: str, balance: MetalBalance) -> list[str]:
         return [f"No {analyte} readings."]
     ledger, used = solution_ledger(test), assays_for_balance(test, analyte)
     last = int(np.flatnonzero(~np.isnan(balance.dissolved_g))[-1])
-    matrix, brought = balance_matrix(ledger), brought_mg(test, analyte, ledger)
-    removed_g = float(matrix[last, :last] @ used.value[:last]) / 1000.0
-    in_vessel_g = float(matrix[last, last] * used.value[last]) / 1000.0
+    brought = brought_mg(test, analyte, ledger)
+    removed_g = float(ledger.removed_mL[:last] @ used.value[:last]) / 1000.0
+    in_vessel_g = float(ledger.volume_mL[last] * used.value[last]) / 1000.0
     lines = [
         f"Taken out before {test.time_h[last]:g} h: "
         f"{_terms(used.value[:last], ledger.removed_mL[:last])} = {removed_g:.4g} g {analyte}",

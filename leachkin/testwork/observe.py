@@ -13,6 +13,8 @@ from leachkin.testwork.records import Array, History, Observed, Test
 from leachkin.testwork.recursion import balance_matrix, brought_mg, solution_ledger
 from leachkin.testwork.sizes import SizeDistribution
 
+#: The expected values of one test are a matrix of readings by readings.
+MOST_READINGS = 2000
 _SAME_TIME = 1e-9
 
 
@@ -36,13 +38,21 @@ def observe(test: Test, analyte: str, exclude: Iterable[float | str] = ()) -> Ob
     Raises
     ------
     InputProblems
-        If there are no readings of the analyte, or neither a head assay nor a calculated head.
+        If there are no readings of the analyte, more than :data:`MOST_READINGS`, or neither a
+        head assay nor a calculated head.
     """
     if analyte not in test.solution or not test.time_h.size:
         raise argument_error(
             "analyte",
             f"test {test.name} has no readings of {analyte!r}",
             ", ".join(test.solution) or "a test with readings",
+        )
+    if test.time_h.size > MOST_READINGS:
+        raise argument_error(
+            "test",
+            f"{test.name} has {test.time_h.size} readings",
+            f"at most {MOST_READINGS} for a fit",
+            "thin the log out: each hour, or each day",
         )
     head, head_sd = _head(test, analyte)
     out = _excluded(test, exclude)

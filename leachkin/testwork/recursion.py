@@ -81,6 +81,20 @@ def balance_matrix(ledger: SolutionLedger) -> Array:
     return np.asarray(taken + np.diag(ledger.volume_mL))
 
 
+def metal_out_mg(ledger: SolutionLedger, concentration: Array) -> Array:
+    """Return metal in the vessel before each sample and in earlier aliquots [mg], shape (m,)."""
+    taken = np.cumsum(concentration * ledger.removed_mL)
+    earlier = np.concatenate([[0.0], taken[:-1]])[: taken.size]
+    return np.asarray(concentration * ledger.volume_mL + earlier)
+
+
+def weights_mL(ledger: SolutionLedger, reading: int) -> Array:
+    """Return the volume that each concentration counts with up to one reading, shape (m,)."""
+    weights = np.where(np.arange(ledger.removed_mL.size) < reading, ledger.removed_mL, 0.0)
+    weights[reading] = ledger.volume_mL[reading]
+    return np.asarray(weights)
+
+
 def assays_for_balance(test: Test, analyte: str) -> Assays:
     """Return assays that a balance can use: a number at every reading.
 

@@ -398,6 +398,19 @@ def test_without_a_head_assay_the_calculated_one_is_next_to_no_prior():
     assert observed.head_sd_kg_per_t == observed.head_kg_per_t
 
 
+def test_a_log_of_many_readings_is_balanced_and_not_fitted():
+    count = 100_000
+    test = bottle(
+        np.arange(1.0, count + 1.0),
+        np.full(count, 1.0),
+        aliquot_mL=np.full(count, 0.001),
+        heads={"Cu": Head(6.8, 0.1)},
+    )
+    assert_allclose(metal_balance(test, "Cu").dissolved_g[-1], 1.0 + 0.099999, rtol=1e-9)
+    with pytest.raises(InputProblems, match="B1 has 100000 readings. Allowed: at most 2000"):
+        observe(test, "Cu")
+
+
 def test_unknown_analytes_name_the_nearest():
     test = bottle([24.0], [2.0])
     with pytest.raises(InputProblems, match="B1 has no 'CU'. Allowed: Cu. Try: Cu"):
