@@ -35,7 +35,6 @@ ONLY_IN = {
     "openpyxl": {"files"},
     "matplotlib": {"report"},
     "jinja2": {"report"},
-    "rich": {"report", "cli"},
     "click": {"cli"},
     "pint": {"units"},
     "pandas": {"result_table"},

@@ -8,7 +8,7 @@ from leachkin.kinetics.arrhenius import (
 )
 from leachkin.kinetics.box import DataBox
 from leachkin.kinetics.demand import ReagentDemand
-from leachkin.kinetics.fit_curve import fit_curve, straightened_slope
+from leachkin.kinetics.fit_curve import fit_curve, straightened_time
 from leachkin.kinetics.fit_layout import Layout, Quantity
 from leachkin.kinetics.fit_result import FitResult, Parameter, Residual
 from leachkin.kinetics.fit_tests import fit_tests
@@ -61,7 +61,7 @@ __all__ = [
     "arrhenius_rate_constant",
     "fit_arrhenius",
     "fit_curve",
-    "straightened_slope",
+    "straightened_time",
     "Layout",
     "Quantity",
     "FitResult",

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
+from leachkin.constants import ZERO_CELSIUS_K
 from leachkin.problems import argument_error
 
 Range = tuple[float, float]
@@ -74,5 +75,6 @@ def _sentences(name: str, value: np.ndarray, held: Range, unit: str) -> list[str
         found.append(low)
     if high > held[1] + _SLACK * abs(held[1]) and high not in found:
         found.append(high)
-    tested = f"{held[0]:g} to {held[1]:g} {unit}"
-    return [f"{name} {x:.5g} {unit} is outside the tests ({tested})" for x in found]
+    shift, shown = (ZERO_CELSIUS_K, "degC") if unit == "K" else (0.0, unit)
+    tested = f"{held[0] - shift:.4g} to {held[1] - shift:.4g} {shown}"
+    return [f"{name} {x - shift:.4g} {shown} is outside the tests ({tested})" for x in found]

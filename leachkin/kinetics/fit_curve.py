@@ -97,7 +97,7 @@ def fit_curve(
     return fit_with_options((observed,), options)
 
 
-def straightened_slope(time: ArrayLike, extraction: ArrayLike, law: str) -> float:
+def straightened_time(time: ArrayLike, extraction: ArrayLike, law: str) -> float:
     """Return the full-conversion time by the straightened line through the origin.
 
     A diagnostic only: straightening bends the errors, so its answer differs from the fit.

@@ -200,7 +200,7 @@ class FitResult:
             Column("method", "Interval"),
             Column("why_no_interval", "Remark"),
         )
-        records = [{"parameter": p.name, **vars(p)} for p in self.parameters]
+        records = [{"parameter": p.name, **vars(p)} for p in self.parameters if not _is_filler(p)]
         return ResultTable.from_records("parameters", columns, records)
 
     def residual_table(self) -> ResultTable:
@@ -222,3 +222,11 @@ class FitResult:
         """Unit of time of the fit; "" for a curve in a unit of its own."""
         units = {q.unit for q in self.layout.quantities if q.role == "time"}
         return units.pop().removeprefix("1/") if units else ""
+
+
+def _is_filler(parameter: Parameter) -> bool:
+    """Whether a row only says that nothing was there to fit: a head or an energy left at rest."""
+    if parameter.method != "held":
+        return False
+    at_rest = parameter.name.startswith("activation_energy") and parameter.value == 0.0
+    return at_rest or parameter.name.startswith("head_")

@@ -24,7 +24,7 @@ from leachkin.kinetics import (
     arrhenius_rate_constant,
     fit_arrhenius,
     fit_curve,
-    straightened_slope,
+    straightened_time,
 )
 from leachkin.published_checks.bottle import bottle_balance
 from leachkin.published_checks.cases import Case, read_data
@@ -85,7 +85,7 @@ def _fitted_time(case: Case) -> float:
 
 def _straightened_time(case: Case) -> float:
     _, (time, conversion) = read_data(case.text("data"))
-    return float(straightened_slope(time, conversion, case.text("law")))
+    return float(straightened_time(time, conversion, case.text("law")))
 
 
 def _arrhenius(case: Case) -> ArrheniusFit:

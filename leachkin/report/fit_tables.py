@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from leachkin.campaign import KineticsStage
-from leachkin.kinetics import ArrheniusFit, FitResult, straightened_slope
+from leachkin.kinetics import ArrheniusFit, FitResult, straightened_time
 from leachkin.result_table import Column, ResultTable
 from leachkin.testwork import Observed
 
@@ -107,5 +107,5 @@ def _straightened(one: Observed, law: str, fit: FitResult) -> dict[str, object]:
         return record | {"remark": "fewer than two points below the ultimate extraction"}
     left_out = int((~inside).sum())
     note = f"{left_out} points at or above the ultimate left out" if left_out else ""
-    time = straightened_slope(one.row_time_h[inside], share[inside], law)
+    time = straightened_time(one.row_time_h[inside], share[inside], law)
     return record | {"straightened": float(time), "remark": note}

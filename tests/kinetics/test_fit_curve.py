@@ -5,7 +5,7 @@ import pytest
 from numpy.testing import assert_allclose
 
 from leachkin.errors import InputProblems
-from leachkin.kinetics import LAW_NAMES, SHAPE_PARAMETERS, fit_curve, straightened_slope
+from leachkin.kinetics import LAW_NAMES, SHAPE_PARAMETERS, fit_curve, straightened_time
 from leachkin.kinetics.fit_design import FitDesign
 from leachkin.kinetics.fit_setup import FitOptions, layout_of
 from leachkin.testwork import SizeDistribution, observed_from_extraction
@@ -52,7 +52,7 @@ def test_every_law_recovers_its_own_curve(law):
 def test_uo3_by_least_squares_and_by_the_straightened_line():
     fit = fit_curve(UO3_TIME, UO3_CONVERSION, "chemical", ultimate=1.0)
     assert_allclose(fit.parameter("tau_chemical").value, 1.036, rtol=0, atol=5e-4)
-    straight = straightened_slope(UO3_TIME, UO3_CONVERSION, "chemical")
+    straight = straightened_time(UO3_TIME, UO3_CONVERSION, "chemical")
     assert_allclose(straight, 0.995, rtol=0, atol=5e-4)
 
 

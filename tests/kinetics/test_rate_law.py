@@ -284,9 +284,9 @@ def test_data_box_names_what_lies_outside():
     assert inside == ()
     found = box.outside(temperature_K=290.15, size_mm=ORE.size_mm, time_h=2880.0)
     assert found == (
-        "temperature 290.15 K is outside the tests (298.15 to 328.15 K)",
+        "temperature 17 degC is outside the tests (25 to 55 degC)",
         "size 0.05 mm is outside the tests (1.4 to 10.9 mm)",
-        "size 15.411 mm is outside the tests (1.4 to 10.9 mm)",
+        "size 15.41 mm is outside the tests (1.4 to 10.9 mm)",
         "time 2880 h is outside the tests (2 to 240 h)",
     )
     with pytest.raises(InputProblems, match="time_h"):
