@@ -36,3 +36,15 @@ def test_public_names_are_all_served():
     for name in leachkin.__all__:
         assert getattr(leachkin, name) is not None
     assert not hasattr(leachkin, "no_such_name")
+
+
+def test_the_reference_page_lists_the_public_names():
+    import re
+    from pathlib import Path
+
+    import leachkin
+
+    page = Path(__file__).parent.parent / "docs" / "reference" / "python.md"
+    rows = [line.split("|")[1] for line in page.read_text().splitlines() if line.startswith("| `")]
+    listed = {name for row in rows for name in re.findall(r"`(\w+)`", row)}
+    assert listed == set(leachkin.__all__) - {"__version__"}
