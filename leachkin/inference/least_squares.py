@@ -25,6 +25,12 @@ STEP_IN_STANDARD_ERRORS = 0.01
 WIDEN_BELOW_CHANCE = 0.01
 #: A quantity closer to its bound than this share of the range, and pushed there, is at it.
 BOUND_SHARE = 1e-5
+#: Gauss-Newton steps at most after the solver has stopped.
+POLISHING_STEPS = 40
+#: A step that promises no more than this share of the sum of squares is rounding.
+NEGLIGIBLE_GAIN = 1e-20
+#: Residuals above this count as infinite: their squares would be.
+LARGEST_RESIDUAL = 1e140
 
 
 @dataclass(frozen=True)
@@ -114,6 +120,12 @@ def _inside(problem: LeastSquaresProblem) -> tuple[Array, Array]:
     return problem.low + 1e-4 * width, problem.high - 1e-4 * width
 
 
+def _squarable(residuals: Array) -> Array:
+    """Return residuals whose squares can be summed, else infinite ones: out of reach."""
+    reachable = np.abs(residuals).max(initial=0.0) < LARGEST_RESIDUAL
+    return residuals if reachable else np.full_like(residuals, np.inf)
+
+
 def _solve(
     problem: LeastSquaresProblem, evaluate: _Remembered, start: Array, max_evaluations: int
 ) -> tuple[Array, str]:
@@ -127,8 +139,12 @@ def _solve(
     def vector_of(given: Any) -> Array:
         return np.array([given[key].value for key in keys])
 
+    # a trial step without finite residuals is no error: the solver takes a shorter one
     minimizer = lmfit.Minimizer(
-        lambda given: evaluate(vector_of(given))[0], parameters, calc_covar=False
+        lambda given: _squarable(evaluate(vector_of(given))[0]),
+        parameters,
+        nan_policy="propagate",
+        calc_covar=False,
     )
     # lmfit inverts an unscaled J'J on the way out; that covariance is not used here
     with np.errstate(invalid="ignore", divide="ignore"):
@@ -171,10 +187,13 @@ def _polish(problem: LeastSquaresProblem, evaluate: _Remembered, vector: Array) 
     """Return the vector after a few Gauss-Newton steps.
 
     Near the minimum the sum of squares no longer shows progress; the promised gain still does.
+    Where residuals stay large the steps shrink by a steady factor only, so several may be needed.
     """
     step, gain = _step(problem, evaluate, vector)
     squares = _squares(evaluate, vector)
-    for _ in range(4):
+    for _ in range(POLISHING_STEPS):
+        if gain <= NEGLIGIBLE_GAIN * squares:
+            break
         trial = np.clip(vector + step, problem.low, problem.high)
         trial_squares = _squares(evaluate, trial)
         if not trial_squares <= squares * (1.0 + 1e-12):
@@ -187,7 +206,7 @@ def _polish(problem: LeastSquaresProblem, evaluate: _Remembered, vector: Array) 
 
 
 def _squares(evaluate: _Remembered, vector: Array) -> float:
-    residuals = evaluate(vector)[0]
+    residuals = _squarable(evaluate(vector)[0])
     return float(residuals @ residuals)
 
 

@@ -140,3 +140,18 @@ def test_draws_have_the_covariance_and_repeat_with_the_seed():
 def test_student_draws_are_wider():
     draws = draw_vectors(np.zeros(1), np.eye(1), 100_000, seed=5, degrees_of_freedom=4)
     assert_allclose(np.quantile(draws, 0.975), 2.776, rtol=0.05)  # t of 4 degrees
+
+
+@pytest.mark.parametrize("far", [np.nan, np.inf, 1e200])
+def test_a_trial_step_out_of_the_domain_is_shortened(far):
+    times = np.arange(1.0, 4.0)
+
+    def evaluate(v):
+        if v[0] <= 0:  # where the first full step from 100 lands
+            return np.full(3, far), np.zeros((3, 1))
+        return times * (np.log(v[0]) - np.log(0.01)), (times / v[0])[:, None]
+
+    wide = np.array([np.inf])
+    found = least_squares(LeastSquaresProblem(("v",), np.array([100.0]), -wide, wide, evaluate))
+    assert found.converged, found.message
+    assert_allclose(found.vector, [0.01], rtol=1e-9)
