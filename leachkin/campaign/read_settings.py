@@ -128,7 +128,7 @@ def _check_top(walk: _Walk, data: Mapping[str, Any]) -> None:
                 "stop",
                 "no settings in the file",
                 f"format = {FORMAT}, [campaign] and a table for each stage",
-                "start from: leachkin template DIR --kind bottle-rolls",
+                "start from a copy of example_runs/copper_heap",
             )
         )
         return

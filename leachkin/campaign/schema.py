@@ -27,6 +27,8 @@ Kind = Literal[
     "choice or fraction",
     "choice or quantity",
     "number or quantity",
+    "law",
+    "laws",
 ]
 
 #: Format number of the campaign file that this program reads.

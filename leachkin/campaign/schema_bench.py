@@ -67,7 +67,7 @@ FIT = TableSchema(
     (
         Key(
             "laws",
-            "texts",
+            "laws",
             "Laws to rank; left out, the mechanistic ones, first order and two rates",
         ),
         Key(

@@ -8,7 +8,7 @@ RATE_LAW = TableSchema(
     "rate_law",
     "Constants from print instead of tests.",
     (
-        Key("law", "text", "Name of the law", required=True),
+        Key("law", "law", "Name of the law", required=True),
         Key("domain", "text", "Domain of the ore", default="ore"),
         Key("metal", "text", "Metal; left out, the first of campaign.metals"),
         Key("head", "quantity", "Head grade", "kg/t", ranged=True, judged=True, above=0.0),

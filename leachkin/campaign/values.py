@@ -13,7 +13,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from leachkin.campaign.schema import Key
-from leachkin.errors import UnitError, nearest_names
+from leachkin.errors import InputProblems, UnitError, nearest_names
 from leachkin.problems import Level, Problem, unit_problem
 from leachkin.testwork import read_precision
 from leachkin.units import parse_quantity
@@ -112,6 +112,23 @@ def _text(key: Key, raw: Any, loose: bool) -> str:
 def _texts(key: Key, raw: Any, loose: bool) -> tuple[str, ...]:
     items = _items(key, raw, loose)
     return tuple(_text(key, item, loose) for item in items)
+
+
+def _law(key: Key, raw: Any, loose: bool) -> str:
+    """Return a law by the name the program writes."""
+    from leachkin.kinetics import canonical_law
+
+    try:
+        return canonical_law(_text(key, raw, loose))
+    except InputProblems as error:
+        problem = error.problems[0]
+        if isinstance(problem, Problem):
+            raise _stop(problem.found, problem.allowed, problem.try_this) from None
+        raise
+
+
+def _laws(key: Key, raw: Any, loose: bool) -> tuple[str, ...]:
+    return tuple(_law(key, item, loose) for item in _items(key, raw, loose))
 
 
 def _items(key: Key, raw: Any, loose: bool) -> list[Any]:
@@ -243,6 +260,8 @@ def _many(one: Callable[[Key, Any, bool], float]) -> Callable[[Key, Any, bool], 
 _READERS: dict[str, Callable[[Key, Any, bool], Any]] = {
     "text": _text,
     "texts": _texts,
+    "law": _law,
+    "laws": _laws,
     "choice": _choice,
     "boolean": _boolean,
     "integer": _integer,
