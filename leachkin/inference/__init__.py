@@ -1,5 +1,6 @@
 """Least squares, intervals, ranking and draws. Knows no law of leaching."""
 
+from leachkin.inference.bootstrap import Bootstrap, bootstrap_intervals
 from leachkin.inference.covariance import Held, held_covariance, one_sided_reach
 from leachkin.inference.criteria import akaike_weights, corrected_aic, schwarz_bic
 from leachkin.inference.distributions import (
@@ -11,10 +12,12 @@ from leachkin.inference.draws import draw_vectors
 from leachkin.inference.estimate import Estimate, Interval
 from leachkin.inference.least_squares import LeastSquaresProblem, least_squares
 from leachkin.inference.limits import below_limit_residual
+from leachkin.inference.profile import profile_interval, refit_by_solver, refit_held
 from leachkin.inference.scales import Scale, from_natural, natural_slope, to_natural
 from leachkin.inference.straight_line import StraightLine, weighted_line
 
 __all__ = [
+    "Bootstrap",
     "Estimate",
     "Held",
     "Interval",
@@ -23,6 +26,7 @@ __all__ = [
     "StraightLine",
     "akaike_weights",
     "below_limit_residual",
+    "bootstrap_intervals",
     "chi_square_upper_tail",
     "corrected_aic",
     "draw_vectors",
@@ -32,6 +36,9 @@ __all__ = [
     "natural_slope",
     "normal_multiplier",
     "one_sided_reach",
+    "profile_interval",
+    "refit_by_solver",
+    "refit_held",
     "schwarz_bic",
     "student_multiplier",
     "to_natural",

@@ -14,6 +14,7 @@ from leachkin.kinetics.fit_result import FitResult, Parameter, Residual
 from leachkin.kinetics.fit_tests import fit_tests
 from leachkin.kinetics.gangue import GangueFit, GangueLaw, GangueReadings, fit_gangue
 from leachkin.kinetics.grain_path import extraction_along
+from leachkin.kinetics.intervals import bootstrap_tests, fit_problem, profile_intervals
 from leachkin.kinetics.ore_curve import OreCurve
 from leachkin.kinetics.other_laws import (
     CLOCK_LAWS,
@@ -68,6 +69,9 @@ __all__ = [
     "Parameter",
     "Residual",
     "fit_tests",
+    "bootstrap_tests",
+    "fit_problem",
+    "profile_intervals",
     "GangueFit",
     "GangueLaw",
     "GangueReadings",

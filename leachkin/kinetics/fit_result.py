@@ -10,6 +10,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from leachkin.errors import InputProblems
 from leachkin.inference import Estimate, draw_vectors
+from leachkin.kinetics.fit_design import FitDesign
 from leachkin.kinetics.fit_layout import Layout
 from leachkin.kinetics.rate_law import RateLaw
 from leachkin.problems import unknown_name
@@ -95,6 +96,8 @@ class FitResult:
         How the vector becomes a law.
     estimate : Estimate
         The least-squares estimate behind it.
+    design : FitDesign or None
+        The residual function of the fit, for intervals that fit again.
     """
 
     law: RateLaw
@@ -117,6 +120,7 @@ class FitResult:
     level: float
     layout: Layout
     estimate: Estimate
+    design: FitDesign | None = None
 
     @property
     def law_name(self) -> str:

@@ -270,6 +270,7 @@ def _result(
         level=options.level,
         layout=layout,
         estimate=estimate,
+        design=design,
     )
 
 
