@@ -79,6 +79,13 @@ def kinetics_tables(stage: KineticsStage) -> Iterator[ResultTable]:
             name=f"parameters_{key}",
             caption=reference_words(stage),
         )
+        if stage.two_step is not None:
+            yield replace(
+                stage.two_step.table(),
+                name=f"arrhenius_{key}",
+                caption="The energy of all tests together is the one used; a line through a fit a "
+                "temperature keeps few degrees of freedom.",
+            )
         yield replace(stage.fit.residual_table(), name=f"residuals_{key}")
     else:
         yield replace(printed_table(stage), name=f"parameters_{key}")

@@ -11,7 +11,15 @@ from leachkin.campaign.settings import Settings
 from leachkin.campaign.sheets import exclusions
 from leachkin.campaign.stage_results import KineticsStage
 from leachkin.errors import InputProblems, LeachkinError
-from leachkin.kinetics import FitResult, Ranking, Reference, law_terms, rank_tests
+from leachkin.kinetics import (
+    FitResult,
+    Ranking,
+    Reference,
+    TwoStepArrhenius,
+    arrhenius_two_step,
+    law_terms,
+    rank_tests,
+)
 from leachkin.problems import Problem
 from leachkin.testwork import Observed, observe
 
@@ -145,6 +153,7 @@ def _fitted(campaign: Campaign, key: str, tests: Sequence[Observed], level: floa
         )
     ranking = rank_tests(tests, **fit_options(campaign.settings, level))
     fit = carried(ranking)
+    two_step, notes = _two_step(tests, fit, fit_options(campaign.settings, level))
     return KineticsStage(
         key,
         fit.law,
@@ -153,7 +162,23 @@ def _fitted(campaign: Campaign, key: str, tests: Sequence[Observed], level: floa
         ranking,
         fit,
         exclusion_texts(campaign.settings),
+        notes,
+        two_step,
     )
+
+
+def _two_step(
+    tests: Sequence[Observed], fit: FitResult, options: dict[str, Any]
+) -> tuple[TwoStepArrhenius | None, tuple[str, ...]]:
+    """Return the energies in two steps, or why they cannot be had."""
+    if len({round(one.temperature_K) for one in tests}) < 2:
+        return None, ()
+    same = {name: value for name, value in options.items() if name != "laws"}
+    try:
+        found = arrhenius_two_step(tests, fit.law.name, **same)
+    except InputProblems as error:
+        return None, (f"no activation energy by a fit a temperature: {error}",)
+    return found, found.warnings
 
 
 def fit_options(settings: Settings, level: float) -> dict[str, Any]:

@@ -18,6 +18,7 @@ from leachkin.kinetics import (
     Ranking,
     RateLaw,
     ReagentDemand,
+    TwoStepArrhenius,
 )
 from leachkin.reagents import Budget
 from leachkin.scaleup import HeapResult, TankTrain
@@ -45,6 +46,8 @@ class KineticsStage:
     excluded : tuple of str
         Readings kept out by the user: test, time, reason, name.
     notes : tuple of str
+    two_step : TwoStepArrhenius or None
+        Activation energies by a fit a temperature, beside the fit; None for one temperature.
     """
 
     key: str
@@ -55,6 +58,7 @@ class KineticsStage:
     fit: FitResult | None = None
     excluded: tuple[str, ...] = ()
     notes: tuple[str, ...] = ()
+    two_step: TwoStepArrhenius | None = None
 
     @property
     def metal(self) -> str:

@@ -6,6 +6,12 @@ from leachkin.kinetics.arrhenius import (
     arrhenius_rate_constant,
     fit_arrhenius,
 )
+from leachkin.kinetics.arrhenius_two_step import (
+    CurvatureTest,
+    TwoStepArrhenius,
+    arrhenius_two_step,
+    curvature_test,
+)
 from leachkin.kinetics.box import DataBox
 from leachkin.kinetics.demand import ReagentDemand
 from leachkin.kinetics.fit_curve import fit_curve, straightened_time
@@ -57,6 +63,10 @@ from leachkin.kinetics.simulate import (
 )
 
 __all__ = [
+    "CurvatureTest",
+    "TwoStepArrhenius",
+    "arrhenius_two_step",
+    "curvature_test",
     "ArrheniusFit",
     "activation_energy_of_slope",
     "arrhenius_rate_constant",

@@ -26,7 +26,7 @@ class Section:
 #: Key, title, and the tables by the start of their names, in reading order.
 _SECTIONS = (
     ("evidence", "Tests and balances", ("tests", "metal_balance")),
-    ("kinetics", "Rate law", ("ranking", "parameters", "gangue")),
+    ("kinetics", "Rate law", ("ranking", "parameters", "arrhenius", "gangue")),
     ("plant", "Plant", ("tank", "heap")),
     ("solution", "Recovery from solution", ("cementation",)),
     ("money", "Reagents and cost", ("budget", "reagent")),
@@ -37,7 +37,7 @@ _SECTIONS = (
 _FILES_ONLY = ("summary", "extraction", "residuals")
 _OF_STAGE = {
     "extraction": ("metal_balance",),
-    "fit": ("ranking", "parameters", "gangue"),
+    "fit": ("ranking", "parameters", "arrhenius", "gangue"),
     "tank": ("tank",),
     "heap": ("heap",),
     "cementation": ("cementation",),
