@@ -22,6 +22,8 @@ Array = NDArray[np.float64]
 
 #: An end is found when the rise is within this share of the allowed one.
 RISE_TOLERANCE = 1e-9
+#: Within this share it is taken where the others cannot be fitted again any closer.
+GOOD_ENOUGH = 1e-4
 #: A re-fit ends when a further step promises less than this share of the allowed rise.
 REFIT_TOLERANCE = 1e-11
 #: A fall by more than this share of the allowed rise: the minimum was not the lowest one.
@@ -67,14 +69,13 @@ class _Profile:
     j: int
     allowance: float
 
-    def point(self, at: float, near: _Point) -> _Point:
-        """Return the point at a value, started from a near one along its tangent."""
-        start = np.clip(
-            near.vector + near.tangent * (at - near.at), self.problem.low, self.problem.high
-        )
-        vector, squares = refit_held(
-            self.problem, self.j, at, start, REFIT_TOLERANCE * self.allowance
-        )
+    def point(self, at: float, *near: _Point) -> _Point:
+        """Return the point at a value, started from the first of the near ones that serves."""
+        vector, squares = np.empty(0), np.inf
+        for one in near:
+            vector, squares = self._from(one, at)
+            if np.isfinite(squares):
+                break
         rise = (squares - self.estimate.sum_of_squares) / self.allowance
         if not np.isfinite(rise):
             raise _SearchStoppedError(NO_END)
@@ -82,6 +83,12 @@ class _Profile:
             raise _SearchStoppedError(NOT_LOWEST)
         tangent = _tangent(self.problem, vector, self.j)
         return _Point(at, vector, tangent, float(np.sqrt(max(rise, 0.0))) - 1.0)
+
+    def _from(self, near: _Point, at: float) -> tuple[Array, float]:
+        """Return the others fitted again, started along the tangent of a near point."""
+        start = near.vector + near.tangent * (at - near.at)
+        start = np.clip(start, self.problem.low, self.problem.high)
+        return refit_held(self.problem, self.j, at, start, REFIT_TOLERANCE * self.allowance)
 
     def minimum(self) -> _Point:
         """Return the minimum itself as a point."""
@@ -98,10 +105,15 @@ class _Profile:
             if abs(last.height) <= RISE_TOLERANCE:
                 return last.at
             at = _secant(last, before, inner, outer)
-            near = inner if abs(at - inner.at) < abs(at - outer.at) else outer
             if at in (inner.at, outer.at):
                 return at
-            last, before = self.point(at, near), last
+            near = sorted((inner, outer), key=lambda one: abs(at - one.at))
+            try:
+                last, before = self.point(at, *near), last
+            except _SearchStoppedError:
+                if abs(last.height) <= GOOD_ENOUGH:
+                    return last.at
+                raise
             inner, outer = (last, outer) if last.height < 0 else (inner, last)
         raise _SearchStoppedError(NO_END)
 

@@ -202,3 +202,19 @@ def test_a_position_or_a_level_that_does_not_exist_is_refused():
         profile_interval(problem, found, 2)
     with pytest.raises(InputProblems, match="between 0 and 1"):
         profile_interval(problem, found, 0, level=95)
+
+
+def test_a_side_out_of_the_domain_of_the_model_has_no_end_and_says_so():
+    plain = straight()
+    whole = profile_interval(plain, least_squares(plain), 1)
+    wall = whole.value + 0.1 * (whole.high - whole.value)
+
+    def evaluate(v):
+        residuals, jacobian = plain.residuals_and_jacobian(v)
+        return (residuals if v[1] < wall else np.full_like(residuals, np.nan)), jacobian
+
+    problem = problem_of(evaluate, [0.0, 0.0])
+    ends = profile_interval(problem, least_squares(problem), 1)
+    assert ends.high is None
+    assert_allclose(ends.low, whole.low, rtol=1e-9)
+    assert "could not be fitted again" in ends.why_not
