@@ -8,7 +8,7 @@ multiplier squared times the variance of one residual, as for one quantity by li
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -30,6 +30,7 @@ REFIT_TOLERANCE = 1e-11
 BETTER_SHARE = 1e-3
 REFIT_STEPS = 60
 SEARCH_STEPS = 60
+RECHECKS = 6
 #: Doublings of the first step after which a side without a bound is called open.
 DOUBLINGS = 30
 #: The first step, in linearised half widths.
@@ -98,29 +99,52 @@ class _Profile:
         )
 
     def end(self, direction: float) -> float:
-        """Return the end of the interval on one side, on the fitted scale."""
-        inner, outer = self._bracket(direction)
+        """Return the end of the interval on one side, on the fitted scale.
+
+        The others may have more than one minimum, so an end is tried again from the fit itself;
+        where that serves better the end lies further out.
+        """
+        inner = self.minimum()
+        for _ in range(RECHECKS):
+            found = self._root(*self._bracket(inner, direction))
+            inner = self._again(found)
+            if inner.height >= -GOOD_ENOUGH:
+                return found.at
+        raise _SearchStoppedError(NO_END)
+
+    def _again(self, found: _Point) -> _Point:
+        """Return an end with the others started as they are at the minimum, if that works."""
+        try:
+            return self.point(
+                found.at, replace(self.minimum(), tangent=np.zeros(found.vector.size))
+            )
+        except _SearchStoppedError as stopped:
+            if str(stopped) == NOT_LOWEST:
+                raise
+            return found
+
+    def _root(self, inner: _Point, outer: _Point) -> _Point:
+        """Return the point of the allowed rise within a bracket."""
         last, before = outer, inner
         for _ in range(SEARCH_STEPS):
             if abs(last.height) <= RISE_TOLERANCE:
-                return last.at
+                return last
             at = _secant(last, before, inner, outer)
             if at in (inner.at, outer.at):
-                return at
+                return last
             near = sorted((inner, outer), key=lambda one: abs(at - one.at))
             try:
                 last, before = self.point(at, *near), last
             except _SearchStoppedError:
                 if abs(last.height) <= GOOD_ENOUGH:
-                    return last.at
+                    return last
                 raise
             inner, outer = (last, outer) if last.height < 0 else (inner, last)
         raise _SearchStoppedError(NO_END)
 
-    def _bracket(self, direction: float) -> tuple[_Point, _Point]:
+    def _bracket(self, inner: _Point, direction: float) -> tuple[_Point, _Point]:
         """Return a point inside and one outside, by steps that double."""
         bound = float((self.problem.high if direction > 0 else self.problem.low)[self.j])
-        inner = self.minimum()
         step = self._first_step(inner, bound)
         for doubling in range(DOUBLINGS):
             at = inner.at + direction * step

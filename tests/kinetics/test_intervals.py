@@ -7,7 +7,7 @@ from numpy.testing import assert_allclose
 from scipy.optimize import brentq
 
 from leachkin.errors import InputProblems
-from leachkin.inference import refit_by_solver, to_natural
+from leachkin.inference import from_natural, refit_by_solver, to_natural
 from leachkin.kinetics import (
     Bottle,
     RateLaw,
@@ -96,6 +96,28 @@ def test_a_curve_that_has_not_bent_leaves_its_ultimate_open_above():
     assert found.high is None and found.low is not None
     assert "end of its range" in found.why_no_interval
     assert found.method == "one-sided, profile likelihood"
+
+
+@pytest.mark.parametrize("law", ["two_rate", "avrami", "series"])
+def test_no_end_lies_inside_by_a_fit_started_at_the_minimum(law):
+    # seven readings for up to four quantities: the others have more than one minimum
+    hours = np.array([1, 2, 4, 8, 16, 32.0, 64])
+    noise = 0.02 * np.random.default_rng(0).standard_normal((3, hours.size))
+    ends = 0
+    for error in noise:
+        fit = fit_curve(hours, 0.7 * (1 - np.exp(-0.1 * hours)) + error, law)
+        problem = fit_problem(fit)
+        allowed = fit.estimate.multiplier(0.95) ** 2 * fit.estimate.scatter_variance
+        for found in profile_intervals(fit):
+            j = fit.names.index(found.name)
+            for end in (found.low, found.high):
+                if end is None or fit.estimate.states[j] != "free":
+                    continue
+                at = float(from_natural(problem.scales[j], end))
+                _, squares = refit_by_solver(problem, j, at, fit.vector)
+                assert squares - fit.sum_of_squares > 0.999 * allowed, found
+                ends += 1
+    assert ends >= 2  # not for want of ends
 
 
 def test_bad_asking_is_refused(fit):
