@@ -16,11 +16,11 @@ from leachkin.scaleup.plug_flow import Front, front
 Array = NDArray[np.float64]
 
 #: Draws solved at once: the temporaries stay in the processor's cache.
-BLOCK = 64
+BLOCK = 32
 #: Depths at which the profile behind the front is broken for its quadrature, as shares of the
 #: equivalent time at the top, and Gauss-Legendre points between two breaks.
 PROFILE_BREAKS = np.array([0.9, 0.75, 0.5, 0.3, 0.15, 0.05, 1e-2, 1e-3, 1e-5])
-PROFILE_POINTS = 5
+PROFILE_POINTS = 3
 _PLACE, _WEIGHT = np.polynomial.legendre.leggauss(PROFILE_POINTS)
 _PLACE, _WEIGHT = (1.0 + _PLACE) / 2.0, _WEIGHT / 2.0
 
