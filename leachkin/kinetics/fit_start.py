@@ -20,6 +20,8 @@ from leachkin.testwork import Observed
 Array = NDArray[np.float64]
 
 TIME_POINTS = 25
+#: Finer where the sum of squares has kinks, and how many of its dips are tried.
+KINKED_TIME_POINTS, MOST_DIPS = 150, 8
 ENERGY_STARTS_kJ_per_mol = (15.0, 45.0)
 SHAPE_STARTS: dict[str, tuple[float, ...]] = {
     "n": (0.4, 0.7, 1.0, 2.0),
@@ -57,7 +59,13 @@ def rough_ultimates(tests: Sequence[Observed], weights: Sequence[Array]) -> Arra
 
 
 def start_vectors(design: FitDesign, count: int = 2) -> list[Array]:
-    """Return start vectors, best first, of different shares of the resistances."""
+    """Return start vectors, best first, of different shares of the resistances.
+
+    A film alone stops dead where the metal is gone, so that its sum of squares has a kink at every
+    reading: there each dip along the time is a start of its own.
+    """
+    if has_kinks(design.layout):
+        return _dips(design)
     groups = [_grid(design, split) for split in _splits(len(design.layout.kinds))]
     best = []
     for vectors in groups:
@@ -69,6 +77,22 @@ def start_vectors(design: FitDesign, count: int = 2) -> list[Array]:
     return [vector for _, vector in best[:count]]
 
 
+def has_kinks(layout: Layout) -> bool:
+    """Return whether conversion stops with a corner, as a film alone does."""
+    return layout.kinds == ("film",)
+
+
+def _dips(design: FitDesign) -> list[Array]:
+    vectors = _grid(design, (1.0,), KINKED_TIME_POINTS)
+    squares = design.squares(vectors)
+    squares[~np.isfinite(squares)] = np.inf
+    along = squares.reshape(KINKED_TIME_POINTS, -1)
+    beside = np.pad(along, ((1, 1), (0, 0)), constant_values=np.inf)
+    dip = (along <= beside[:-2]) & (along <= beside[2:])
+    found = np.flatnonzero(dip.ravel())
+    return [vectors[i] for i in found[np.argsort(squares[found])][:MOST_DIPS]]
+
+
 def _splits(resistances: int) -> list[tuple[float, ...]]:
     if resistances == 1:
         return [(1.0,)]
@@ -77,12 +101,12 @@ def _splits(resistances: int) -> list[tuple[float, ...]]:
     return [(1.0 / resistances,) * resistances, *map(tuple, ends.tolist())]
 
 
-def _grid(design: FitDesign, split: tuple[float, ...]) -> Array:
+def _grid(design: FitDesign, split: tuple[float, ...], time_points: int = TIME_POINTS) -> Array:
     """Return start vectors of one split over times, activation energies and shapes."""
     layout = design.layout
     positive = design.time[design.time > 0]
     reach = np.log(positive.min() / 5.0), np.log(positive.max() * 200.0)
-    totals = np.linspace(*reach, TIME_POINTS)
+    totals = np.linspace(*reach, time_points)
     energies = ENERGY_STARTS_kJ_per_mol if _free(layout, "activation_energy") else (0.0,)
     shapes = [SHAPE_STARTS[name] for name in _free(layout, "shape")]
     combinations = list(product(totals, energies, *shapes))

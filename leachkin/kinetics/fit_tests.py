@@ -24,7 +24,7 @@ from leachkin.kinetics.fit_open import Side, open_sides
 from leachkin.kinetics.fit_remarks import remarks, what_to_look_at
 from leachkin.kinetics.fit_result import FitResult, Parameter, Residual
 from leachkin.kinetics.fit_setup import FitOptions, layout_of
-from leachkin.kinetics.fit_start import start_vectors
+from leachkin.kinetics.fit_start import has_kinks, start_vectors
 from leachkin.kinetics.resistance import Reference
 from leachkin.problems import argument_error
 from leachkin.testwork import Observed
@@ -182,7 +182,8 @@ def _best_estimate(design: FitDesign, stated: bool) -> Estimate:
     found: list[Estimate] = []
     for start in start_vectors(design):
         found.append(least_squares(_problem(design, start, stated)))
-        if found[-1].converged and all(state == "free" for state in found[-1].states):
+        clean = found[-1].converged and all(state == "free" for state in found[-1].states)
+        if clean and not has_kinks(design.layout):
             break
     best = min(e.sum_of_squares for e in found)
     near = [e for e in found if e.sum_of_squares <= best * (1 + 1e-9) + 1e-300]

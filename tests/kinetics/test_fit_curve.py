@@ -204,3 +204,19 @@ def test_shape_names_all_have_bounds_and_starts():
 
     names = {name for names in SHAPE_PARAMETERS.values() for name in names}
     assert names <= set(SHAPE_BOUNDS) and names <= set(SHAPE_STARTS)
+
+
+def test_film_alone_is_tried_from_every_dip():
+    """The sum of squares of a film has a kink at each reading: against a scan of the time."""
+    generator = np.random.default_rng(1)
+    time = np.array([1.0, 2.0, 4.0, 8.0, 16.0, 32.0, 64.0])
+    scan = np.exp(np.linspace(np.log(0.5), np.log(400.0), 8001))
+    X = np.minimum(time / scan[:, None], 1.0)
+    as_low = 0
+    for _ in range(40):
+        tau, ultimate = generator.uniform(5.0, 50.0), generator.uniform(0.6, 0.95)
+        E = ultimate * np.minimum(time / tau, 1.0) + generator.normal(0.0, 0.02, 7)
+        level = np.clip((X @ E) / (X * X).sum(axis=1), 0.0, 1.0)
+        lowest = ((E - level[:, None] * X) ** 2).sum(axis=1).min()
+        as_low += fit_curve(time, E, "film").sum_of_squares <= 1.002 * lowest
+    assert as_low >= 38
