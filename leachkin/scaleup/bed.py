@@ -120,7 +120,7 @@ def demand_rows(demand: ReagentDemand, rows: slice) -> ReagentDemand:
 
 
 def course(bed: Bed, days: Array) -> BedCourse:
-    """Return the course of a bed.
+    """Return what a bed does, day by day.
 
     Parameters
     ----------

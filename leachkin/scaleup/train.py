@@ -68,7 +68,7 @@ class TrainCourse:
 
 
 def solve_train(task: TrainTask) -> TrainCourse:
-    """Return the course of a train, solved in blocks of draws."""
+    """Return what a train does, solved in blocks of draws."""
     n = task.mean_h.shape[1]
     parts = [
         _solve_block(_rows(task, slice(low, min(low + BLOCK, n)))) for low in range(0, n, BLOCK)
