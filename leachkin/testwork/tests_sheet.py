@@ -254,7 +254,7 @@ def _size(i: int, reader: CellReader, columns: Mapping[str, Array]) -> tuple[flo
             "stop",
             f"the lower size {lower:g} mm is not below the upper size {upper:g} mm",
             "lower below upper",
-            "exchange the two",
+            "give the sieve it passed as the upper size" if lower == upper else "exchange the two",
         )
     )
     return None
