@@ -169,7 +169,10 @@ def _course_of_block(bed: Bed, days: Array) -> BedCourse:
     cured = bed.extraction(bed.start_h)
     reacted = _at_bed_time(bed, table, outflow_h)[0] - cured
     washed = _washed_share(outflow_h, bed.filling_h, clock_h)
-    in_bed = np.where(bed.filling_h > 0.0, _extracted_by_clock(bed, table, clock_h), extracted)
+    in_bed = extracted
+    if np.any(bed.filling_h > 0.0):
+        by_clock = _extracted_by_clock(bed, table, clock_h)
+        in_bed = np.where(bed.filling_h > 0.0, by_clock, extracted)
     slope, out_share = _outlet(bed, table, outflow_h)
     running = clock_h >= bed.filling_h
     pulse = np.where(
