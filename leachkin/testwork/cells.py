@@ -21,6 +21,7 @@ MISSING_WORDS = frozenset(_WORDS.split())
 _NUMBER_AND_UNIT = re.compile(r"([+-]?[0-9.,]+(?:[eE][+-]?[0-9]+)?)\s*([^\s0-9].*)")
 _MOST_PROBLEMS = 12  #: of one kind in one column; the rest are counted
 _MOST_LISTED = 8
+_LARGEST = 1e12  #: of any number as written; its inverse is the smallest
 
 
 @dataclass
@@ -127,8 +128,17 @@ class CellReader:
                 values[i], bounds[i], fault = self._other(text, use, row.number, bounds_allowed)
                 if fault:
                     bad.append((row.number, str(error)))
-        self._not_numbers(use, bad, bounds_allowed)
+        bad += self._beyond_measure(values, use)
+        self._not_numbers(use, sorted(bad), bounds_allowed)
         return _converted(values, use), bounds
+
+    def _beyond_measure(self, values: Array, use: Use) -> list[tuple[int, str]]:
+        """Numbers that no balance or flask has, made missing."""
+        size = np.abs(values)
+        wrong = (size > _LARGEST) | ((size > 0.0) & (size < 1.0 / _LARGEST))
+        values[wrong] = np.nan
+        rows = [self.sheet.rows[i] for i in np.flatnonzero(wrong)]
+        return [(r.number, f"{r.cells[use.position]!r} is beyond all measure") for r in rows]
 
     def _other(
         self, text: str, use: Use, row: int, bounds_allowed: bool

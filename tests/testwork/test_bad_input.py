@@ -31,6 +31,8 @@ MESSAGES = [
      r'number. Allowed: a number in mg/L, one with "<" or ">" before it, or an empty cell'),
     ("thousands_mark.readings", "stop", r"row 2.*'1,118' has a comma, a decimal or a thousands "
      r'mark.*write it with "." as decimal mark'),
+    ("beyond_measure.readings", "stop", r"row 2, column \"Cu \(mg/L\)\": '1e30' is beyond all "
+     r"measure"),
     ("negative_assay.readings", "ask", r"row 2, column \"Cu \(mg/L\)\": the assay is negative "
      r'\(-5\): is it below a limit\? Read as missing meanwhile.*write "<5"'),
     ("negative_aliquot.readings", "stop", r'row 2, column "aliquot \(mL\)": -20 has no meaning'),
