@@ -138,6 +138,11 @@ def with_assumed_ranges(law: RateLaw, settings: Settings, count: int, seed: int)
     return replace(law, resistances=tuple(changed))
 
 
+def drawn_energies(settings: Settings) -> tuple[str, ...]:
+    """Return the names of the assumed activation energies that have a range."""
+    return tuple(_energy_draws(settings, 1, 0))
+
+
 def _energy_draws(settings: Settings, count: int, seed: int) -> Mapping[str, Any]:
     found: dict[str, Any] = {}
     for group in settings.repeated.get("assumed", ()):

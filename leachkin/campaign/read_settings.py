@@ -67,7 +67,7 @@ def read_settings(
     problems : tuple of Problem
     """
     merged = _merged(data, overrides or {})
-    walk = _Walk(file, line_of, frozenset(overrides or {}))
+    walk = _Walk(file, line_of, frozenset(map(_as_written, overrides or {})))
     _check_top(walk, merged)
     for name, content in merged.items():
         if name in SCHEMA.children("") and isinstance(content, Mapping):
@@ -303,6 +303,11 @@ def quoted(name: str) -> str:
     return name if bare else f'"{name}"'
 
 
+def _as_written(dotted: str) -> str:
+    """Return a dotted key with quotes where it needs them and nowhere else."""
+    return ".".join(quoted(part) for part in split_dotted(dotted))
+
+
 def _read_one(walk: _Walk, key: Key, dotted: str, raw: Any) -> Setting | None:
     try:
         read = read_value(key, raw, loose=dotted in walk.loose)
@@ -346,6 +351,8 @@ def _check_required(
 
 
 def _example(key: Key) -> str:
+    if key.unit == "K":
+        return '"25 degC"'
     if key.kind in ("quantity", "choice or quantity"):
         return f'"1 {key.unit}"'
     if key.choices:
@@ -377,6 +384,7 @@ def _put_in_defaults(walk: _Walk) -> None:
 def assumptions_of(settings: Settings) -> tuple[Assumption, ...]:
     """Return the register of a campaign: defaults used, values marked as assumed, ranges stated."""
     rows = [row for key in settings.values for row in _row_of(settings, key)]
+    rows += _group_defaults(settings)
     rows += [_stated(group) for group in settings.repeated.get("assumed", ())]
     rows += [
         _ranged_row(settings, setting)
@@ -398,6 +406,17 @@ def _row_of(settings: Settings, dotted: str) -> Iterator[Assumption]:
         yield _default_row(setting, key)
     elif setting.low is not None or key.judged:
         yield _ranged_row(settings, setting)
+
+
+def _group_defaults(settings: Settings) -> Iterator[Assumption]:
+    """Yield the defaults used in named and repeated tables, as the basis of a price."""
+    named = {path: tuple(groups.values()) for path, groups in settings.named.items()}
+    for path, groups in (*named.items(), *settings.repeated.items()):
+        schema = SCHEMA.table(path)
+        for setting in (setting for group in groups for setting in group.values()):
+            key = None if schema is None else schema.key(setting.key.rpartition(".")[2])
+            if key is not None and key.why and not setting.given:
+                yield _default_row(setting, key)
 
 
 def _default_row(setting: Setting, key: Key) -> Assumption:

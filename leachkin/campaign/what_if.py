@@ -11,7 +11,7 @@ from leachkin.campaign.bands import Quantity
 from leachkin.campaign.campaign import read_campaign
 from leachkin.campaign.read_settings import split_dotted
 from leachkin.campaign.result import CampaignResult
-from leachkin.campaign.run import DEFAULT_DRAWS, DEFAULT_LEVEL, Progress, run_campaign
+from leachkin.campaign.run import DEFAULT_DRAWS, DEFAULT_LEVEL, STAGES, Progress, run_campaign
 from leachkin.campaign.schema_tables import SCHEMA
 from leachkin.problems import argument_error
 from leachkin.result_table import Column, ResultTable
@@ -19,6 +19,8 @@ from leachkin.result_table import Column, ResultTable
 _PERCENT = 100.0
 #: Tables whose keys leave the tests, the fit and the gangue as they are.
 _AFTER_THE_FIT = ("heap", "tank", "cementation", "budget")
+#: Keys of those tables that choose whose gangue is fitted.
+_CHOOSE_THE_GANGUE = ("heap.domain", "tank.domain")
 #: Most combinations that one call works out.
 MOST_COMBINATIONS = 200
 
@@ -53,7 +55,8 @@ def what_if(
     Returns
     -------
     ResultTable
-        One column a varied key, then the key figures of the stages that ran.
+        One column a varied key, then the key figures of the stages that ran; where a stage could
+        not be done its figures are empty and a last column says why.
 
     Raises
     ------
@@ -72,7 +75,7 @@ def what_if(
             "give fewer values",
         )
     earlier: CampaignResult | None = None
-    records, columns = [], [Column(key, key) for key in named]
+    records, columns = [], {key: Column(key, key) for key in named}
     for done, combination in enumerate(combinations, start=1):
         campaign = read_campaign(path, {**(set or {}), **combination})
         result = run_campaign(
@@ -85,12 +88,24 @@ def what_if(
         )
         earlier = result
         figures = tuple(key_figures(result))
-        columns = [*[Column(key, key) for key in named], *_columns(figures)]
-        records.append({**combination, **_cells(figures)})
+        columns |= {column.key: column for column in _columns(figures)}
+        records.append({**combination, **_cells(figures), **_not_done(result)})
         if progress is not None:
             progress(done, len(combinations))
     caption = f"{upto or 'all stages'}, varied: {', '.join(named)}"
-    return ResultTable.from_records("what_if", columns, records, caption)
+    if any("not_done" in record for record in records):
+        columns["not_done"] = Column("not_done", "Not done, and why")
+    return ResultTable.from_records("what_if", columns.values(), records, caption)
+
+
+def _not_done(result: CampaignResult) -> dict[str, str]:
+    """Return the reasons of the stages that could not be done, as one cell; nothing without."""
+    reasons = [
+        problem.found
+        for problem in result.problems
+        if problem.found.startswith(tuple(f"{stage} not done: " for stage in STAGES))
+    ]
+    return {"not_done": "; ".join(reasons)} if reasons else {}
 
 
 def _full_key(key: str, upto: str | None) -> str:
@@ -103,6 +118,8 @@ def _full_key(key: str, upto: str | None) -> str:
 
 def _with_units(values: Sequence[str]) -> tuple[str, ...]:
     """Let "4", "6", "8 m" all be metres."""
+    if not values:
+        return ()
     last = values[-1].strip()
     _, _, unit = last.partition(" ")
     return tuple(
@@ -119,7 +136,9 @@ def _is_bare(value: str) -> bool:
 
 
 def _keeps_the_fit(named: Mapping[str, Any]) -> bool:
-    return all(split_dotted(key)[0] in _AFTER_THE_FIT for key in named)
+    return all(
+        split_dotted(key)[0] in _AFTER_THE_FIT and key not in _CHOOSE_THE_GANGUE for key in named
+    )
 
 
 def key_figures(result: CampaignResult) -> Iterator[tuple[str, str, Quantity]]:

@@ -1,5 +1,6 @@
 """A small campaign of four bottles, in a folder that a test may spoil."""
 
+import numpy as np
 import pytest
 
 from leachkin.kinetics import RateLaw, Reference, Resistance
@@ -27,6 +28,18 @@ reference_temperature = "25 degC"
 reference_size = "1.416 mm"
 reference_reagent = "20 g/L"
 """
+HEAP = """
+[heap]
+ore_rate = "250000 t/month"
+lift_height = "6 m"
+bulk_density = "1.65 t/m3"
+irrigation = "8 L/h/m2"
+cycle = "120 d"
+temperature = "17 degC"
+feed_reagent = "20 g/L"
+[heap.sizes]
+gates_gaudin_schuhmann = { top = "19 mm", slope = 0.65 }
+"""
 TESTS = "test,domain,kind,dry solids (g),solution (mL),size lower (mm),size upper (mm),"
 TESTS += "temperature (degC),start H2SO4 (g/L),aliquots\n"
 
@@ -40,13 +53,11 @@ def sheets():
         [0.85],
     )
     size = SizeDistribution.single(1.416)
+    time_h = np.array([1.0, 3.0, 8.0, 16.0, 30.0, 60.0])
     bottles = [
-        Bottle(name, size, celsius + 273.15, [1.0, 3.0, 8.0, 16.0, 30.0, 60.0], 20.0)
+        Bottle(name, size, celsius + 273.15, time_h, 20.0)
         for name, celsius in (("P1", 25.0), ("P2", 25.0), ("Q1", 45.0), ("Q2", 45.0))
     ]
-    import numpy as np
-
-    bottles = [Bottle(b.name, b.sizes, b.temperature_K, np.array(b.time_h), 20.0) for b in bottles]
     made = simulate_tests(
         law, bottles, head_kg_per_t=6.8, seed=5, noise=Noise(), per_metal_kg_per_kg=1.543
     )
@@ -71,6 +82,12 @@ def sheets():
 @pytest.fixture(scope="session")
 def sheet_texts():
     return sheets()
+
+
+@pytest.fixture(scope="session")
+def heap_text():
+    """A heap with nothing but what it must have, to go to the end of the campaign file."""
+    return HEAP
 
 
 @pytest.fixture
