@@ -128,9 +128,10 @@ def _reagent_lines(result: CampaignResult) -> Iterator[str]:
     heap, budget = result.heap, result.budget
     reagent = result.about.get("reagent", "reagent")
     if heap is not None:
+        gangue = f"{in_words(heap.gangue_taken_kg_per_t)} kg/t by gangue"
         yield (
             f"{reagent}, net 100 %: {in_words(heap.metal_taken_kg_per_t)} kg/t bound by the "
-            f"metal and {in_words(heap.gangue_taken_kg_per_t)} kg/t by gangue."
+            f"metal and {gangue if heap.gangue_known else 'what goes to gangue not known'}."
         )
     if budget is not None:
         yield from _budget_lines(result)

@@ -11,7 +11,7 @@ from leachkin.campaign.stage_results import GangueStage, PlantOre
 from leachkin.kinetics import RateLaw
 from leachkin.testwork import SizeDistribution
 
-NO_SCALE_UP = "no scale-up range is stated, so the band holds the fit only"
+NO_SCALE_UP = "no scale-up range is stated, so nothing of the scale-up is in the band"
 NO_BAND = "no band: nothing behind this figure has a range"
 
 

@@ -183,7 +183,7 @@ def _stage(
     def band(name: str, unit: str = "1") -> Any:
         return band_of(getattr(result, name), getattr(drawn, name, None), unit, level)
 
-    sinks = _sinks(ore, result, drawn, level)
+    sinks = _sinks(ore, result, drawn, level, bed.gangue is not None)
     tonnes_per_m2 = bed.lift_m * stated["bulk_density"]
     return HeapStage(
         key=ore.key,
@@ -218,23 +218,31 @@ def _stage(
 
 
 def _sinks(
-    ore: PlantOre, result: HeapResult, drawn: HeapResult | None, level: float
+    ore: PlantOre,
+    result: HeapResult,
+    drawn: HeapResult | None,
+    level: float,
+    gangue_known: bool,
 ) -> dict[str, Any]:
-    """Reagent by sink and metal at the end of the cycle, per tonne of ore."""
+    """Reagent by sink and metal at the end of the cycle, per tonne of ore.
+
+    Where no gangue demand is known its part is nothing, without a band of rounding.
+    """
     end = float(np.asarray(result.extracted)[-1])
     metal = end * ore.head_kg_per_t
     bound = metal * ore.per_metal_kg_per_kg
-    taken = float(np.asarray(result.taken_kg_per_t)[-1])
+    gangue = float(np.asarray(result.taken_kg_per_t)[-1]) - bound if gangue_known else 0.0
     m3_per_t = float(np.broadcast_to(np.asarray(result.m3_per_t), np.shape(result.extracted))[-1])
     metal_d = bound_d = gangue_d = pls_d = None
     if drawn is not None:
         metal_d = np.asarray(drawn.extracted)[..., -1] * ore.head_draws
         bound_d = metal_d * ore.per_metal_draws
-        gangue_d = np.asarray(drawn.taken_kg_per_t)[..., -1] - bound_d
+        if gangue_known:
+            gangue_d = np.asarray(drawn.taken_kg_per_t)[..., -1] - bound_d
         pls_d = metal_d / np.asarray(drawn.m3_per_t)[..., -1]
     return {
         "metal_taken_kg_per_t": quantity_of(bound, bound_d, "kg/t", level),
-        "gangue_taken_kg_per_t": quantity_of(taken - bound, gangue_d, "kg/t", level),
+        "gangue_taken_kg_per_t": quantity_of(gangue, gangue_d, "kg/t", level),
         "metal_extracted_kg_per_t": quantity_of(metal, metal_d, "kg/t", level),
         "mean_pls_g_per_L": quantity_of(metal / m3_per_t, pls_d, "g/L", level),
         "metal_extracted_draws": metal_d,

@@ -234,8 +234,9 @@ def _sinks(
         metal_d = (
             _per_metal_drawn(train, ore) * ore.head_draws * np.asarray(drawn.extraction)[..., -1]
         )
-        gangue_d = np.asarray(drawn.taken_kg_per_t)[..., -1] - metal_d
-    floor = 0.0 if abs(gangue) < _ROUNDING * metal else gangue
+        if train.gangue is not None:
+            gangue_d = np.asarray(drawn.taken_kg_per_t)[..., -1] - metal_d
+    floor = 0.0 if train.gangue is None or abs(gangue) < _ROUNDING * metal else gangue
     return {
         "metal_taken_kg_per_t": quantity_of(metal, metal_d, "kg/t", level),
         "gangue_taken_kg_per_t": quantity_of(floor, gangue_d, "kg/t", level),

@@ -31,6 +31,12 @@ def test_solution_per_tonne_goes_with_one_over_the_lift(lifts):
     assert_allclose(extracted[1], 66.02, rtol=0, atol=0.05)
 
 
+def test_a_key_without_table_is_that_of_the_stage():
+    vary = {"ferric": ["0", "1", "4 g/L"]}
+    table = what_if(FILE, "cementation", vary=vary, set={"heap.cycle": "20 d"}, draws=0)
+    assert table.column("cementation.ferric") == ["0 g/L", "1 g/L", "4 g/L"]
+
+
 def test_the_caption_names_stage_and_key(lifts):
     assert lifts.caption == "heap, varied: heap.lift_height"
 
