@@ -109,5 +109,5 @@ def test_budget_sum(result):
 
 
 def test_a_plant_from_print_says_so(result):
-    assert result.heap.grade != "SCOPING"
-    assert any("print" in word.lower() for word in (result.heap.grade, *result.heap.notes))
+    assert result.heap.grade == "FROM PRINT"
+    assert any(line.startswith("FROM PRINT: 69.7 % of total Cu") for line in result.headline())

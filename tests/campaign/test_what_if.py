@@ -108,3 +108,30 @@ def test_progress_counts_the_rows():
 def test_what_has_no_meaning_stops(vary, message):
     with pytest.raises(InputProblems, match=message):
         what_if(FILE, "heap", vary=vary, set={"heap.cycle": "20 d"}, draws=0)
+
+
+def with_two_gangues(edit, folder):
+    """Split the bottles over two domains; the second takes up more acid beyond its copper."""
+    for bottle in ("P2", "Q2"):
+        edit("tests.csv", f"{bottle},oxide", f"{bottle},mixed")
+    edit("heads.csv", "oxide,0.68", "oxide,0.68\nmixed,0.68")
+    header, *rows = (folder / "readings.csv").read_text().splitlines()
+    lines = [f"{header},free H2SO4 (g/L)"]
+    for row in rows:
+        copper, gangue = float(row.rsplit(",", 1)[1]), 2.0 if row[1] == "1" else 5.0
+        lines.append(f"{row},{20.0 - 1.543 * copper - gangue:.4f}")
+    (folder / "readings.csv").write_text("\n".join([*lines, ""]))
+
+
+def test_another_domain_has_its_own_gangue(edit, folder, heap_text):
+    with_two_gangues(edit, folder)
+    path = edit("campaign.toml", '["ash_layer", "chemical"]\n', '["ash_layer"]\n')
+    with path.open("a") as file:
+        file.write(heap_text)
+    domains = ["oxide", "mixed"]
+    table = what_if(path, "heap", vary={"heap.domain": domains}, draws=0)
+    for domain, taken in zip(domains, table.column("reagent_taken"), strict=True):
+        alone = run_campaign(read_campaign(path, {"heap.domain": domain}), "heap", draws=0)
+        assert alone.gangue is not None
+        assert_allclose(taken, alone.heap.taken_kg_per_t.value[-1], rtol=1e-12)
+    assert table.column("reagent_taken")[1] > table.column("reagent_taken")[0] + 2.0
