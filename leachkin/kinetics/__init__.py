@@ -14,6 +14,7 @@ from leachkin.kinetics.arrhenius_two_step import (
 )
 from leachkin.kinetics.box import DataBox
 from leachkin.kinetics.demand import ReagentDemand
+from leachkin.kinetics.evidence import Evidence, EvidenceLine, gather_evidence, stirring_power
 from leachkin.kinetics.fit_curve import fit_curve, straightened_time
 from leachkin.kinetics.fit_layout import Layout, Quantity
 from leachkin.kinetics.fit_result import FitResult, Parameter, Residual
@@ -21,6 +22,8 @@ from leachkin.kinetics.fit_tests import fit_tests
 from leachkin.kinetics.gangue import GangueFit, GangueLaw, GangueReadings, fit_gangue
 from leachkin.kinetics.grain_path import extraction_along
 from leachkin.kinetics.intervals import bootstrap_tests, fit_problem, profile_intervals
+from leachkin.kinetics.leave_out import LeftOut, leave_one_out, left_out_table
+from leachkin.kinetics.nested import NestedTest, nested_test
 from leachkin.kinetics.ore_curve import OreCurve
 from leachkin.kinetics.other_laws import (
     CLOCK_LAWS,
@@ -50,7 +53,14 @@ from leachkin.kinetics.rank import (
     rank_laws,
     rank_tests,
 )
+from leachkin.kinetics.rank_spread import log_normal_of_p80, rank_tests_by_p80
 from leachkin.kinetics.rate_law import RateLaw, knot_weights
+from leachkin.kinetics.residual_checks import (
+    ResidualChecks,
+    RunsTest,
+    residual_checks,
+    runs_test,
+)
 from leachkin.kinetics.resistance import ClassConversions, Reference, Resistance
 from leachkin.kinetics.simulate import (
     Bottle,
@@ -87,6 +97,21 @@ __all__ = [
     "GangueReadings",
     "fit_gangue",
     "DEFAULT_LAWS",
+    "Evidence",
+    "EvidenceLine",
+    "gather_evidence",
+    "stirring_power",
+    "LeftOut",
+    "leave_one_out",
+    "left_out_table",
+    "ResidualChecks",
+    "RunsTest",
+    "residual_checks",
+    "runs_test",
+    "NestedTest",
+    "nested_test",
+    "log_normal_of_p80",
+    "rank_tests_by_p80",
     "RankedLaw",
     "Ranking",
     "contains",

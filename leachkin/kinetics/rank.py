@@ -14,6 +14,7 @@ from leachkin.inference import akaike_weights, chi_square_upper_tail
 from leachkin.kinetics.fit_curve import fit_curve
 from leachkin.kinetics.fit_result import FitResult
 from leachkin.kinetics.fit_tests import fit_tests
+from leachkin.kinetics.nested import nested_test
 from leachkin.kinetics.other_laws import MECHANISTIC, canonical_law, law_terms
 from leachkin.problems import argument_error
 from leachkin.result_table import Column, ResultTable
@@ -29,6 +30,9 @@ MISFIT_SHARE = 0.05
 #: Nor when another law is this much better in AICc with less than half the scatter.
 MISFIT_BEHIND = 10.0
 MISFIT_RATIO = 2.0
+
+#: A further part is named only where chance gives its gain less often than this.
+PART_CHANCE = 0.01
 
 #: Empirical laws that become the smaller one for a value of their extra parameter.
 CONTAINED = {("first_order", "two_rate"), ("first_order", "avrami")}
@@ -66,9 +70,10 @@ class Ranking:
         What may be said, in words.
     indistinguishable : tuple of str
         Laws within ``within`` of the best AICc, best first, leaving out a larger law that
-        contains the best one.
+        contains the best one; and those that may be named.
     mechanisms : tuple of str
-        Mechanistic laws that may be named: one, several that cannot be told apart, or none.
+        Mechanistic laws that may be named: one, several that cannot be told apart, or none. A
+        further part is named only where chance gives its gain less than once in 100.
     within : float
     """
 
@@ -177,6 +182,7 @@ def rank_by(fit: Callable[[str], FitResult], laws: Sequence[str] | None, within:
         if row.delta <= within and (row is best or not contains(row.law, best.law))
     )
     verdict, mechanisms = _verdict(rows, within)
+    near += tuple(law for law in mechanisms if law not in near)
     return Ranking(rows, verdict, near, mechanisms, within)
 
 
@@ -249,13 +255,19 @@ def _verdict(rows: tuple[RankedLaw, ...], within: float) -> tuple[str, tuple[str
     why = _misfit(first, judged)
     if why:
         return f"None of the particle laws describes these data: {why}.", ()
+    first = _smallest(first, particle)
     behind = [row for row in particle if row.aicc - first.aicc <= within]
-    named = [row for row in behind if row is first or not contains(row.law, first.law)]
+    named = [
+        row
+        for row in behind
+        if row is first or not (contains(row.law, first.law) and _chance(row, first) > PART_CHANCE)
+    ]
+    named.sort(key=lambda row: row is not first)
     mechanisms = tuple(row.law for row in named)
-    if judged[0] is not first and first.delta > within:
+    if not judged[0].mechanistic and particle[0].delta > within:
         text = (
             f"The empirical law {judged[0].law} describes the data better than any mechanism "
-            f"(by {first.delta:.1f} in AICc): the mechanism is not settled. Nearest: "
+            f"(by {particle[0].delta:.1f} in AICc): the mechanism is not settled. Nearest: "
             f"{_listed(mechanisms)}."
         )
         return text, ()
@@ -265,10 +277,32 @@ def _verdict(rows: tuple[RankedLaw, ...], within: float) -> tuple[str, tuple[str
     more = (
         f" The next mechanism is {rest[0].delta - first.delta:.1f} behind in AICc." if rest else ""
     )
+    if first is not particle[0]:
+        chance = _chance(particle[0], first)
+        more += (
+            f" A further part ({particle[0].law}) gains no more than chance would ({chance:.2g})."
+        )
     equal = [r.law for r in judged if not r.mechanistic and abs(r.aicc - first.aicc) <= within]
     if equal:
         more += f" Without any mechanism {' and '.join(equal)} does as well."
     return f"{in_words(first.law).capitalize()}: {first.law}.{more}", mechanisms
+
+
+def _chance(larger: RankedLaw, smaller: RankedLaw) -> float:
+    """Return how often chance alone would give the gain of the larger law."""
+    if larger.fit is None or smaller.fit is None:
+        return 1.0
+    return nested_test(larger.fit, smaller.fit).chance
+
+
+def _smallest(row: RankedLaw, particle: list[RankedLaw]) -> RankedLaw:
+    """Return the law itself, or a smaller one in it to which the data ask for no further part."""
+    enough = [
+        other
+        for other in particle
+        if contains(row.law, other.law) and _chance(row, other) > PART_CHANCE
+    ]
+    return _smallest(enough[0], particle) if enough else row
 
 
 def _misfit(row: RankedLaw, judged: list[RankedLaw]) -> str:

@@ -12,8 +12,10 @@ from leachkin.kinetics import (
     Resistance,
     contains,
     in_words,
+    log_normal_of_p80,
     rank_laws,
     rank_tests,
+    rank_tests_by_p80,
     simulate_observed,
 )
 from leachkin.testwork import SizeDistribution
@@ -103,3 +105,49 @@ def test_all_tests_together_find_the_mixed_law():
 def test_every_mechanism_has_words():
     assert len({in_words(law) for law in MECHANISTIC}) == len(MECHANISTIC)
     assert in_words("series").count(" in series") == 1
+
+
+def spread_bottles(spread):
+    made = []
+    for p80_mm in (1.5, 6.0):
+        sizes = log_normal_of_p80(p80_mm, spread)
+        made += [Bottle(f"{p80_mm}_{c}", sizes, 273.15 + c, 2 * HOURS, 20.0) for c in (25, 55)]
+    return made
+
+
+def test_log_normal_sizes_have_the_p80_asked_for():
+    # 80 % below the 0.8 quantile of the normal distribution, 0.841621 (any printed table)
+    sizes = log_normal_of_p80(3.0, 0.7)
+    width = np.sqrt(np.log1p(0.49))
+    middle = np.log(3.0) - 0.841621 * width
+    assert_allclose(sizes.mass_share @ np.log(sizes.size_mm), middle, atol=0.005)
+    mean = np.exp(middle + 0.5 * width**2)
+    assert_allclose(sizes.mass_mean_mm, mean, rtol=1e-6)
+
+
+def test_a_spread_that_is_not_known_is_fitted_and_counted():
+    reference = Reference(298.15, 20.0, 3.0)
+    truth = RateLaw(
+        "chemical", (Resistance("chemical", np.log(60.0), 46.0),), reference, [3.0], [0.85]
+    )
+    tests = simulate_observed(truth, spread_bottles(0.8), head_kg_per_t=6.8, seed=1)
+    p80_mm = [1.5, 1.5, 6.0, 6.0]
+    ranking = rank_tests_by_p80(tests, p80_mm, ["chemical", "ash_layer"], ultimate="one")
+    assert ranking.mechanisms == ("chemical",)
+    said = next(w for w in ranking.best.warnings if w.startswith("spread of sizes"))
+    assert abs(float(said.split()[-1]) - 0.8) < 0.12
+    known = rank_tests(tests, ["chemical"], ultimate="one").best
+    assert ranking.best.degrees_of_freedom == known.degrees_of_freedom - 1
+    assert ranking.best.aicc - known.aicc < 4.0  # one quantity more, a little better fit
+    with pytest.raises(InputProblems, match="one finite size above 0 for each test"):
+        rank_tests_by_p80(tests, [1.5, 1.5, 6.0], ["chemical"])
+
+
+def test_a_further_part_is_named_only_where_the_data_ask_for_it():
+    # seeds not chosen: in all of them the smaller, true law is what may be said
+    for seed in range(1, 9):
+        noise = 0.01 * np.random.default_rng(seed).standard_normal(HOURS.size)
+        E = 0.8 * ParticleLaw(chemical=60.0).conversion(HOURS) + noise
+        ranking = rank_laws(HOURS, E, laws=["film+chemical", "chemical", "series"], errors=0.01)
+        assert ranking.mechanisms == ("chemical",), seed
+        assert "chemical" in ranking.indistinguishable
