@@ -45,6 +45,11 @@ def test_straight_lines_name_ash_layer_for_every_chemical_bottle():
     assert len(chemical) == 2 and all(int(row["right"]) == 0 for row in chemical)
 
 
+def test_a_wrong_spread_held_names_nothing_rather_than_the_wrong_law():
+    _, wrong, undecided = shares(recorded(), "p80 and slope")
+    assert wrong < 0.05 < undecided
+
+
 def ranked(named, not_needed=()):
     fit = SimpleNamespace(not_needed=not_needed)
     rows = tuple(RankedLaw(law, fit, 0.0, 0.0, 1.0, 0.0, True) for law in named)

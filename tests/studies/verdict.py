@@ -15,6 +15,9 @@ Ways to a verdict on the same numbers:
 - ``no head of its own``: as the first, every bottle held to the assay head;
 - ``straight line``: g(X) against time with X the extraction, the highest R2 of each bottle.
 
+The second and the fourth rank the mechanistic laws only, to save time; the others the default ones.
+The log-normal spread of the second is the kind of the truth: sizes of another kind are harder.
+
 Writes tests/studies/results/verdict.csv.
 """
 
@@ -155,7 +158,7 @@ def verdicts(truth, spread, seed):
     held = [replace(o, head_sd_kg_per_t=0.0) for o in tests]
     rankings = {
         "sizes known": rank_tests(tests),
-        "p80 and slope": rank_tests([with_slope(o) for o in tests], MECHANISTIC),
+        "p80 and slope": rank_tests([with_slope(o) for o in tests]),
         "no head of its own": rank_tests(held, MECHANISTIC),
     }
     if seed % SPREAD_FITTED_IN == 0:
