@@ -48,7 +48,8 @@ def rank_tests_by_p80(
 ) -> Ranking:
     """Return laws ranked on all tests, one spread of sizes in every test fitted with each law.
 
-    A spread held at a wrong value looks like another mechanism; fitted, it costs one quantity.
+    A spread held at a wrong value looks like another mechanism; fitted, it costs one quantity. The
+    sizes are taken as log-normal: where they are not, a wrong law may be named. Sieve if you can.
 
     Parameters
     ----------
