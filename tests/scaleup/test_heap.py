@@ -164,6 +164,39 @@ def test_without_much_demand_the_ore_rules():
     )
 
 
+def test_a_demand_that_takes_nothing_is_refused():
+    with pytest.raises(InputProblems, match="takes no reagent.*use the ore curve itself"):
+        heap(copper_curve(), [10.0], demand=ReagentDemand(0.0, 6.8), **PLANT)
+
+
+def test_contacted_ore_is_a_smaller_bed_with_all_the_solution():
+    """A share of the ore, with all the solution and cure for itself; the rest gives nothing."""
+    days, share = [5.0, 20.0, 60.0, 120.0], 0.6
+    part = copper_heap(days, contacted_fraction=share, cure_kg_per_t=6.0, moisture_m3_per_t=0.06)
+    whole = copper_heap(
+        days,
+        contacted_fraction=1.0,
+        irrigation_L_per_h_m2=8.0 / share,
+        cure_kg_per_t=6.0 / share,
+        moisture_m3_per_t=0.06 / share,
+    )
+    assert_allclose(part.start_h, whole.start_h, rtol=1e-12)
+    for name in ("extracted", "recovered", "ore_limited", "taken_kg_per_t", "supplied_kg_per_t"):
+        assert_allclose(getattr(part, name), share * getattr(whole, name), rtol=1e-9)
+
+
+def test_delivery_factor_is_a_slower_clock_in_the_bed():
+    """Three times the days at a third of the flow do what a factor of 1 does."""
+    days = np.array([5.0, 20.0, 40.0])
+    slow = copper_heap(3.0 * days, moisture_m3_per_t=0.09)
+    fast = copper_heap(
+        days, delivery_factor=1.0, irrigation_L_per_h_m2=24.0, moisture_m3_per_t=0.09
+    )
+    for name in ("extracted", "recovered", "taken_kg_per_t", "pls_g_per_L"):
+        assert_allclose(getattr(slow, name), getattr(fast, name), rtol=1e-9)
+    assert_allclose(slow.first_solution_day, 3.0 * fast.first_solution_day, rtol=1e-12)
+
+
 def test_more_irrigation_cure_or_strength_never_extracts_less():
     days = [20.0, 80.0]
     base = copper_heap(days).extracted
@@ -204,6 +237,12 @@ def test_other_orders_are_refused_with_the_reason():
         ({"feed_g_per_L": np.nan}, "feed_g_per_L"),
         ({"cure_kg_per_t": 500.0}, "cure_kg_per_t.*all that the contacted ore takes"),
         ({"head_kg_per_t": 5.0}, "one head for both"),
+        ({"lift_m": np.inf}, "lift_m: inf.*finite"),
+        ({"bulk_density_t_per_m3": np.nan}, "bulk_density_t_per_m3: nan.*finite"),
+        ({"cure_kg_per_t": -1.0}, "cure_kg_per_t: -1 kg/t.*at least 0"),
+        ({"moisture_m3_per_t": -0.1}, "moisture_m3_per_t: -0.1 m3/t.*at least 0"),
+        ({"irrigation_L_per_h_m2": "eight"}, "irrigation_L_per_h_m2: 'eight'.*numbers"),
+        ({"lift_m": [5.0, 6.0], "feed_g_per_L": [18.0, 20.0, 22.0]}, "batch: .*n the same for all"),
     ],
 )
 def test_refusals(changed, message):
