@@ -197,6 +197,46 @@ def test_delivery_factor_is_a_slower_clock_in_the_bed():
     assert_allclose(slow.first_solution_day, 3.0 * fast.first_solution_day, rtol=1e-12)
 
 
+def test_what_the_ore_would_take_with_reagent_everywhere():
+    days = np.array([5.0, 60.0])
+    result = copper_heap(days, cure_kg_per_t=12.0)
+    bare = copper_heap(days)
+    demand, curve = copper_demand(), copper_curve()
+    assert_allclose(0.85 * demand.kg_per_t(curve, result.start_h), 12.0, rtol=1e-10)
+    for found in (result, bare):
+        hours = found.start_h + days * 24.0 / 3.0
+        assert_allclose(found.wanted_kg_per_t, 0.85 * demand.kg_per_t(curve, hours), rtol=1e-12)
+
+
+def test_cured_metal_leaves_with_the_first_bed_volume():
+    filling = 0.09 * T_PER_M2 * 1000.0 / 8.0 / 24.0
+    result = copper_heap(
+        filling * np.array([1.0, 1.25, 1.5, 2.0, 3.0]),
+        cure_kg_per_t=12.0,
+        feed_g_per_L=0.0,
+        moisture_m3_per_t=0.09,
+    )
+    cured = 0.85 * copper_curve()(result.start_h)
+    assert_allclose(result.extracted_by_clock, cured, rtol=1e-12)
+    assert_allclose(
+        result.recovered, cured * np.array([0.0, 0.25, 0.5, 1.0, 1.0]), rtol=1e-12, atol=1e-15
+    )
+
+
+@pytest.mark.parametrize("cure", [0.0, 12.0])
+def test_the_table_goes_on_below_its_first_node(cure):
+    """Depth between two times below the first node, against a quadrature over ln of the time."""
+    table = bed_front(bed_of(cure), 240.0)
+    first = float(table.time_h[0, 0])
+    low, high = 0.25 * first, first
+    place, weight = np.polynomial.legendre.leggauss(12)
+    u = low * (high / low) ** ((1.0 + place) / 2.0)
+    between = 0.5 * np.log(high / low) * float((weight * u / table.taken(u[None, :])[0]).sum())
+    reach = table.reach_at(np.array([[low, high]]))[0]
+    assert_allclose(reach[1] - reach[0], between, rtol=1e-7)
+    assert_allclose(table.time_at(reach[None, :])[0], [low, high], rtol=1e-9)
+
+
 def test_more_irrigation_cure_or_strength_never_extracts_less():
     days = [20.0, 80.0]
     base = copper_heap(days).extracted
