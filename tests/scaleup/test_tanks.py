@@ -4,7 +4,7 @@ from numpy.testing import assert_allclose
 from scipy.integrate import quad
 
 from leachkin.errors import InputProblems
-from leachkin.kinetics import ParticleLaw, RateLaw, ReagentDemand, Reference, Resistance
+from leachkin.kinetics import OreCurve, ParticleLaw, RateLaw, ReagentDemand, Reference, Resistance
 from leachkin.scaleup import batch_leach, tank_train
 from leachkin.testwork import SizeDistribution
 
@@ -214,3 +214,12 @@ def test_draws_of_the_plant_are_each_alone():
         one = tank_train(law, hours[i], demand, feed[i], solids_kg_per_m3=solids[i])
         assert_allclose(many.extraction[i], one.extraction, rtol=1e-11)
         assert_allclose(many.reagent_g_per_L[i], one.reagent_g_per_L, rtol=1e-9)
+
+
+def test_metal_that_dissolves_at_once_takes_its_reagent_in_the_first_tank():
+    hours = np.linspace(0.0, 3.0, 40) ** 2
+    curve = OreCurve(hours, 0.2 + 0.7 * (1.0 - np.exp(-hours)), 0.9, 298.15, 50.0)
+    train = tank_train(curve, [0.4, 0.4], ReagentDemand(1.5, 500.0), 50.0, solids_kg_per_m3=40.0)
+    assert train.extraction[0] > 0.2
+    assert_allclose(train.taken_kg_per_t, 750.0 * train.extraction, rtol=1e-11)
+    assert_allclose(50.0 - train.reagent_g_per_L, 0.04 * train.taken_kg_per_t, rtol=1e-11)
