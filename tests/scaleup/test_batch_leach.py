@@ -53,6 +53,18 @@ def test_starvation_is_not_the_ultimate():
     assert any("starvation, not the ultimate" in words for words in batch.warnings)
 
 
+@pytest.mark.parametrize(("enough_for", "starved"), [(0.9, True), (0.97, True), (0.999, False)])
+def test_starved_only_where_leachable_metal_is_left(enough_for, starved):
+    """Reagent for a share of the leachable metal, all of it used in the end."""
+    batch = batch_leach(
+        chemical_curve(0.5, 0.8), [500.0], ReagentDemand(1.0, 100.0), enough_for * 8.0,
+        solids_kg_per_m3=100.0,
+    )  # fmt: skip
+    assert_allclose(batch.extraction, 0.8 * enough_for, rtol=0, atol=1e-6)
+    assert bool(batch.starved) is starved
+    assert bool(batch.warnings) is starved
+
+
 def test_many_draws_are_each_alone():
     feeds = np.array([6.0, 10.0, 20.0])
     demand = ReagentDemand(1.5, 60.0)
