@@ -11,7 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from leachkin.errors import InputProblems
-from leachkin.inference import from_natural
+from leachkin.inference import from_natural, natural_slope
 from leachkin.kinetics.box import DataBox
 from leachkin.kinetics.fit_layout import Layout, Quantity, Role
 from leachkin.kinetics.fit_start import rough_ultimates
@@ -54,6 +54,7 @@ class FitOptions:
     law: str
     free: Collection[str] = ()
     fixed: Mapping[str, float] = field(default_factory=dict)
+    priors: Mapping[str, tuple[float, float]] = field(default_factory=dict)
     ultimate: float | Literal["by size", "one"] = "by size"
     reference: Reference | None = None
     size_exponents: Literal["theory", "free"] = "theory"
@@ -201,7 +202,8 @@ def _energies(
 ) -> list[Quantity]:
     several = len(spread.temperatures_K) > 1
     names = [_named("activation_energy", kind) for kind in kinds]
-    missing = [name for name in names if name not in options.fixed]
+    known = {*options.fixed, *options.priors}
+    missing = [name for name in names if name not in known]
     if not several and missing and not options.one_curve:
         remarks.append(
             "one temperature was tested: activation energies are not known and held at 0, so the "
@@ -330,9 +332,13 @@ def _heads(tests: Sequence[Observed]) -> list[Quantity]:
 def _asked(quantities: tuple[Quantity, ...], options: FitOptions) -> tuple[Quantity, ...]:
     """Apply free and fixed by name."""
     names = [q.name for q in quantities]
-    unknown = [name for name in (*options.free, *options.fixed) if name not in names]
+    asked = (*options.free, *options.fixed, *options.priors)
+    unknown = [name for name in asked if name not in names]
     if unknown:
         raise InputProblems([unknown_name("parameter", n, names, column="free") for n in unknown])
+    both = sorted(set(options.fixed) & set(options.priors))
+    if both:
+        raise argument_error(both[0], "both fixed and with a prior", "one of the two")
     return tuple(_one_asked(q, options) for q in quantities)
 
 
@@ -346,6 +352,20 @@ def _one_asked(quantity: Quantity, options: FitOptions) -> Quantity:
         if not math.isfinite(fitted) or not quantity.low <= fitted <= quantity.high:
             raise argument_error(quantity.name, f"{value:g}", "a finite value in its range")
         return replace(quantity, start=fitted, free=False, prior_sd=None)
+    if quantity.name in options.priors:
+        return _with_prior(quantity, *options.priors[quantity.name])
     if quantity.name in options.free:
         return replace(quantity, free=True)
     return quantity
+
+
+def _with_prior(quantity: Quantity, centre: float, sd: float) -> Quantity:
+    """Return a quantity fitted about a value known beforehand, both on its natural scale."""
+    if not (math.isfinite(sd) and sd > 0.0):
+        raise argument_error(quantity.name, f"a prior of standard deviation {sd:g}", "above 0")
+    with np.errstate(all="ignore"):
+        fitted = float(from_natural(quantity.scale, centre))
+    if not math.isfinite(fitted) or not quantity.low <= fitted <= quantity.high:
+        raise argument_error(quantity.name, f"a prior about {centre:g}", "a value in its range")
+    slope = float(natural_slope(quantity.scale, np.asarray(fitted)))
+    return replace(quantity, start=fitted, free=True, prior_sd=sd / slope)

@@ -43,6 +43,7 @@ def fit_tests(
     free: Collection[str] | None = None,
     fixed: Mapping[str, float] | None = None,
     *,
+    priors: Mapping[str, tuple[float, float]] | None = None,
     ultimate: float | Literal["by size", "one"] = "by size",
     reference: Reference | None = None,
     size_exponents: Literal["theory", "free"] = "theory",
@@ -65,6 +66,9 @@ def fit_tests(
         Names of parameters to fit that are held by default.
     fixed : mapping of str to float, optional
         Parameters held at a value, such as ``{"activation_energy_chemical": 46.0}``.
+    priors : mapping of str to (value, standard deviation), optional
+        What is known of parameters beforehand (from print, from sequential assays), each a row of
+        the likelihood of its own: where the tests tell nothing the interval is that of the prior.
     ultimate : "by size", "one" or float
         Ultimate extraction: one for each test size (linear in ln d between), one for all, or held.
     reference : Reference, optional
@@ -95,6 +99,7 @@ def fit_tests(
         law=law,
         free=tuple(free or ()),
         fixed=dict(fixed or {}),
+        priors=dict(priors or {}),
         ultimate=ultimate,
         reference=reference,
         size_exponents=size_exponents,
@@ -109,11 +114,20 @@ def fit_with_options(observed: Sequence[Observed], options: FitOptions) -> FitRe
     tests, assumed = _with_rows(tuple(observed))
     _check_tests(tests)
     stated = all(o.sd_given for o in tests)
+    if options.priors and not stated:
+        tests = _with_scatter(tests, options)
     layout, more = layout_of(options, tests)
     assumed = (*assumed, *more)
     design = FitDesign.of(layout, tests)
     _check_count(design)
     estimate = _best_estimate(design, stated)
+    if (
+        options.priors and estimate.widening > 1.0
+    ):  # the readings are less sure, the priors as stated
+        tests = tuple(replace(o, sd=estimate.widening * o.sd) for o in tests)
+        assumed = (*assumed, _less_sure(estimate.widening))
+        design = FitDesign.of(layout, tests)
+        estimate = least_squares(_problem(design, estimate.vector, stated))
     asked = len(layout.free)
     dropped = _not_needed(design, estimate)
     if dropped:
@@ -128,6 +142,27 @@ def _with_rows(tests: tuple[Observed, ...]) -> tuple[tuple[Observed, ...], tuple
     empty = [o.test for o in tests if not o.value.size]
     said = (f"no measured value left in {', '.join(empty)}: left out of the fit",) if empty else ()
     return tuple(o for o in tests if o.value.size), said
+
+
+def _with_scatter(tests: tuple[Observed, ...], options: FitOptions) -> tuple[Observed, ...]:
+    """Return tests whose deviations are the scatter about a fit with the priors' values held.
+
+    Where no precision is stated a prior could not be weighed against the readings otherwise.
+    """
+    held = {name: centre for name, (centre, _) in options.priors.items()}
+    alone = replace(options, priors={}, fixed={**options.fixed, **held})
+    scatter = fit_with_options(tests, alone).residual_sd
+    if not scatter > 0.0:
+        return tests
+    return tuple(replace(o, sd=scatter * o.sd) for o in tests)
+
+
+def _less_sure(widening: float) -> str:
+    return (
+        f"the scatter is {widening:.2g} times the stated precision (chance below 1 %): the "
+        "readings were weighed so against the priors; look for an odd test or row, or a law that "
+        "does not fit"
+    )
 
 
 def _check_tests(tests: tuple[Observed, ...]) -> None:
@@ -302,6 +337,7 @@ def _parameters(
 
 
 def _from_interval(quantity: Quantity, interval: Interval) -> Parameter:
+    known = quantity.prior_sd is not None and quantity.role != "head" and interval.low is not None
     return Parameter(
         quantity.name,
         interval.value,
@@ -310,7 +346,7 @@ def _from_interval(quantity: Quantity, interval: Interval) -> Parameter:
         interval.low,
         interval.high,
         interval.level,
-        interval.method,
+        f"{interval.method}, with a prior" if known else interval.method,
         interval.why_not,
     )
 
