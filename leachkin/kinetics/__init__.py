@@ -14,6 +14,7 @@ from leachkin.kinetics.arrhenius_two_step import (
 )
 from leachkin.kinetics.box import DataBox
 from leachkin.kinetics.demand import ReagentDemand
+from leachkin.kinetics.drive import Drive, DriveForm, ln_drive
 from leachkin.kinetics.evidence import Evidence, EvidenceLine, gather_evidence, stirring_power
 from leachkin.kinetics.fit_curve import fit_curve, straightened_time
 from leachkin.kinetics.fit_layout import Layout, Quantity
@@ -61,7 +62,7 @@ from leachkin.kinetics.residual_checks import (
     residual_checks,
     runs_test,
 )
-from leachkin.kinetics.resistance import ClassConversions, Reference, Resistance
+from leachkin.kinetics.resistance import Reference, Resistance
 from leachkin.kinetics.simulate import (
     Bottle,
     Noise,
@@ -97,6 +98,9 @@ __all__ = [
     "GangueReadings",
     "fit_gangue",
     "DEFAULT_LAWS",
+    "Drive",
+    "DriveForm",
+    "ln_drive",
     "Evidence",
     "EvidenceLine",
     "gather_evidence",
@@ -131,7 +135,6 @@ __all__ = [
     "NO_ULTIMATE",
     "SHAPE_PARAMETERS",
     "THEORY_SIZE_EXPONENT",
-    "ClassConversions",
     "ClockLaw",
     "DataBox",
     "OreCurve",

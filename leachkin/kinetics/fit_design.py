@@ -15,10 +15,11 @@ from numpy.typing import NDArray
 
 from leachkin.constants import GAS_CONSTANT_J_per_mol_K
 from leachkin.inference import below_limit_residual, natural_slope
+from leachkin.kinetics.drive import LEAST_STRENGTH
 from leachkin.kinetics.fit_layout import Layout, Quantity
 from leachkin.kinetics.other_laws import clock_conversion_and_sensitivities
 from leachkin.kinetics.particle_law import conversion_and_log_sensitivities
-from leachkin.kinetics.rate_law import LEAST_STRENGTH, knot_weights
+from leachkin.kinetics.rate_law import knot_weights
 from leachkin.kinetics.resistance import Reference
 from leachkin.testwork import Observed
 

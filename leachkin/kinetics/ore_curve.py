@@ -32,8 +32,8 @@ class OreCurve:
         Ultimate extraction of this ore.
     temperature_K, reagent_g_per_L : float
         The state in which one hour is one equivalent hour.
-    order : float or ndarray, shape B
-        Power of the reagent strength in the drive.
+    order : float or ndarray, shape B, or None
+        Power of the reagent strength in the drive; None where the drive is no power of it.
     slope : ndarray, shape B + (nodes,), or None
         dE/dq at the nodes, q the square root of equivalent time [1/h^0.5]; from neighbouring
         nodes where left out.
@@ -44,7 +44,7 @@ class OreCurve:
     ultimate: Array
     temperature_K: float
     reagent_g_per_L: float
-    order: Array | float = 1.0
+    order: Array | float | None = 1.0
     slope: Array | None = None
 
     def __post_init__(self) -> None:
@@ -111,6 +111,13 @@ class OreCurve:
 
     def drive(self, reagent_g_per_L: ArrayLike) -> Array:
         """Return equivalent hours per hour at a reagent strength, (C / C_ref)^order."""
+        if self.order is None:
+            raise argument_error(
+                "order",
+                "a drive that is no power of the reagent",
+                "a power",
+                "law.held_at(solution)",
+            )
         strength = np.maximum(np.asarray(reagent_g_per_L, dtype=float), 0.0)
         return np.asarray((strength / self.reagent_g_per_L) ** self.order)
 
@@ -118,13 +125,13 @@ class OreCurve:
         """Return one member of a batch."""
         if self.extraction.ndim == 1:
             return self
-        order = np.asarray(self.order)
+        order = self.order if self.order is None else np.asarray(self.order)
         ultimate = np.asarray(self.ultimate)
         return replace(
             self,
             extraction=self.extraction[index],
             ultimate=ultimate[index] if ultimate.ndim else ultimate,
-            order=order[index] if order.ndim else order,
+            order=order[index] if order is not None and order.ndim else order,
             slope=np.asarray(self.slope)[index],
         )
 

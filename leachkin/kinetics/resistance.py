@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from typing import Literal
 
@@ -91,35 +90,6 @@ class Reference:
                 continue
             if not np.isfinite(value) or value <= 0.0:
                 raise argument_error(name, f"{value}", "a finite number above 0")
-
-
-@dataclass(frozen=True, eq=False)
-class ClassConversions:
-    """Conversion and its derivatives by class, for fits.
-
-    Attributes
-    ----------
-    conversion : ndarray, shape B + (c, t)
-    by_log_time : mapping of kind to ndarray, shape B + (c, t)
-        dX/d ln tau of each resistance; times a covariate it is the derivative by an activation
-        energy, an order or an exponent.
-    by_shape : mapping of shape parameter to ndarray, shape B + (c, t)
-    weight : ndarray, shape B + (c,)
-        Metal share times ultimate extraction.
-    """
-
-    conversion: Array
-    by_log_time: Mapping[str, Array]
-    by_shape: Mapping[str, Array]
-    weight: Array
-
-    def extraction(self) -> Array:
-        """Return E, shape B + (t,)."""
-        return self.over_classes(self.conversion)
-
-    def over_classes(self, values: Array) -> Array:
-        """Return a sum over classes weighted as the extraction is, shape B + (t,)."""
-        return np.asarray(np.sum(self.weight[..., None] * values, axis=-2))
 
 
 def member(value: Array | float, index: int, own_axes: int) -> Array:

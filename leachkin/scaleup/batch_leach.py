@@ -129,6 +129,9 @@ def batch_leach(
         raise argument_error("time_h", f"shape {times.shape}", "a list", "time_h=[1, 2, 4]")
     feed = above_zero("feed_g_per_L", feed_g_per_L, "g/L")
     solids = above_zero("solids_kg_per_m3", solids_kg_per_m3, "kg/m3")
+    if curve.order is None:
+        found = "a drive that is no power of the reagent"
+        raise argument_error("curve", found, "a power of it", "hold it: law.held_at(solution)")
     order = above_zero("order of the curve", curve.order, "")
     batch = batch_shape(
         {

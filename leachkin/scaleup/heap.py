@@ -272,7 +272,7 @@ def _days(days: ArrayLike) -> Array:
 def _check_order(curve: OreCurve) -> None:
     if curve.order is not None and np.allclose(curve.order, 1.0, rtol=0.0, atol=1e-9):
         return
-    found = "different orders" if curve.order is None else f"{np.ravel(curve.order)[0]:g}"
+    found = "no single power" if curve.order is None else f"{np.ravel(curve.order)[0]:g}"
     raise argument_error(
         "curve",
         f"order {found} in the reagent",

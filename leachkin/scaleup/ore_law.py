@@ -116,7 +116,7 @@ def ore_law(
         _only_with("ultimate", ultimate, "a ParticleLaw", own)
         _only_with("reagent_order", reagent_order, "a ParticleLaw", own)
         n = law.batch_shape[0] if law.batch_shape else 1
-        order = np.asarray(law.order, dtype=np.float64)
+        order = None if law.order is None else np.asarray(law.order, dtype=np.float64)
         return OreLaw(
             measure_of_curve(law, n), law.batch_shape, law.reagent_g_per_L, order, np.ones(stages)
         )
@@ -151,9 +151,11 @@ def _of_rate_law(
     batch = np.broadcast_shapes(law.batch_shape, base_K.shape)
     n = batch[0] if batch else 1
     times = law.times(sizes.size_mm, base_K)
-    if isinstance(times, ParticleLaw):
+    if not law.is_plain:
+        measure = measure_of_curve(law.ore_curve(sizes, base_K), n)
+    elif isinstance(times, ParticleLaw):
         by_draw = _by_draw(times, [flat(part, n, 1) for part in times.times])
-        leachable = flat(law.class_weights(sizes), n, 1)
+        leachable = flat(law.class_weights(sizes, base_K), n, 1)
         measure = measure_of_particles(by_draw, leachable, flat(np.asarray(law.lag_h), n))
     else:
         measure = measure_of_curve(law.ore_curve(sizes), n)

@@ -136,7 +136,28 @@ def history_of(test: Test, temperature_K: Array | None) -> History:
         known = ~np.isnan(temperature_K)
         logged = np.interp(time, test.time_h[known], temperature_K[known])
         kelvin = np.where(time < test.time_h[known][0], temperature_K[known][0], logged)
-    return History(time, kelvin, reagent)
+    return History(time, kelvin, reagent, _others(test, time))
+
+
+def _others(test: Test, time_h: Array) -> dict[str, Array]:
+    """Return what else was read in the solution, interpolated; a leached metal starts from 0.
+
+    Before its first reading anything else stands as first read, after the last one as last read.
+    """
+    found: dict[str, Array] = {}
+    read = {name: assays.value for name, assays in test.solution.items()}
+    if test.pH is not None:
+        read["pH"] = test.pH
+    for name, values in read.items():
+        known = ~np.isnan(values)
+        if not known.any():
+            continue
+        times, levels = test.time_h[known], values[known]
+        if name in test.heads or name in test.start_metal_g_per_L:
+            times = np.concatenate([[0.0], times])
+            levels = np.concatenate([[test.start_metal_g_per_L.get(name, 0.0)], levels])
+        found[name] = np.interp(time_h, times, levels)
+    return found
 
 
 def _makeup_strength(test: Test) -> float:

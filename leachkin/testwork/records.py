@@ -49,11 +49,14 @@ class History:
     time_h, temperature_K : ndarray, shape (j,)
     reagent_g_per_L : ndarray, shape (j,), or None
         None where no reagent strength is known.
+    others : mapping of str to ndarray, shape (j,)
+        Everything else that was read in the solution [g/L], and "pH".
     """
 
     time_h: Array
     temperature_K: Array
     reagent_g_per_L: Array | None = None
+    others: Mapping[str, Array] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
