@@ -4,39 +4,33 @@ from __future__ import annotations
 
 import csv
 import io
+import re
 from collections.abc import Sequence
-from dataclasses import replace
 from pathlib import Path
 
 from leachkin.errors import InputProblems
-from leachkin.files.numerals import DecimalMark, marks_used
+from leachkin.files.decimal_marks import Marks, settle_marks
+from leachkin.files.grid import Grid, grid_of
 from leachkin.files.paths import file_bytes
-from leachkin.files.sheet import Sheet, build_sheet
+from leachkin.files.sheet import Sheet
+from leachkin.files.text import decode_text
 from leachkin.problems import Problem
 
 #: Semicolon and tab first: where a file fits two separators, a comma is more often a decimal mark.
-SEPARATORS = (";", "\t", ",")
-SEPARATOR_NAMES = {";": "semicolon", "\t": "tab", ",": "comma"}
-_FREE_TEXT = ("note", "remark", "comment")
-_SIGNATURES = {
-    b"PK\x03\x04": ("a workbook or a zip archive", 'name a sheet of it, as "book.xlsx#Sheet"'),
-    b"\xd0\xcf\x11\xe0": ("an old .xls workbook or one with a password", "save it as CSV UTF-8"),
-    b"%PDF": ("a PDF", "ask the laboratory for the numbers as CSV or XLSX"),
-    b"\xff\xfe": ("UTF-16 text", "save it as CSV UTF-8"),
-    b"\xfe\xff": ("UTF-16 text", "save it as CSV UTF-8"),
-}
+SEPARATORS = (";", "\t", "|", ",")
+_ONE_TABLE = 0.5  #: share of rows as wide as the headings, below which a file is no one table
+_SAID_SEPARATOR = re.compile(r"sep=(.)[ \t]*(?=\r?\n)", re.IGNORECASE)
+_GROUPED_BY_POINT = re.compile(r"[0-9]\.[0-9]{3}[.,][0-9]")
+_GROUPED = re.compile("[0-9][ \u00a0\u2009\u202f'\u2019][0-9]{3}(?![0-9])")
 
 
-def read_csv(path: str | Path, name: str = "") -> Sheet:
-    """Read a CSV file.
+def read_csv(path: str | Path, name: str = "", decimal_mark: str | None = None) -> Sheet:
+    """Read a CSV file as a table.
 
     Parameters
     ----------
-    path : str or Path
-        UTF-8 text, with a byte-order mark or without; separated by commas, semicolons or tabs;
-        with decimal commas only where the separator is not a comma.
-    name : str
-        Name to show in messages; the file name by default.
+    path, name, decimal_mark
+        As :func:`read_csv_grid`.
 
     Returns
     -------
@@ -49,51 +43,74 @@ def read_csv(path: str | Path, name: str = "") -> Sheet:
     InputProblems
         If the file is not there, not text, or not one table.
     """
+    return read_csv_grid(path, name, decimal_mark).as_sheet()
+
+
+def read_csv_grid(path: str | Path, name: str = "", decimal_mark: str | None = None) -> Grid:
+    """Read the cells of a CSV file.
+
+    Parameters
+    ----------
+    path : str or Path
+        Text in UTF-8, UTF-16 or a Western code page; separated by commas, semicolons, tabs or
+        bars.
+    name : str
+        Name to show in messages; the file name by default.
+    decimal_mark : "." or ",", optional
+        What the user says it is, where the file does not tell.
+
+    Returns
+    -------
+    Grid
+
+    Raises
+    ------
+    InputProblems
+        If the file is not there, or not text.
+    """
     path = Path(path)
     shown = name or path.name
     content = file_bytes(path, shown)
-    text = _decoded(content, shown)
-    separator = _separator(text)
-    sheet = build_sheet(shown, _records(text, separator, shown), content, whole_rows=True)
-    return _with_decimal_mark(sheet, separator)
-
-
-def _decoded(content: bytes, shown: str) -> str:
-    for signature, (what, try_this) in _SIGNATURES.items():
-        if content.startswith(signature):
-            raise _not_text(shown, None, f"this is {what}, not a CSV file", try_this)
-    try:
-        text = content.decode("utf-8-sig")
-    except UnicodeDecodeError as error:
-        row = content[: error.start].count(b"\n") + 1
-        found = f"byte {error.start + 1} (0x{content[error.start]:02X}) is not UTF-8 text"
-        try_this = "save it again as CSV UTF-8; it may have been saved in a Windows code page"
-        raise _not_text(shown, row, found, try_this) from None
-    for position, character in enumerate(text):
-        if character < " " and character not in "\t\n\r\f":
-            row = text[:position].count("\n") + 1
-            found = f"character U+{ord(character):04X} does not belong in text"
-            raise _not_text(shown, row, found, "name a CSV file; this looks like another kind")
-    return text
-
-
-def _not_text(shown: str, row: int | None, found: str, try_this: str) -> InputProblems:
-    return InputProblems(
-        [Problem(shown, row, "", "stop", found, "UTF-8 text with separators", try_this)]
+    text, problems = decode_text(content, shown)
+    said = _SAID_SEPARATOR.match(text)
+    separator = said.group(1) if said else _separator(text)
+    text = text[said.end() :] if said else text
+    records = _records(text, separator, shown)
+    marks = Marks(".", records, [])
+    if _may_have_marks(text, separator) or decimal_mark is not None:
+        marks = settle_marks(shown, records, separator, decimal_mark)
+    return grid_of(
+        shown,
+        marks.rows,
+        content,
+        [*problems, *marks.problems],
+        decimal=marks.decimal,
+        whole_rows=True,
     )
+
+
+def _may_have_marks(text: str, separator: str) -> bool:
+    """Whether a cell can hold a comma or a grouped number (then every cell is looked at)."""
+    commas = "," in text if separator != "," else '"' in text
+    return commas or _GROUPED.search(text) is not None or _GROUPED_BY_POINT.search(text) is not None
 
 
 def _separator(text: str) -> str:
     """The separator with which most of the first rows are as wide as the headings."""
     sample = [line for line in text.splitlines()[:400] if line.strip()][:200]
     best, best_score = ",", (0.0, 0)
+    several: dict[str, tuple[int, int]] = {}
     for separator in SEPARATORS:
         widths = [len(record) for record in csv.reader(sample, delimiter=separator) if record]
-        if not widths or widths[0] < 2:
+        wide = [width for width in widths if width > 1]
+        several[separator] = (len(wide), sum(wide))
+        if not wide or widths[0] < 2:
             continue
         same = sum(width == widths[0] for width in widths) / len(widths)
         if (score := (round(same, 2), widths[0])) > best_score:
             best, best_score = separator, score
+    if best_score[0] < _ONE_TABLE:  # no one table: the separator that parts most rows
+        best = max(SEPARATORS, key=lambda separator: several[separator])
     return best
 
 
@@ -115,58 +132,3 @@ def _records(text: str, separator: str, shown: str) -> list[tuple[int, Sequence[
         )
         raise InputProblems([problem]) from None
     return records
-
-
-def _with_decimal_mark(sheet: Sheet, separator: str) -> Sheet:
-    marks = {
-        heading: marks_used(row.cells[i] for row in sheet.rows)
-        for i, heading in enumerate(sheet.header)
-        if not heading.casefold().startswith(_FREE_TEXT)
-    }
-    kinds = {kind for used in marks.values() for kind in used}
-    if separator == "," or not kinds & {"comma", "comma or thousands", "both"}:
-        return sheet
-    if "both" in kinds or "point" in kinds:
-        return replace(sheet, problems=(*sheet.problems, _mixed_marks(sheet, marks)))
-    return replace(
-        sheet, decimal=_comma(), problems=(*sheet.problems, _comma_note(sheet, separator, kinds))
-    )
-
-
-def _comma() -> DecimalMark:
-    return ","
-
-
-def _mixed_marks(sheet: Sheet, marks: dict[str, dict[str, str]]) -> Problem:
-    examples = []
-    for kind in ("both", "comma", "comma or thousands", "point"):
-        for i, heading in enumerate(sheet.header):
-            if kind in marks.get(heading, {}):
-                cell = marks[heading][kind]
-                row = next(row.number for row in sheet.rows if row.cells[i] == cell)
-                examples.append(f'{cell!r} in row {row}, column "{heading}"')
-                break
-    return Problem(
-        sheet.file,
-        None,
-        "",
-        "stop",
-        f"decimal marks are mixed: {' and '.join(examples[:2])}",
-        "one decimal mark in a file, and no thousands marks",
-        "write all numbers with the same mark",
-    )
-
-
-def _comma_note(sheet: Sheet, separator: str, kinds: set[str]) -> Problem:
-    found = f"read with {SEPARATOR_NAMES[separator]}s between cells and decimal commas"
-    if "comma" in kinds:
-        return Problem(sheet.file, None, "", "note", found)
-    return Problem(
-        sheet.file,
-        None,
-        "",
-        "ask",
-        f"{found}, but each comma has three digits after it and may be a thousands mark",
-        "numbers without thousands marks",
-        "write the numbers without commas, or one with another number of decimals",
-    )

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import math
 import re
-from collections.abc import Iterable
 from typing import Literal
 
 DecimalMark = Literal[".", ","]
@@ -16,7 +15,6 @@ ERROR_CODES = frozenset(
 
 _POINT = re.compile(r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?")
 _COMMA = re.compile(r"[+-]?(?:[0-9]+,?[0-9]*|,[0-9]+)(?:[eE][+-]?[0-9]+)?")
-_THOUSANDS = re.compile(r"[+-]?[1-9][0-9]{0,2},[0-9]{3}")
 _BOTH = re.compile(r"[+-]?[0-9]{1,3}(?:(?:\.[0-9]{3})+,[0-9]+|(?:,[0-9]{3})+\.[0-9]+)")
 _MINUS = str.maketrans({"\u2212": "-", "\u2013": "-"})
 
@@ -63,30 +61,3 @@ def _why_not(text: str, decimal: DecimalMark) -> str:
     if decimal == "," and _POINT.fullmatch(text):
         return f"{text!r} has a point in a file with decimal commas"
     return f"{text!r} is not a number"
-
-
-def marks_used(cells: Iterable[str]) -> dict[str, str]:
-    """Return an example of each kind of numeral found among cells.
-
-    Returns
-    -------
-    dict
-        Keys out of "point", "comma", "comma or thousands" (as ``1,234``) and "both"
-        (as ``1.234,5``), each with the first such cell.
-    """
-    found: dict[str, str] = {}
-    for cell in cells:
-        kind = _kind(cell.strip().lstrip("<>~ "))
-        if kind:
-            found.setdefault(kind, cell)
-    return found
-
-
-def _kind(text: str) -> str:
-    if "," not in text:
-        return "point" if "." in text and _POINT.fullmatch(text) else ""
-    if _THOUSANDS.fullmatch(text):
-        return "comma or thousands"
-    if _COMMA.fullmatch(text):
-        return "comma"
-    return "both" if _BOTH.fullmatch(text) else ""

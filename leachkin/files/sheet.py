@@ -61,17 +61,18 @@ class Sheet:
 
 def build_sheet(
     file: str,
-    records: Iterable[tuple[int, Sequence[str]]],
+    rows: Sequence[SheetRow],
     content: bytes,
     problems: Sequence[Problem] = (),
     whole_rows: bool = False,
 ) -> Sheet:
-    """Make a sheet of numbered records: the first that holds anything has the headings.
+    """Make a sheet of rows that hold anything: the first one has the headings.
 
     Parameters
     ----------
     file : str
-    records : iterable of (row number, cells)
+    rows : sequence of SheetRow
+        Cells without spaces around them.
     content : bytes
     problems : sequence of Problem
         Problems noticed so far.
@@ -84,21 +85,16 @@ def build_sheet(
     Sheet
         Without rows, and with a stop, where there is nothing under the headings.
     """
-    listed = list(records)
-    filled = [(n, trimmed) for n, cells in listed if (trimmed := _trimmed(cells))]
     found = list(problems)
-    if not filled:
+    if not rows:
         found.append(Problem(file, None, "", "stop", "the file is empty", "headings and rows"))
         return Sheet(file, (), 1, (), problems=tuple(found), content=content)
-    header_row, header = filled[0][0], tuple(" ".join(cell.split()) for cell in filled[0][1])
+    header_row = rows[0].number
+    header = tuple(" ".join(cell.split()) for cell in without_empty_end(rows[0].cells))
     found.extend(_heading_problems(file, header, header_row))
-    rows, row_problems = _rows(file, len(header), filled[1:])
+    kept, row_problems = _rows(file, len(header), rows[1:], whole_rows)
     found.extend(row_problems)
-    if whole_rows:
-        kept = {row.number for row in rows}
-        short = [n for n, cells in listed if n in kept and len(cells) < len(header)]
-        found.extend(_short_rows(file, short))
-    if not rows:
+    if not kept:
         found.append(
             Problem(
                 file,
@@ -110,18 +106,39 @@ def build_sheet(
                 "fill in a row, or leave the table out of the settings",
             )
         )
-    sheet = Sheet(file, header, header_row, rows, content=content)
+    sheet = Sheet(file, header, header_row, kept, content=content)
+    found.extend(failed_formulas(file, kept, header))
     sheet = _without_unnamed_columns(sheet, found)
-    found.extend(_error_codes(sheet))
     return replace(sheet, problems=tuple(found))
 
 
-def _trimmed(cells: Sequence[str]) -> tuple[str, ...]:
-    """Cells without spaces around them and without the empty ones at the end."""
-    stripped = [cell.strip() for cell in cells]
-    while stripped and not stripped[-1]:
-        stripped.pop()
-    return tuple(stripped)
+def without_empty_end(cells: Sequence[str]) -> tuple[str, ...]:
+    """Return cells without the empty ones at the end.
+
+    Examples
+    --------
+    >>> without_empty_end(["a", "", "b", ""])
+    ('a', '', 'b')
+    """
+    end = len(cells)
+    while end and not cells[end - 1]:
+        end -= 1
+    return tuple(cells[:end])
+
+
+def column_letters(position: int) -> str:
+    """Return what a spreadsheet calls a column, the first being 0.
+
+    Examples
+    --------
+    >>> column_letters(0), column_letters(27)
+    ('A', 'AB')
+    """
+    letters, rest = "", position + 1
+    while rest:
+        rest, digit = divmod(rest - 1, 26)
+        letters = chr(ord("A") + digit) + letters
+    return letters
 
 
 def _heading_problems(file: str, header: tuple[str, ...], row: int) -> list[Problem]:
@@ -146,13 +163,23 @@ def _heading_problems(file: str, header: tuple[str, ...], row: int) -> list[Prob
 
 
 def _rows(
-    file: str, width: int, filled: list[tuple[int, tuple[str, ...]]]
+    file: str, width: int, filled: Sequence[SheetRow], whole_rows: bool
 ) -> tuple[tuple[SheetRow, ...], list[Problem]]:
-    rows, long = [], []
-    for number, cells in filled:
-        if len(cells) > width:
-            long.append((number, len(cells)))
-        rows.append(SheetRow(number, cells[:width] + ("",) * (width - len(cells))))
+    rows: list[SheetRow] = []
+    long: list[tuple[int, int]] = []
+    short: list[int] = []
+    for row in filled:
+        count = len(row.cells)
+        if count == width:
+            rows.append(row)
+            continue
+        if count < width:
+            short.append(row.number)
+        elif len(trimmed := without_empty_end(row.cells)) > width:
+            long.append((row.number, len(trimmed)))
+        cells = row.cells[:width] + ("",) * (width - count)
+        if any(cells):
+            rows.append(SheetRow(row.number, cells))
     problems = [
         Problem(
             file,
@@ -165,7 +192,7 @@ def _rows(
         )
         for number, count in long
     ]
-    return tuple(rows), problems
+    return tuple(rows), [*problems, *(_short_rows(file, short) if whole_rows else [])]
 
 
 def _short_rows(file: str, short: list[int]) -> list[Problem]:
@@ -208,18 +235,21 @@ def _without_unnamed_columns(sheet: Sheet, found: list[Problem]) -> Sheet:
     return replace(sheet, header=tuple(sheet.header[i] for i in keep), rows=rows)
 
 
-def _error_codes(sheet: Sheet) -> list[Problem]:
+def failed_formulas(
+    file: str, rows: Iterable[SheetRow], header: Sequence[str] = ()
+) -> list[Problem]:
+    """Return a stop for each cell where a formula failed, by its name in a spreadsheet."""
     return [
         Problem(
-            sheet.file,
+            file,
             row.number,
-            sheet.header[i],
+            header[i] if i < len(header) else column_letters(i),
             "stop",
-            f"{cell} stands where a formula failed",
+            f"{cell} stands where a formula failed, in cell {column_letters(i)}{row.number}",
             "a number or an empty cell",
             "repair the formula in the workbook and save it again",
         )
-        for row in sheet.rows
+        for row in rows
         for i, cell in enumerate(row.cells)
         if cell and cell[0] == "#" and cell.upper() in ERROR_CODES
     ]

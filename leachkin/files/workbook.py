@@ -11,20 +11,47 @@ from pathlib import Path
 from typing import Any
 
 from leachkin.errors import InputProblems
-from leachkin.files.csv_sheet import read_csv
+from leachkin.files.csv_sheet import read_csv_grid
+from leachkin.files.decimal_marks import Marks, Row, settle_marks
+from leachkin.files.grid import Grid, grid_of
 from leachkin.files.paths import check_path_text, file_bytes
-from leachkin.files.sheet import Sheet, build_sheet
+from leachkin.files.sheet import Sheet
 from leachkin.problems import Problem, unknown_name
 
 WORKBOOK_ENDINGS = (".xlsx", ".xlsm", ".xltx", ".xltm")
 #: A workbook that unpacks to more is refused before it is unpacked.
 LARGEST_UNPACKED_BYTES = 1_000_000_000
 _OLD_WORKBOOK = b"\xd0\xcf\x11\xe0"
+_COMMA_NUMBER = re.compile(
+    r"[<>~=\u2264\u2265\s]*[+\-\u2212]?(?:[0-9]+,[0-9]*|,[0-9]+)(?:[eE][+-]?[0-9]+)?\s*%?"
+)
+_HIDDEN = re.compile(rb"<row [^>]*hidden=\"(?:1|true)\"[^>]*>")
+_ROW = re.compile(rb" r=\"([0-9]+)\"")
 _PERCENT_FORMAT = re.compile(rb'formatCode="[^"]*%|numFmtId="(?:9|10)"')
 
 
-def read_sheet(text: str, base_dir: str | Path = ".") -> Sheet:
+def read_sheet(text: str, base_dir: str | Path = ".", decimal_mark: str | None = None) -> Sheet:
     """Read a table named as in a settings file.
+
+    Parameters
+    ----------
+    text, base_dir, decimal_mark
+        As :func:`read_grid`.
+
+    Returns
+    -------
+    Sheet
+
+    Raises
+    ------
+    InputProblems
+        As :func:`read_grid`.
+    """
+    return read_grid(text, base_dir, decimal_mark).as_sheet()
+
+
+def read_grid(text: str, base_dir: str | Path = ".", decimal_mark: str | None = None) -> Grid:
+    """Read the cells of a file named as in a settings file.
 
     Parameters
     ----------
@@ -32,10 +59,12 @@ def read_sheet(text: str, base_dir: str | Path = ".") -> Sheet:
         ``"sheets/readings.csv"`` or ``"book.xlsx#Readings"``; forward slashes.
     base_dir : str or Path
         Folder that a relative path starts from.
+    decimal_mark : "." or ",", optional
+        What the user says it is, where the file does not tell.
 
     Returns
     -------
-    Sheet
+    Grid
 
     Raises
     ------
@@ -45,10 +74,10 @@ def read_sheet(text: str, base_dir: str | Path = ".") -> Sheet:
     checked = check_path_text(text)
     path_text, mark, sheet = checked.partition("#")
     if path_text.lower().endswith(WORKBOOK_ENDINGS):
-        return read_xlsx_sheet(Path(base_dir) / path_text, sheet or None, name=path_text)
+        return read_xlsx_grid(Path(base_dir) / path_text, sheet or None, path_text, decimal_mark)
     if path_text.lower().endswith(".xls") and (mark or not (Path(base_dir) / checked).exists()):
         raise InputProblems([_old_workbook(path_text)])
-    return read_csv(Path(base_dir) / checked, name=checked)
+    return read_csv_grid(Path(base_dir) / checked, checked, decimal_mark)
 
 
 def sheet_names(path: str | Path) -> list[str]:
@@ -67,8 +96,34 @@ def sheet_names(path: str | Path) -> list[str]:
         book.close()
 
 
-def read_xlsx_sheet(path: str | Path, sheet: str | None = None, name: str = "") -> Sheet:
-    """Read one sheet of a workbook.
+def read_xlsx_sheet(
+    path: str | Path, sheet: str | None = None, name: str = "", decimal_mark: str | None = None
+) -> Sheet:
+    """Read one sheet of a workbook as a table.
+
+    Parameters
+    ----------
+    path, sheet, name, decimal_mark
+        As :func:`read_xlsx_grid`.
+
+    Returns
+    -------
+    Sheet
+        Numbers as text with a decimal point; a cell in a per cent format with its ``%``; dates in
+        ISO form. A formula that was never calculated is a stop in ``problems``, by cell.
+
+    Raises
+    ------
+    InputProblems
+        As :func:`read_xlsx_grid`.
+    """
+    return read_xlsx_grid(path, sheet, name, decimal_mark).as_sheet()
+
+
+def read_xlsx_grid(
+    path: str | Path, sheet: str | None = None, name: str = "", decimal_mark: str | None = None
+) -> Grid:
+    """Read the cells of one sheet of a workbook.
 
     Parameters
     ----------
@@ -78,12 +133,12 @@ def read_xlsx_sheet(path: str | Path, sheet: str | None = None, name: str = "") 
         Its name; None where the workbook has only one.
     name : str
         Name of the file to show in messages; the file name by default.
+    decimal_mark : "." or ",", optional
+        Of numbers that stand as text.
 
     Returns
     -------
-    Sheet
-        Numbers as text with a decimal point; a cell in a per cent format with its ``%``; dates in
-        ISO form. A formula that was never calculated is a stop in ``problems``, by cell.
+    Grid
 
     Raises
     ------
@@ -97,13 +152,94 @@ def read_xlsx_sheet(path: str | Path, sheet: str | None = None, name: str = "") 
     book = _opened(content, shown, data_only=True)
     try:
         chosen = _chosen_sheet(book, sheet, shown)
-        file = f"{shown}#{chosen}"
         percent = _any_part(content, "xl/styles.xml", _PERCENT_FORMAT)
-        records = list(_records(book[chosen], percent))
+        return _grid(book, chosen, shown, content, percent, decimal_mark)
     finally:
         book.close()
-    problems = _uncalculated(content, shown, chosen, records)
-    return build_sheet(file, records, content, problems)
+
+
+def read_workbook(path: str | Path, name: str = "", decimal_mark: str | None = None) -> list[Grid]:
+    """Read every sheet of a workbook that holds anything, in order.
+
+    Parameters
+    ----------
+    path, name, decimal_mark
+        As :func:`read_xlsx_grid`.
+
+    Returns
+    -------
+    list of Grid
+
+    Raises
+    ------
+    InputProblems
+        As :func:`read_xlsx_grid`.
+    """
+    path = Path(path)
+    shown = name or path.name
+    content = file_bytes(path, shown)
+    _check_container(content, shown)
+    book = _opened(content, shown, data_only=True)
+    try:
+        percent = _any_part(content, "xl/styles.xml", _PERCENT_FORMAT)
+        names = [worksheet.title for worksheet in book.worksheets]
+        grids = [_grid(book, n, shown, content, percent, decimal_mark) for n in names]
+    finally:
+        book.close()
+    return [grid for grid in grids if grid.rows]
+
+
+def _grid(
+    book: Any, sheet: str, shown: str, content: bytes, percent: bool, decimal_mark: str | None
+) -> Grid:
+    """One sheet: numbers that stand as text are written with a decimal point."""
+    file = f"{shown}#{sheet}"
+    try:
+        typed = list(_records(book[sheet], percent))
+    except Exception:  # a damaged part raises almost anything; the user hears one message
+        raise _not_a_workbook(shown) from None
+    texts: list[Row] = [(n, [c if is_text else "" for c, is_text in cells]) for n, cells in typed]
+    records: list[tuple[int, Sequence[str]]] = [(n, [c for c, _ in cells]) for n, cells in typed]
+    problems = _uncalculated(content, shown, sheet, records)
+    problems += _hidden_rows(book[sheet], content, file)
+    if any(re.search(r"[0-9][,. \u00a0\u202f'][0-9]", c) for _, cells in texts for c in cells):
+        marks = settle_marks(file, texts, "", decimal_mark)
+        problems += marks.problems
+        records = _put_back(records, texts, marks)
+    return grid_of(file, records, content, problems)
+
+
+def _put_back(
+    records: list[tuple[int, Sequence[str]]], texts: list[Row], marks: Marks
+) -> list[tuple[int, Sequence[str]]]:
+    """The records with numbers that stand as text written with a decimal point."""
+    changed: list[tuple[int, Sequence[str]]] = []
+    for (number, cells), (_, before), (_, after) in zip(records, texts, marks.rows, strict=True):
+        new = list(cells)
+        for i, (old, cell) in enumerate(zip(before, after, strict=True)):
+            if marks.decimal == "," and _COMMA_NUMBER.fullmatch(cell.strip()):
+                new[i] = cell.replace(",", ".")
+            elif cell != old:
+                new[i] = cell
+        changed.append((number, new))
+    return changed
+
+
+def _hidden_rows(worksheet: Any, content: bytes, file: str) -> list[Problem]:
+    """A note on hidden rows: they are read like the others."""
+    part = str(getattr(worksheet, "_worksheet_path", "")).lstrip("/")
+    try:
+        with zipfile.ZipFile(io.BytesIO(content)) as archive:
+            text = archive.read(part)
+    except KeyError:
+        return []
+    rows = [int(match.group(1)) for tag in _HIDDEN.findall(text) if (match := _ROW.search(tag))]
+    if not rows:
+        return []
+    listed = ", ".join(str(row) for row in rows[:8]) + (" ..." if len(rows) > 8 else "")
+    what = "row is" if len(rows) == 1 else "rows are"
+    found = f"{len(rows)} hidden {what} read like the others: {listed}"
+    return [Problem(file, rows[0], "", "note", found, "", "delete rows that are not to be used")]
 
 
 def _old_workbook(shown: str) -> Problem:
@@ -194,14 +330,15 @@ def _chosen_sheet(book: Any, sheet: str | None, shown: str) -> str:
     raise InputProblems([problem])
 
 
-def _records(worksheet: Any, percent: bool) -> Iterator[tuple[int, Sequence[str]]]:
+def _records(worksheet: Any, percent: bool) -> Iterator[tuple[int, list[tuple[str, bool]]]]:
+    """Row numbers with the text of each cell, and whether it stands as text in the workbook."""
     worksheet.reset_dimensions()  # some programs write a wrong extent
     if not percent:
         for number, values in enumerate(worksheet.iter_rows(values_only=True), start=1):
-            yield number, [_as_text(value) for value in values]
+            yield number, [(_as_text(value), isinstance(value, str)) for value in values]
         return
     for number, cells in enumerate(worksheet.iter_rows(), start=1):
-        yield number, [_as_seen(cell) for cell in cells]
+        yield number, [(_as_seen(cell), isinstance(cell.value, str)) for cell in cells]
 
 
 def _as_seen(cell: Any) -> str:

@@ -53,7 +53,7 @@ def test_json_of_a_curve_holds_the_ranking(invoke, csv_of):
     ("text", "message"),
     [
         (b"", "the file is empty"),
-        (b"\xff\xfet\x00i\x00", "UTF-16 text"),
+        (b"\xff\xfet\x00i", "begins as UTF-16 text"),
         (b"PK\x03\x04zip", "a workbook or a zip archive"),
         ("time (h),extraction\n", "no rows under them"),
         ("time,extraction\n1,0.1\n2,0.2\n3,0.3\n4,0.4\n", "no unit in the heading"),

@@ -1,5 +1,7 @@
 """Reading CSV files: what is found is said, what is mixed or damaged is refused."""
 
+import re
+
 import pytest
 
 from leachkin.errors import InputProblems
@@ -50,12 +52,97 @@ def test_three_digits_after_every_comma_are_asked_about(tmp_path):
     assert "may be a thousands mark" in sheet.problems[0].found
 
 
-@pytest.mark.parametrize("text", ["a;b\n1,5;2\n2.5;3\n", "a;b\n1.234,5;2\n", "a;b\n1,234.5;1\n"])
-def test_mixed_marks_are_refused(tmp_path, text):
+MIXED = [
+    ("a;b\n1,5;2\n2.5;3\n", "a"),
+    ("a;b\n1.234,5;2\n0.5;2\n", "a"),
+    ("a;b\n0,674;2\n1.118;2\n", "a"),
+    ("a;b\n1,234;2.5\n0,5;1\n", "a"),
+    ('a,b\n0.674,1\n"1,118",2.5\n', "a"),
+]
+
+
+@pytest.mark.parametrize(("text", "column"), MIXED)
+def test_mixed_marks_are_refused(tmp_path, text, column):
     problems = read_csv(written(tmp_path, text)).problems
     assert [p.level for p in problems] == ["stop"]
     assert "decimal marks are mixed" in problems[0].found
-    assert "row 2" in problems[0].found
+    assert (problems[0].row, problems[0].column) == (3, column)
+
+
+#: What is written, the decimal mark, the number in row 2 of the first column.
+MARKS = [
+    ("a;b\n1.234,5;2\n", ",", 1234.5),
+    ("a;b\n1.234.567;2\n0,5;2\n", ",", 1234567.0),
+    ("a;b\n1.234;2\n5.678.901;2\n", ",", 1234.0),
+    ("a;b\n1,234.5;1\n", ".", 1234.5),
+    ('a,b\n"1,234,567",1\n', ".", 1234567.0),
+    ('a,b\n"1,118",1.5\n998.5,1.5\n', ".", 1118.0),
+    ("a;b\n1 234,5;2\n", ",", 1234.5),
+    ("a,b\n1 234.5,2\n", ".", 1234.5),
+    ("a,b\n1'234.5,2\n", ".", 1234.5),
+    ("a;b\n1\u202f234,5;2\n", ",", 1234.5),
+    ('a,b\n"0,5",2\n', ",", 0.5),
+    ("a|b\n0,5|2\n", ",", 0.5),
+    ("sep=;\na;b\n0,5;2\n", ",", 0.5),
+    ("a;b\n<0,5;2\n", ",", None),
+]
+
+
+@pytest.mark.parametrize(("text", "decimal", "value"), MARKS)
+def test_marks_are_found_and_said(tmp_path, text, decimal, value):
+    sheet = read_csv(written(tmp_path, text))
+    assert sheet.decimal == decimal
+    assert [p.level for p in sheet.problems if p.level != "note"] == []
+    assert "decimal" in str(sheet.problems[-1])
+    if value is not None:
+        assert parse_numeral(sheet.rows[0].cells[0], decimal) == value
+
+
+def test_nothing_proves_a_mark(tmp_path):
+    sheet = read_csv(written(tmp_path, 'a,b\n"1,118",2\n'))
+    assert (sheet.decimal, sheet.rows[0].cells[0]) == (".", "1,118")
+    for answer, value in ((",", 1.118), (".", 1118.0)):
+        sheet = read_csv(written(tmp_path, 'a,b\n"1,118",2\n'), decimal_mark=answer)
+        assert parse_numeral(sheet.rows[0].cells[0], sheet.decimal) == value
+    (problem,) = read_csv(written(tmp_path, "a;b\n1,5;2\n"), decimal_mark=".").problems
+    assert "the settings say decimal_mark = '.', but '1,5' in row 2" in problem.found
+
+
+def test_names_that_look_like_numbers_prove_nothing(tmp_path):
+    sheet = read_csv(written(tmp_path, "sample no;Cu (g/L);remark\n1.5;0,674;2.5\n"))
+    assert sheet.decimal == ","
+    assert sheet.rows[0].cells[0] == "1.5"
+
+
+#: Bytes, what the note says, the second heading.
+ENCODED = [
+    (
+        "test,Cu (\u00b5g/L)\nB1,2\n".encode("cp1252"),
+        "Windows-1252.*'\u00b5' in row 1",
+        "\u00b5g/L",
+    ),
+    ("test,Cu (\u00b5g/L)\nB1,2\n".encode("cp850"), "code page 850", "\u00b5g/L"),
+    ("test,T (\u00b0C)\nB1,2\n".encode("mac_roman"), "Mac Roman", "\u00b0C"),
+    ("test,T (\u00b0C)\nB1,2\n".encode("latin-1"), "Windows-1252", "\u00b0C"),
+    ("test,Cu (\u00b5g/L)\nB1,2\n".encode("utf-16"), "UTF-16", "\u00b5g/L"),
+    ("test,Cu (\u00b5g/L)\nB1,2\n".encode("utf-16-be"), "UTF-16", "\u00b5g/L"),
+    ("test,Cu (\u00b5g/L)\nB1,2\n".encode("utf-16-le"), "UTF-16", "\u00b5g/L"),
+]
+
+
+@pytest.mark.parametrize(("content", "said", "unit"), ENCODED)
+def test_code_pages_are_found_and_said(tmp_path, content, said, unit):
+    sheet = read_csv(written(tmp_path, content))
+    assert unit in sheet.header[1]
+    (note,) = sheet.problems
+    assert note.level == "note"
+    assert re.search(said, note.found)
+
+
+def test_unseen_marks_are_left_out(tmp_path):
+    sheet = read_csv(written(tmp_path, "test,Cu\u200b (g/L)\nB1,0.5\ufeff\n"))
+    assert sheet.header[1] == "Cu (g/L)"
+    assert sheet.rows[0].cells[1] == "0.5"
 
 
 def test_long_rows_stop_and_short_rows_are_asked_about(tmp_path):
@@ -104,11 +191,11 @@ def test_nothing_to_read(tmp_path, content, message):
 @pytest.mark.parametrize(
     ("content", "message"),
     [
-        (b"a,b\n1,caf\xe9\n", r"row 2: byte 10 \(0xE9\) is not UTF-8.*Windows code page"),
         (b"a,b\n1,\x00\n", r"row 2: character U\+0000 does not belong"),
         (b"PK\x03\x04rest", r"a workbook or a zip archive.*book.xlsx#Sheet"),
         (b"\xd0\xcf\x11\xe0rest", r"an old .xls workbook or one with a password"),
-        ("a,b".encode("utf-16"), "UTF-16 text"),
+        (b"\xff\xfea\x00,", "this begins as UTF-16 text and does not go on"),
+        (b"\xc2\xb5,b\n1,caf\xe9\n", r"row 2: byte 11 \(0xE9\).*row 1 is: two encodings"),
         (b"%PDF-1.7", "a PDF"),
     ],
 )

@@ -8,7 +8,14 @@ import openpyxl
 import pytest
 
 from leachkin.errors import InputProblems
-from leachkin.files import read_sheet, read_xlsx_sheet, sheet_names, write_csv, write_xlsx
+from leachkin.files import (
+    read_sheet,
+    read_workbook,
+    read_xlsx_sheet,
+    sheet_names,
+    write_csv,
+    write_xlsx,
+)
 from leachkin.result_table import Column, ResultTable
 
 
@@ -173,3 +180,56 @@ def test_wrong_numbers_are_not_written(tmp_path):
             write(bad, tmp_path / "bad")
     with pytest.raises(ValueError, match="at least one table"):
         write_xlsx([], tmp_path / "bad")
+
+
+def test_numbers_that_stand_as_text(tmp_path):
+    def fill(book):
+        book.active.append(["test", "pH", "Cu (mg/L)"])
+        book.active.append(["B1", "10,5", 0.674])
+        book.active.append(["B2", "9,25", "<0,01"])
+        book.active.append(["B3", 10.25, "1.234,5"])
+
+    sheet = read_xlsx_sheet(made(tmp_path, fill))
+    assert [row.cells[1:] for row in sheet.rows] == [
+        ("10.5", "0.674"),
+        ("9.25", "<0.01"),
+        ("10.25", "1234.5"),
+    ]
+    assert sheet.decimal == "."
+    said = "decimal commas in 4 cells, as '10,5' in row 2, column \"pH\""
+    assert said in sheet.problems[-1].found
+
+
+def test_marks_mixed_in_text_cells(tmp_path):
+    def fill(book):
+        book.active.append(["test", "pH"])
+        book.active.append(["B1", "10,5"])
+        book.active.append(["B2", "9.25"])
+
+    (problem,) = read_xlsx_sheet(made(tmp_path, fill)).problems
+    assert (problem.level, problem.row, problem.column) == ("stop", 3, "pH")
+
+
+def test_hidden_rows_are_told(tmp_path):
+    def fill(book):
+        for i in range(5):
+            book.active.append([f"a{i}"])
+        book.active.row_dimensions[3].hidden = True
+
+    sheet = read_xlsx_sheet(made(tmp_path, fill))
+    assert len(sheet.rows) == 4
+    assert "1 hidden row is read like the others: 3" in str(sheet.problems[0])
+
+
+def test_failed_formulas_by_cell_name(tmp_path):
+    def fill(book):
+        book.active.append(["a", "", "c"])
+        book.active.append([1, None, "#DIV/0!"])
+
+    (problem,) = read_xlsx_sheet(made(tmp_path, fill)).problems
+    assert "in cell C2" in problem.found
+
+
+def test_every_sheet_of_a_workbook(tmp_path):
+    grids = read_workbook(made(tmp_path, bench))
+    assert [(grid.tab, len(grid.rows)) for grid in grids] == [("Readings", 3)]
