@@ -7,8 +7,8 @@ from typing import Literal
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from leachkin.kinetics.fit_options import FitOptions
 from leachkin.kinetics.fit_result import FitResult
-from leachkin.kinetics.fit_setup import FitOptions
 from leachkin.kinetics.fit_tests import fit_with_options
 from leachkin.kinetics.resistance import Reference
 from leachkin.problems import argument_error

@@ -46,7 +46,7 @@ def open_sides(
         elif quantity.role == "time" and _few_rising(tests, shares, design):
             first = min(float(o.time_h[o.time_h > 0].min()) for o in tests)
             short = float(np.log(FAR_BELOW * first))
-            clock = quantity.which == "clock"
+            clock = quantity.which.endswith("clock")
             if _allows(design, estimate, j, -short if clock else short, level):
                 found[quantity.name] = ("high" if clock else "low", OPEN_TIME)
     return found
@@ -54,7 +54,7 @@ def open_sides(
 
 def _plateau(design: FitDesign, shares: list[Array], knot: int) -> bool:
     """Return whether too few readings that weigh on a knot have reached their plateau."""
-    weight = design.over_classes(design.share * design.weights[:, knot])
+    weight = design.knot_weight(knot)
     share = np.concatenate(shares)
     return int(np.sum((share > PLATEAU) & (weight > 0.5))) < PLATEAU_READINGS
 
@@ -98,6 +98,6 @@ def _carried(design: FitDesign, held: FitDesign, estimate: Estimate, j: int, val
         return base
     ratio = value - float(estimate.vector[j])
     times = np.array([float(q.role == "time") for q in held.layout.free])
-    sign = np.array([-1.0 if q.which == "clock" else 1.0 for q in held.layout.free])
+    sign = np.array([-1.0 if q.which.endswith("clock") else 1.0 for q in held.layout.free])
     tries = base + np.linspace(0.0, max(ratio, 1.0) + 3.0, 40)[:, None] * times * sign
     return np.asarray(tries[int(np.argmin(held.squares(tries)))])

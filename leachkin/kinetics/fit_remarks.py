@@ -24,16 +24,14 @@ HEAD_SHARE = 0.03
 HALF = 0.5
 #: A test that ends unfinished with less than this share of its reagent was starved.
 STARVED = 0.05
-#: A logged temperature further than this from the one used is worth a word [K].
+#: A logged temperature further than this from the test's own is worth a word [K].
 TEMPERATURE_SLACK_K = 2.0
 
 
 def shares_dissolved(design: FitDesign, vector: Array) -> list[Array]:
     """Return, for each test, the extraction at its readings over its own ultimate extraction."""
-    full = design.layout.expand(vector)
-    E = design.extraction(vector)
-    limit = design.over_classes(design.share * design.ultimate(full))
-    return [E[part.readings] / limit[part.readings] for part in design.slices]
+    pairs = zip(design.extractions(vector), design.limits(vector), strict=True)
+    return [E / limit for E, limit in pairs]
 
 
 def remarks(
@@ -122,8 +120,8 @@ def _drifting(tests: Sequence[Observed]) -> list[str]:
     if not found:
         return []
     return [
-        f"the logged temperature strays from the test's in {', '.join(found)}: the fit used the "
-        "test's one temperature"
+        f"the logged temperature strays from the test's in {', '.join(found)}: the fit followed "
+        "the log"
     ]
 
 

@@ -3,116 +3,50 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Collection, Mapping, Sequence
-from dataclasses import dataclass, field, replace
-from typing import Literal
+from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from leachkin.errors import InputProblems
 from leachkin.inference import from_natural, natural_slope
-from leachkin.kinetics.box import DataBox
-from leachkin.kinetics.fit_layout import Layout, Quantity, Role
+from leachkin.kinetics.fit_layout import SLOW, Layout, Quantity
+from leachkin.kinetics.fit_options import (
+    EXPONENT_BOUNDS,
+    LN_HEAD_MARGIN,
+    LN_TIME_MARGIN,
+    ULTIMATE_BOUNDS,
+    ENERGY_BOUNDS_kJ_per_mol,
+    FitOptions,
+    Spread,
+    box_of,
+    reference_of,
+)
 from leachkin.kinetics.fit_start import rough_ultimates
+from leachkin.kinetics.fit_terms import (
+    drive_quantities,
+    drive_reference_of,
+    named,
+    order_quantities,
+    quantity,
+    shape_quantities,
+    share_quantity,
+    stirring_quantities,
+    term_quantities,
+)
 from leachkin.kinetics.other_laws import (
     NO_ULTIMATE,
-    SHAPE_PARAMETERS,
     THEORY_SIZE_EXPONENT,
     canonical_law,
     law_terms,
 )
-from leachkin.kinetics.rate_law import knot_weights
-from leachkin.kinetics.resistance import THEORY_SIZE_EXPONENTS, Reference
+from leachkin.kinetics.rate_law_checks import knot_weights, linear_weights
+from leachkin.kinetics.resistance import THEORY_SIZE_EXPONENTS
 from leachkin.problems import argument_error, unknown_name
 from leachkin.testwork import Observed
 
 Array = NDArray[np.float64]
-
-#: Two test sizes, temperatures or strengths closer than this, relative, are the same.
-SAME = 1e-3
-
-#: Bounds on the natural scale.
-ENERGY_BOUNDS_kJ_per_mol = (-100.0, 400.0)
-EXPONENT_BOUNDS = (-2.0, 6.0)
-ORDER_BOUNDS = (-1.0, 4.0)
-ULTIMATE_BOUNDS = (0.005, 0.99995)
-SHAPE_BOUNDS = {
-    "fast_share": (0.002, 0.998),
-    "ratio": (1.0001, 1e6),
-    "n": (0.05, 8.0),
-    "slope": (0.005, 20.0),
-}
-LN_TIME_MARGIN = 14.0
-LN_HEAD_MARGIN = 1.0
-
-
-@dataclass(frozen=True)
-class FitOptions:
-    """What is asked of a fit of several tests; see ``fit_tests`` for the meaning."""
-
-    law: str
-    free: Collection[str] = ()
-    fixed: Mapping[str, float] = field(default_factory=dict)
-    priors: Mapping[str, tuple[float, float]] = field(default_factory=dict)
-    ultimate: float | Literal["by size", "one"] = "by size"
-    reference: Reference | None = None
-    size_exponents: Literal["theory", "free"] = "theory"
-    reagent_order: float | Literal["free"] = 1.0
-    level: float = 0.95
-    time_unit: str = "h"
-    one_curve: bool = False
-
-
-@dataclass(frozen=True)
-class Spread:
-    """Which conditions the tests differ in."""
-
-    sizes_mm: tuple[float, ...]
-    temperatures_K: tuple[float, ...]
-    strengths_g_per_L: tuple[float, ...]
-
-    @classmethod
-    def of(cls, tests: Sequence[Observed]) -> Spread:
-        """Collect the distinct sizes, temperatures and strengths."""
-        return cls(
-            _distinct([o.sizes.mass_mean_mm for o in tests if o.sizes is not None]),
-            _distinct([o.temperature_K for o in tests]),
-            _distinct([o.reagent_g_per_L for o in tests if o.reagent_g_per_L is not None]),
-        )
-
-
-def _distinct(values: Sequence[float]) -> tuple[float, ...]:
-    found: list[float] = []
-    for value in sorted(values):
-        if not found or value > found[-1] * (1.0 + SAME):
-            found.append(float(value))
-    return tuple(found)
-
-
-def reference_of(spread: Spread) -> Reference:
-    """Return the middle of the tests: the reference where none is asked for."""
-    sizes = spread.sizes_mm or (1.0,)
-    strengths = spread.strengths_g_per_L or (1.0,)
-    return Reference(
-        temperature_K=float(np.mean(spread.temperatures_K)),
-        reagent_g_per_L=float(np.exp(np.mean(np.log(strengths)))),
-        size_mm=float(np.exp(np.mean(np.log(sizes)))),
-    )
-
-
-def box_of(tests: Sequence[Observed], spread: Spread, reference: Reference) -> DataBox:
-    """Return the box of the data: what a prediction may use without leaving it."""
-    sizes = [size for o in tests if o.sizes is not None for size in o.sizes.size_mm]
-    sizes = sizes or [reference.size_mm]
-    times = np.concatenate([o.time_h for o in tests])
-    strengths = spread.strengths_g_per_L
-    return DataBox(
-        temperature_K=(spread.temperatures_K[0], spread.temperatures_K[-1]),
-        size_mm=(float(min(sizes)), float(max(sizes))),
-        reagent_g_per_L=(strengths[0], strengths[-1]) if strengths else None,
-        time_h=(float(times[times > 0].min()), float(times.max())),
-    )
 
 
 def layout_of(options: FitOptions, tests: Sequence[Observed]) -> tuple[Layout, tuple[str, ...]]:
@@ -121,49 +55,81 @@ def layout_of(options: FitOptions, tests: Sequence[Observed]) -> tuple[Layout, t
     Raises
     ------
     InputProblems
-        For an unknown law, an unknown name in free or fixed, or a value out of range.
+        For an unknown law, term or drive, an unknown name in free or fixed, a value out of range,
+        or a species that the drive needs and the readings lack.
     """
     spread = Spread.of(tests)
     options = replace(options, law=canonical_law(options.law))
+    _check_terms(options)
     kinds = law_terms(options.law)
     remarks: list[str] = []
-    knots = _knots(options, spread)
-    quantities = [
-        *_times(options, kinds, tests),
-        *_shapes(options, kinds),
-        *_energies(options, kinds, spread, remarks),
-        *_exponents(options, kinds, spread, remarks),
-        _order(options, spread, remarks),
-        *_ultimates(options, tests, knots),
-        *_heads(tests),
-    ]
     reference = options.reference or reference_of(spread)
-    layout = Layout(
+    knots, kelvin = _knots(options, spread)
+    bare = Layout(
         law_name=options.law,
         kinds=kinds,
-        quantities=_asked(tuple(quantities), options),
+        quantities=(),
         reference=reference,
         knot_size_mm=knots,
         box=box_of(tests, spread, reference),
+        drive_form=options.drive,
+        knot_temperature_K=kelvin,
     )
-    return layout, tuple(remarks)
+    bare = replace(bare, drive_reference=drive_reference_of(options.drive, tests, bare))
+    quantities = [
+        *_fraction(options, options.law, kinds, spread, tests, remarks),
+        *order_quantities(options, kinds, spread, remarks),
+        *drive_quantities(options.drive, tests, bare),
+        *term_quantities(options.terms, tests, options.time_unit),
+        *_ultimates(options, tests, bare),
+        *_heads(tests),
+    ]
+    if options.slow_law is not None:
+        slow = canonical_law(options.slow_law)
+        terms = law_terms(slow)
+        quantities += _fraction(options, slow, terms, spread, tests, remarks, f"{SLOW} ")
+        quantities.append(share_quantity())
+        bare = replace(bare, slow_law_name=slow, slow_kinds=terms)
+    return replace(bare, quantities=_asked(tuple(quantities), options)), tuple(remarks)
 
 
-def _quantity(
-    name: str,
-    role: Role,
-    which: str,
-    scale: Literal["linear", "log", "logit"],
-    value: float,
-    bounds: tuple[float, float],
-    **more: object,
-) -> Quantity:
-    fitted = [float(from_natural(scale, v)) for v in (value, *bounds)]
-    return Quantity(name, role, which, scale, *fitted, **more)  # type: ignore[arg-type]
+def _check_terms(options: FitOptions) -> None:
+    if "renewal" in options.terms and not options.balances:
+        raise argument_error(
+            "terms", "renewal without a reagent balance", "balances= for the tests", ""
+        )
+    if options.balances and {"lag", "fade"} & set(options.terms):
+        raise argument_error("terms", "a lag or a fade with a reagent by balance", "one of the two")
+    if options.balances and options.drive.kind != "power":
+        found = f"{options.drive.kind!r} with a reagent by balance"
+        raise argument_error("drive", found, "'power'")
+
+
+def _fraction(
+    options: FitOptions,
+    law: str,
+    kinds: tuple[str, ...],
+    spread: Spread,
+    tests: Sequence[Observed],
+    remarks: list[str],
+    part: str = "",
+) -> list[Quantity]:
+    """Return the quantities of one ore fraction."""
+    return [
+        *_times(options, law, kinds, tests, part),
+        *shape_quantities(law, part),
+        *_energies(options, kinds, spread, remarks, part),
+        *_exponents(options, law, kinds, spread, remarks, part),
+        *stirring_quantities(kinds, spread, part),
+    ]
 
 
 def _times(
-    options: FitOptions, kinds: tuple[str, ...], tests: Sequence[Observed]
+    options: FitOptions,
+    law: str,
+    kinds: tuple[str, ...],
+    tests: Sequence[Observed],
+    part: str,
 ) -> list[Quantity]:
     times = np.concatenate([o.time_h for o in tests])
     times = times[times > 0]
@@ -171,49 +137,40 @@ def _times(
     low = math.exp(math.log(times.min()) - LN_TIME_MARGIN)
     high = math.exp(math.log(times.max()) + LN_TIME_MARGIN)
     if kinds == ("clock",):
-        name = "k_slow" if options.law == "two_rate" else "k"
+        name = named("k_slow" if law == "two_rate" else "k", f"{part}clock")
         unit = f"1/{options.time_unit}" if options.time_unit else ""
         rates = (1.0 / high, 1.0 / low)
-        return [_quantity(name, "time", "clock", "log", 1.0 / middle, rates, unit=unit)]
+        return [quantity(name, "time", f"{part}clock", "log", 1.0 / middle, rates, unit=unit)]
+    unit = options.time_unit
     return [
-        _quantity(f"tau_{kind}", "time", kind, "log", middle, (low, high), unit=options.time_unit)
-        for kind in kinds
+        quantity(named("tau", part + k), "time", part + k, "log", middle, (low, high), unit=unit)
+        for k in kinds
     ]
 
 
-def _shapes(options: FitOptions, kinds: tuple[str, ...]) -> list[Quantity]:
-    if kinds != ("clock",):
-        return []
-    found = []
-    for name in SHAPE_PARAMETERS[options.law]:
-        low, high = SHAPE_BOUNDS[name]
-        scale: Literal["log", "logit"] = "logit" if name == "fast_share" else "log"
-        start = 0.5 if name == "fast_share" else 1.2
-        found.append(_quantity(name, "shape", name, scale, start, (low, high)))
-    return found
-
-
-def _named(stem: str, kind: str) -> str:
-    return stem if kind == "clock" else f"{stem}_{kind}"
-
-
 def _energies(
-    options: FitOptions, kinds: tuple[str, ...], spread: Spread, remarks: list[str]
+    options: FitOptions,
+    kinds: tuple[str, ...],
+    spread: Spread,
+    remarks: list[str],
+    part: str,
 ) -> list[Quantity]:
     several = len(spread.temperatures_K) > 1
-    names = [_named("activation_energy", kind) for kind in kinds]
+    names = [named("activation_energy", part + kind) for kind in kinds]
     known = {*options.fixed, *options.priors}
     missing = [name for name in names if name not in known]
     if not several and missing and not options.one_curve:
-        remarks.append(
+        said = (
             "one temperature was tested: activation energies are not known and held at 0, so the "
             "law holds at that temperature only (give them by fixed= to carry it elsewhere)"
         )
+        if said not in remarks:
+            remarks.append(said)
     return [
-        _quantity(
+        quantity(
             name,
             "activation_energy",
-            kind,
+            part + kind,
             "linear",
             40.0 if several else 0.0,
             ENERGY_BOUNDS_kJ_per_mol,
@@ -225,24 +182,29 @@ def _energies(
 
 
 def _exponents(
-    options: FitOptions, kinds: tuple[str, ...], spread: Spread, remarks: list[str]
+    options: FitOptions,
+    law: str,
+    kinds: tuple[str, ...],
+    spread: Spread,
+    remarks: list[str],
+    part: str,
 ) -> list[Quantity]:
     several = len(spread.sizes_mm) > 1
-    theory = {**THEORY_SIZE_EXPONENTS, "clock": THEORY_SIZE_EXPONENT.get(options.law, 0.0)}
-    empirical = kinds == ("clock",) and options.law not in THEORY_SIZE_EXPONENT
+    theory = {**THEORY_SIZE_EXPONENTS, "clock": THEORY_SIZE_EXPONENT.get(law, 0.0)}
+    empirical = kinds == ("clock",) and law not in THEORY_SIZE_EXPONENT
     free = several and (empirical or options.size_exponents == "free")
     if several and empirical:
         remarks.append(
-            f"{options.law} has no theory of size: its size exponent is fitted and holds between "
+            f"{law} has no theory of size: its size exponent is fitted and holds between "
             "the sizes tested only"
         )
-    if options.size_exponents == "free" and not several and not options.one_curve:
+    if options.size_exponents == "free" and not several and not options.one_curve and not part:
         remarks.append("one size was tested: size exponents are held by theory")
     return [
-        _quantity(
-            _named("size_exponent", kind),
+        quantity(
+            named("size_exponent", part + kind),
             "size_exponent",
-            kind,
+            part + kind,
             "linear",
             1.0 if empirical and several else theory[kind],
             EXPONENT_BOUNDS,
@@ -252,28 +214,19 @@ def _exponents(
     ]
 
 
-def _order(options: FitOptions, spread: Spread, remarks: list[str]) -> Quantity:
-    asked = options.reagent_order
-    several = len(spread.strengths_g_per_L) > 1
-    if not several and spread.strengths_g_per_L and not options.one_curve:
-        order = "1" if asked == "free" else f"{asked:g}"
-        remarks.append(f"one reagent strength was tested: order {order} in reagent is assumed")
-    if asked != "free" and not ORDER_BOUNDS[0] <= asked <= ORDER_BOUNDS[1]:
-        raise argument_error("reagent_order", f"{asked:g}", "-1 to 4, or 'free'")
-    value = 1.0 if asked == "free" else float(asked)
-    free = asked == "free" and several
-    return _quantity("reagent_order", "order", "reagent", "linear", value, ORDER_BOUNDS, free=free)
-
-
-def _knots(options: FitOptions, spread: Spread) -> Array:
+def _knots(options: FitOptions, spread: Spread) -> tuple[Array, Array | None]:
+    """Return the sizes at which the ultimate is given, or one size and the temperatures."""
+    by_temperature = options.ultimate == "by temperature" and options.law not in NO_ULTIMATE
+    if by_temperature and len(spread.temperatures_K) > 1:
+        return np.ones(1), np.array(spread.temperatures_K)
     by_size = options.ultimate == "by size" and options.law not in NO_ULTIMATE
     if by_size and spread.sizes_mm:
-        return np.array(spread.sizes_mm)
+        return np.array(spread.sizes_mm), None
     sizes = spread.sizes_mm or (1.0,)
-    return np.array([float(np.exp(np.mean(np.log(sizes))))])
+    return np.array([float(np.exp(np.mean(np.log(sizes))))]), None
 
 
-def _ultimates(options: FitOptions, tests: Sequence[Observed], knots: Array) -> list[Quantity]:
+def _ultimates(options: FitOptions, tests: Sequence[Observed], layout: Layout) -> list[Quantity]:
     asked = options.ultimate
     if isinstance(asked, str) and options.law in NO_ULTIMATE:
         asked = 1.0
@@ -287,19 +240,28 @@ def _ultimates(options: FitOptions, tests: Sequence[Observed], knots: Array) -> 
             )
         held = Quantity("ultimate", "ultimate", "0", "linear", float(asked), 0.0, 1.0, free=False)
         return [held]
-    if asked not in ("by size", "one"):
-        raise argument_error("ultimate", repr(asked), "'by size', 'one', or a number up to 1")
-    starts = rough_ultimates(tests, [_test_weights(o, knots) for o in tests])
-    names = (
-        ["ultimate"] if knots.size == 1 else [f"ultimate_{size:.4g}_mm" for size in knots.tolist()]
-    )
+    if asked not in ("by size", "by temperature", "one"):
+        raise argument_error(
+            "ultimate", repr(asked), "'by size', 'by temperature', 'one', or a number up to 1"
+        )
+    starts = rough_ultimates(tests, [_test_weights(o, layout) for o in tests])
     return [
-        _quantity(name, "ultimate", str(i), "logit", float(starts[i]), ULTIMATE_BOUNDS)
-        for i, name in enumerate(names)
+        quantity(name, "ultimate", str(i), "logit", float(starts[i]), ULTIMATE_BOUNDS)
+        for i, name in enumerate(_ultimate_names(layout))
     ]
 
 
-def _test_weights(observed: Observed, knots: Array) -> Array:
+def _ultimate_names(layout: Layout) -> list[str]:
+    if layout.knot_temperature_K is not None:
+        return [f"ultimate_{kelvin:.4g}_K" for kelvin in layout.knot_temperature_K.tolist()]
+    sizes = layout.knot_size_mm.tolist()
+    return ["ultimate"] if len(sizes) == 1 else [f"ultimate_{size:.4g}_mm" for size in sizes]
+
+
+def _test_weights(observed: Observed, layout: Layout) -> Array:
+    knots = layout.knot_size_mm
+    if layout.knot_temperature_K is not None:
+        return linear_weights(np.asarray(observed.temperature_K), layout.knot_temperature_K)
     if observed.sizes is None:
         return np.full(knots.size, 1.0 / knots.size)
     weights = knot_weights(observed.sizes.size_mm, knots)

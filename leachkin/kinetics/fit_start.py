@@ -14,12 +14,15 @@ from numpy.typing import NDArray
 
 from leachkin.inference import from_natural
 from leachkin.kinetics.fit_design import FitDesign
-from leachkin.kinetics.fit_layout import Layout
+from leachkin.kinetics.fit_layout import SLOW, Layout
 from leachkin.testwork import Observed
 
 Array = NDArray[np.float64]
 
 TIME_POINTS = 25
+#: A slow fraction starts this much slower, in ln(time); how many of the starts are then tried.
+LN_SLOWER = (1.0, 2.2, 3.5, 5.0)
+SLOW_STARTS = 6
 #: Finer where the sum of squares has kinks, and how many of its dips are tried.
 KINKED_TIME_POINTS, MOST_DIPS = 150, 8
 ENERGY_STARTS_kJ_per_mol = (15.0, 45.0)
@@ -66,7 +69,10 @@ def start_vectors(design: FitDesign, count: int = 2) -> list[Array]:
     """
     if has_kinks(design.layout):
         return _dips(design)
-    groups = [_grid(design, split) for split in _splits(len(design.layout.kinds))]
+    slower = LN_SLOWER if design.layout.slow_kinds else LN_SLOWER[:1]
+    count = SLOW_STARTS if design.layout.slow_kinds else count
+    splits = product(_splits(len(design.layout.kinds)), slower)
+    groups = [_grid(design, split, slower=ln) for split, ln in splits]
     best = []
     for vectors in groups:
         squares = design.squares(vectors)
@@ -101,23 +107,34 @@ def _splits(resistances: int) -> list[tuple[float, ...]]:
     return [(1.0 / resistances,) * resistances, *map(tuple, ends.tolist())]
 
 
-def _grid(design: FitDesign, split: tuple[float, ...], time_points: int = TIME_POINTS) -> Array:
+def several_minima(layout: Layout) -> bool:
+    """Return whether the sum of squares may have several minima, so that every start is run."""
+    return has_kinks(layout) or bool(layout.slow_kinds)
+
+
+def _grid(
+    design: FitDesign,
+    split: tuple[float, ...],
+    time_points: int = TIME_POINTS,
+    slower: float = LN_SLOWER[0],
+) -> Array:
     """Return start vectors of one split over times, activation energies and shapes."""
     layout = design.layout
     positive = design.time[design.time > 0]
     reach = np.log(positive.min() / 5.0), np.log(positive.max() * 200.0)
     totals = np.linspace(*reach, time_points)
     energies = ENERGY_STARTS_kJ_per_mol if _free(layout, "activation_energy") else (0.0,)
-    shapes = [SHAPE_STARTS[name] for name in _free(layout, "shape")]
+    shapes = [SHAPE_STARTS[name.removeprefix(f"{SLOW} ")] for name in _free(layout, "shape")]
     combinations = list(product(totals, energies, *shapes))
     starts = layout.starts[layout.free_index]
     vectors = np.tile(starts, (len(combinations), 1))
     share = dict(zip(layout.kinds, np.log(split), strict=True))
+    share |= {f"{SLOW} {kind}": slower for kind in layout.slow_kinds}
     table = np.array(combinations)
     shape_column = 2
     for j, quantity in enumerate(layout.free):
         if quantity.role == "time":
-            sign = -1.0 if quantity.which == "clock" else 1.0
+            sign = -1.0 if quantity.which.endswith("clock") else 1.0
             vectors[:, j] = sign * (table[:, 0] + share[quantity.which])
         elif quantity.role == "activation_energy":
             vectors[:, j] = table[:, 1]

@@ -18,13 +18,16 @@ from leachkin.inference import (
     one_sided_reach,
     schwarz_bic,
 )
+from leachkin.kinetics.drive import DriveForm
 from leachkin.kinetics.fit_design import FitDesign
 from leachkin.kinetics.fit_layout import Layout, Quantity
 from leachkin.kinetics.fit_open import Side, open_sides
+from leachkin.kinetics.fit_options import FitOptions
 from leachkin.kinetics.fit_remarks import remarks, what_to_look_at
 from leachkin.kinetics.fit_result import FitResult, Parameter, Residual
-from leachkin.kinetics.fit_setup import FitOptions, layout_of
-from leachkin.kinetics.fit_start import has_kinks, start_vectors
+from leachkin.kinetics.fit_setup import layout_of
+from leachkin.kinetics.fit_start import several_minima, start_vectors
+from leachkin.kinetics.reagent_balance import ReagentBalance
 from leachkin.kinetics.resistance import Reference
 from leachkin.problems import argument_error
 from leachkin.testwork import Observed
@@ -44,10 +47,14 @@ def fit_tests(
     fixed: Mapping[str, float] | None = None,
     *,
     priors: Mapping[str, tuple[float, float]] | None = None,
-    ultimate: float | Literal["by size", "one"] = "by size",
+    ultimate: float | Literal["by size", "by temperature", "one"] = "by size",
     reference: Reference | None = None,
     size_exponents: Literal["theory", "free"] = "theory",
-    reagent_order: float | Literal["free"] = 1.0,
+    reagent_order: float | Literal["free"] | Mapping[str, float | str] = 1.0,
+    drive: DriveForm | str = "power",
+    terms: Collection[str] = (),
+    slow_law: str | None = None,
+    balances: Mapping[str, ReagentBalance] | None = None,
     level: float = 0.95,
 ) -> FitResult:
     """Return one rate law fitted to all tests together.
@@ -69,13 +76,23 @@ def fit_tests(
     priors : mapping of str to (value, standard deviation), optional
         What is known of parameters beforehand (from print, from sequential assays), each a row of
         the likelihood of its own: where the tests tell nothing the interval is that of the prior.
-    ultimate : "by size", "one" or float
-        Ultimate extraction: one for each test size (linear in ln d between), one for all, or held.
+    ultimate : "by size", "by temperature", "one" or float
+        Ultimate extraction: one for each test size (linear in ln d between) or temperature, one
+        for all, or held.
     reference : Reference, optional
         State the times refer to; the middle of the tests where left out.
     size_exponents : "theory" or "free"
-    reagent_order : float or "free"
-        Common order of all resistances in reagent.
+    reagent_order : float, "free", or mapping of resistance to either
+        Common order of all resistances in reagent, or one for each (1 for those left out).
+    drive : DriveForm or str
+        What advances the clock, as a function of the solution; see :mod:`drive`.
+    terms : collection of str
+        Optional terms: "lag", "soluble" (a share that dissolves at once), "fade" (passivation),
+        "loss" (from solution, up to a capacity), "renewal" (of the reagent, with a balance).
+    slow_law : str, optional
+        Law of a second, slower fraction of the leachable metal.
+    balances : mapping of test to ReagentBalance, optional
+        Where the strength was not titrated: it follows from the extraction itself.
     level : float
         Of the intervals.
 
@@ -92,8 +109,10 @@ def fit_tests(
 
     Notes
     -----
-    With one order for all resistances a reagent history enters exactly, as the mean of C^n up to
-    each reading; adding resistances is itself exact for first order only.
+    With one drive for all resistances a reagent history enters exactly, as the sum of the drive up
+    to each reading, and so does a logged temperature for a law of one resistance. Otherwise the
+    grains are followed in steps (second order). Adding resistances is itself exact for first order
+    only.
     """
     options = FitOptions(
         law=law,
@@ -104,6 +123,10 @@ def fit_tests(
         reference=reference,
         size_exponents=size_exponents,
         reagent_order=reagent_order,
+        drive=DriveForm(drive) if isinstance(drive, str) else drive,
+        terms=tuple(terms),
+        slow_law=slow_law,
+        balances=dict(balances or {}),
         level=level,
     )
     return fit_with_options(observed, options)
@@ -118,7 +141,7 @@ def fit_with_options(observed: Sequence[Observed], options: FitOptions) -> FitRe
         tests = _with_scatter(tests, options)
     layout, more = layout_of(options, tests)
     assumed = (*assumed, *more)
-    design = FitDesign.of(layout, tests)
+    design = FitDesign.of(layout, tests, options.balances)
     _check_count(design)
     estimate = _best_estimate(design, stated)
     if (
@@ -126,13 +149,13 @@ def fit_with_options(observed: Sequence[Observed], options: FitOptions) -> FitRe
     ):  # the readings are less sure, the priors as stated
         tests = tuple(replace(o, sd=estimate.widening * o.sd) for o in tests)
         assumed = (*assumed, _less_sure(estimate.widening))
-        design = FitDesign.of(layout, tests)
+        design = FitDesign.of(layout, tests, options.balances)
         estimate = least_squares(_problem(design, estimate.vector, stated))
     asked = len(layout.free)
     dropped = _not_needed(design, estimate)
     if dropped:
         layout = _without(layout, dropped, design, estimate)
-        design = FitDesign.of(layout, tests)
+        design = FitDesign.of(layout, tests, options.balances)
         estimate = least_squares(_problem(design, _within(layout, estimate), stated))
     return _result(tests, design, estimate, options, assumed, dropped, asked)
 
@@ -218,7 +241,7 @@ def _best_estimate(design: FitDesign, stated: bool) -> Estimate:
     for start in start_vectors(design):
         found.append(least_squares(_problem(design, start, stated)))
         clean = found[-1].converged and all(state == "free" for state in found[-1].states)
-        if clean and not has_kinks(design.layout):
+        if clean and not several_minima(design.layout):
             break
     best = min(e.sum_of_squares for e in found)
     near = [e for e in found if e.sum_of_squares <= best * (1 + 1e-9) + 1e-300]

@@ -20,7 +20,7 @@ from leachkin.inference import (
     least_squares,
 )
 from leachkin.kinetics.demand import ReagentDemand
-from leachkin.kinetics.fit_design import thermal_covariate
+from leachkin.kinetics.fit_elements import thermal_covariate
 from leachkin.kinetics.fit_result import Parameter
 from leachkin.problems import argument_error
 from leachkin.result_table import Column, ResultTable

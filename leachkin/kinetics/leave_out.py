@@ -58,7 +58,7 @@ def predicted_rows(fit: FitResult, observed: Observed) -> Array:
     The test need not be among those that were fitted.
     """
     design = FitDesign.of(fit.layout, (observed,))
-    return observed.expected(design.extraction(fit.vector))
+    return observed.expected(design.extractions(fit.vector)[0])
 
 
 def leave_one_out(observed: Sequence[Observed], law: str, **same: Any) -> LeftOut:

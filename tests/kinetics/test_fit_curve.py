@@ -7,7 +7,8 @@ from numpy.testing import assert_allclose
 from leachkin.errors import InputProblems
 from leachkin.kinetics import LAW_NAMES, SHAPE_PARAMETERS, fit_curve, straightened_time
 from leachkin.kinetics.fit_design import FitDesign
-from leachkin.kinetics.fit_setup import FitOptions, layout_of
+from leachkin.kinetics.fit_options import FitOptions
+from leachkin.kinetics.fit_setup import layout_of
 from leachkin.testwork import SizeDistribution, observed_from_extraction
 
 TIME = np.array([0.5, 1, 2, 4, 8, 12, 24, 36, 48, 72.0])
@@ -33,7 +34,7 @@ def curve_of(law, time, *, tau=20.0, ultimate=0.85, sizes=None):
         if q.role == "shape":
             value = TRUE_SHAPES[q.which]
             vector[j] = np.log(value / (1 - value)) if q.scale == "logit" else np.log(value)
-    return design.extraction(vector), {q.name: vector[j] for j, q in enumerate(layout.free)}
+    return design.extractions(vector)[0], {q.name: vector[j] for j, q in enumerate(layout.free)}
 
 
 @pytest.mark.parametrize("law", LAW_NAMES)
@@ -199,8 +200,8 @@ def test_not_converged_has_no_intervals_and_says_what_to_look_at(monkeypatch):
 
 
 def test_shape_names_all_have_bounds_and_starts():
-    from leachkin.kinetics.fit_setup import SHAPE_BOUNDS
     from leachkin.kinetics.fit_start import SHAPE_STARTS
+    from leachkin.kinetics.fit_terms import SHAPE_BOUNDS
 
     names = {name for names in SHAPE_PARAMETERS.values() for name in names}
     assert names <= set(SHAPE_BOUNDS) and names <= set(SHAPE_STARTS)

@@ -16,7 +16,8 @@ from leachkin.kinetics import (
     simulate_observed,
 )
 from leachkin.kinetics.fit_design import FitDesign
-from leachkin.kinetics.fit_setup import FitOptions, layout_of
+from leachkin.kinetics.fit_options import FitOptions
+from leachkin.kinetics.fit_setup import layout_of
 from leachkin.testwork import History, SizeDistribution, observed_from_extraction
 
 HOURS = np.array([2, 6, 12, 24, 48, 72, 120, 168, 240.0])
@@ -121,7 +122,7 @@ def test_residual_function_and_rate_law_are_one_formula():
     tests = copper()
     fit = fit_tests(tests, "ash_layer+chemical", reference=REFERENCE)
     design = FitDesign.of(fit.layout, tests)
-    E = design.extraction(fit.vector)
+    E = np.concatenate(design.extractions(fit.vector))
     for observed, part in zip(tests, design.slices, strict=True):
         law = fit.law.extraction(
             observed.time_h, observed.sizes, observed.temperature_K, observed.reagent_g_per_L
@@ -324,7 +325,7 @@ def test_names_and_values_are_checked():
         fit_tests([], "chemical")
     with pytest.raises(InputProblems, match="value with a value that is not a number"):
         fit_tests([replace(tests[0], value=tests[0].value * np.nan)], "chemical")
-    with pytest.raises(InputProblems, match="'by size', 'one'"):
+    with pytest.raises(InputProblems, match="'by size', 'by temperature', 'one'"):
         fit_tests(tests, "chemical", ultimate="each")
 
 
