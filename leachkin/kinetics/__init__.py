@@ -24,6 +24,7 @@ from leachkin.kinetics.gangue import GangueFit, GangueLaw, GangueReadings, fit_g
 from leachkin.kinetics.grain_path import extraction_along
 from leachkin.kinetics.intervals import bootstrap_tests, fit_problem, profile_intervals
 from leachkin.kinetics.leave_out import LeftOut, leave_one_out, left_out_table
+from leachkin.kinetics.need import TERM_OPTIONS, TermTest, need_table, tests_of_need
 from leachkin.kinetics.nested import NestedTest, nested_test
 from leachkin.kinetics.ore_curve import OreCurve
 from leachkin.kinetics.other_laws import (
@@ -56,6 +57,7 @@ from leachkin.kinetics.rank import (
 )
 from leachkin.kinetics.rank_spread import log_normal_of_p80, rank_tests_by_p80
 from leachkin.kinetics.rate_law import RateLaw, knot_weights
+from leachkin.kinetics.reagent_balance import ReagentBalance
 from leachkin.kinetics.residual_checks import (
     ResidualChecks,
     RunsTest,
@@ -113,6 +115,11 @@ __all__ = [
     "residual_checks",
     "runs_test",
     "NestedTest",
+    "ReagentBalance",
+    "TERM_OPTIONS",
+    "TermTest",
+    "need_table",
+    "tests_of_need",
     "nested_test",
     "log_normal_of_p80",
     "rank_tests_by_p80",

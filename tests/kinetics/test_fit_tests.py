@@ -1,9 +1,11 @@
+import math
 from dataclasses import replace
 
 import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 
+from leachkin.constants import GAS_CONSTANT_J_per_mol_K
 from leachkin.errors import InputProblems
 from leachkin.kinetics import (
     Bottle,
@@ -332,3 +334,25 @@ def test_names_and_values_are_checked():
 def test_law_names_may_come_in_any_order():
     fit = fit_tests(copper(), "chemical+ash_layer", reference=REFERENCE)
     assert fit.law_name == "ash_layer+chemical"
+
+
+def test_the_phosphate_law_comes_back_from_its_curves():
+    """Ashraf et al., phosphate rock in succinic acid: k0 1.47e6 1/s, Ea 64.92 kJ/mol, R = 8.314.
+
+    Chemical control, unrounded curves at the five temperatures of the print.
+    """
+    seconds = np.array([300.0, 600.0, 1200.0, 1800.0, 2400.0])
+    tests = []
+    for kelvin in (313.0, 323.0, 333.0, 343.0, 353.0):
+        k = 1.47e6 * math.exp(-64920.0 / (8.314 * kelvin))
+        X = 1.0 - (1.0 - k * seconds) ** 3
+        tests.append(
+            observed_from_extraction(seconds, X, 1e-3, test=f"{kelvin:g}", temperature_K=kelvin)
+        )
+    fit = fit_tests(tests, "chemical", ultimate=1.0)
+    energy = fit.parameter("activation_energy_chemical").value
+    printed = energy * 8.314 / GAS_CONSTANT_J_per_mol_K
+    k_ref = 1.0 / fit.parameter("tau_chemical").value
+    k0 = k_ref * math.exp(printed * 1000.0 / (8.314 * fit.law.reference.temperature_K))
+    assert printed == pytest.approx(64.92, rel=1e-6)
+    assert k0 == pytest.approx(1.47e6, rel=1e-6)
