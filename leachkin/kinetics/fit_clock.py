@@ -95,7 +95,10 @@ class ClockPath:
         by_hours = -sum(by_kind.values())  # dX/d ln(hours)
         slopes: dict[Key, Array] = {}
         for kind in kinds:
-            slopes |= self._by_time(layout, full, part + kind, by_kind[kind], wanted)
+            for key, slope in self._by_time(
+                layout, full, part + kind, by_kind[kind], wanted
+            ).items():
+                slopes[key] = slopes.get(key, 0.0) + slope
         for name, slope in by_shape.items():
             slopes[("shape", part + name)] = slope
         safe = np.where(hours.hours > 0.0, hours.hours, 1.0)
@@ -119,6 +122,11 @@ class ClockPath:
             value = layout.natural(full, layout.position("time", which))[..., None]
             sign = -1.0 if which.endswith("clock") else 1.0
             slopes[("time", which)] = sign * by_log / value
+        if layout.has("spread", "sizes"):
+            sigma, by_spread = _ln_deviation(layout, full)
+            covariates["size_exponent"] = el.ln_size + sigma * el.deviate
+            exponent = full[..., layout.position("size_exponent", which), None]
+            slopes[("spread", "sizes")] = by_log * exponent * by_spread * el.deviate
         for role, covariate in covariates.items():
             key: Key = (role, which)
             if key in wanted:
@@ -154,11 +162,20 @@ def ln_times(layout: Layout, elements: Elements, full: Array, which: str) -> Arr
     energy = full[..., layout.position("activation_energy", which), None]
     exponent = full[..., layout.position("size_exponent", which), None]
     found = ln_time + energy * elements.thermal + exponent * elements.ln_size
+    if layout.has("spread", "sizes"):
+        found = found + exponent * _ln_deviation(layout, full)[0] * elements.deviate
     if layout.has("stirring", which):
         found = found - full[..., layout.position("stirring", which), None] * elements.ln_stirring
     if layout.has("order", which):
         found = found - full[..., layout.position("order", which), None] * elements.ln_strength
     return np.asarray(found)
+
+
+def _ln_deviation(layout: Layout, full: Array) -> tuple[Array, Array]:
+    """Return the standard deviation of ln d and its derivative by the spread, each B + (1,)."""
+    spread = layout.natural(full, layout.position("spread", "sizes"))[..., None]
+    sigma = np.sqrt(np.log1p(spread * spread))
+    return sigma, spread / ((1.0 + spread * spread) * sigma)
 
 
 def drive_at_nodes(

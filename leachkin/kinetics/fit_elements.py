@@ -20,6 +20,8 @@ Array = NDArray[np.float64]
 GAUSS_NODES = 3
 #: A logged temperature that strays less than this from the test's own is that temperature [K].
 TEMPERATURE_SLACK_K = 0.5
+#: Equal masses that stand for a log-normal distribution whose spread is fitted.
+SPREAD_CLASSES = 41
 
 
 def thermal_covariate(temperature_K: Array | float, reference_K: float) -> Array:
@@ -49,6 +51,8 @@ class Elements:
         First element of each reading.
     thermal, ln_size, ln_stirring, ln_strength : ndarray, shape (L,)
         Covariates of the times: the test's own temperature, size, stirring speed, strength.
+    deviate : ndarray, shape (L,)
+        Of a fitted spread about the size that 80 % passes, in its standard deviations of ln d.
     share : ndarray, shape (L,)
         Metal share of the class.
     weights : ndarray, shape (L, k)
@@ -62,6 +66,7 @@ class Elements:
     ln_size: Array
     ln_stirring: Array
     ln_strength: Array
+    deviate: Array
     share: Array
     weights: Array
 
@@ -69,7 +74,8 @@ class Elements:
     def of(cls, layout: Layout, tests: Sequence[Observed]) -> Elements:
         """Flatten tests for a layout."""
         parts = [_flatten(observed, layout) for observed in tests]
-        names = ("time", "thermal", "ln_size", "ln_stirring", "ln_strength", "share", "weights")
+        names = ("time", "thermal", "ln_size", "ln_stirring", "ln_strength", "deviate")
+        names = (*names, "share", "weights")
         classes = np.concatenate([part["classes"] for part in parts])
         return cls(
             reading_of=np.repeat(np.arange(classes.size), classes.astype(np.intp)),
@@ -91,6 +97,10 @@ def _flatten(observed: Observed, layout: Layout) -> dict[str, Array]:
         size, share = np.array([reference.size_mm]), np.ones(1)
     else:
         size, share = observed.sizes.size_mm, observed.sizes.metal_share
+    deviate = np.zeros(size.size)
+    if size.size == 1 and layout.has("spread", "sizes"):
+        deviate = spread_deviates()
+        size, share = np.repeat(size, deviate.size), np.full(deviate.size, 1.0 / deviate.size)
     c = size.size
     if layout.knot_temperature_K is None:
         weights = knot_weights(size, layout.knot_size_mm)
@@ -107,9 +117,18 @@ def _flatten(observed: Observed, layout: Layout) -> dict[str, Array]:
         "ln_strength": np.full(
             m * c, _ln_ratio(observed.reagent_g_per_L, reference.reagent_g_per_L)
         ),
+        "deviate": np.tile(deviate, m),
         "share": np.tile(share, m),
         "weights": np.tile(weights, (m, 1)),
     }
+
+
+def spread_deviates() -> Array:
+    """Return the deviates of equal masses of a log-normal distribution, less that of 80 %."""
+    from scipy.special import ndtri
+
+    middle = (np.arange(SPREAD_CLASSES) + 0.5) / SPREAD_CLASSES
+    return np.asarray(ndtri(middle) - ndtri(0.8))
 
 
 def _ln_ratio(value: float | None, reference: float | None) -> float:

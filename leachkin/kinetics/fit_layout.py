@@ -26,6 +26,7 @@ Role = Literal[
     "time",
     "activation_energy",
     "size_exponent",
+    "spread",
     "stirring",
     "order",
     "drive",

@@ -44,6 +44,7 @@ class FitOptions:
     drive: DriveForm = field(default_factory=DriveForm)
     terms: Collection[str] = ()
     slow_law: str | None = None
+    spread: float | Literal["free"] | None = None
     balances: Mapping[str, ReagentBalance] = field(default_factory=dict)
     level: float = 0.95
     time_unit: str = "h"

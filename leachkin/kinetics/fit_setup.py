@@ -32,6 +32,7 @@ from leachkin.kinetics.fit_terms import (
     quantity,
     shape_quantities,
     share_quantity,
+    spread_quantity,
     stirring_quantities,
     term_quantities,
 )
@@ -84,6 +85,8 @@ def layout_of(options: FitOptions, tests: Sequence[Observed]) -> tuple[Layout, t
         *_ultimates(options, tests, bare),
         *_heads(tests),
     ]
+    if options.spread is not None:
+        quantities.append(spread_quantity(options.spread))
     if options.slow_law is not None:
         slow = canonical_law(options.slow_law)
         terms = law_terms(slow)

@@ -34,6 +34,7 @@ _DRIVE_STARTS: dict[str, tuple[Scale, float, float, float]] = {
     "preference": ("log", 1.0, 1e-4, 1e4),
     "saturation": ("log", 1.0, 1e-4, 1e4),
 }
+SPREAD_BOUNDS = (0.02, 3.0)
 STIRRING_START, STIRRING_BOUNDS = 0.5, (-1.0, 3.0)
 
 
@@ -203,6 +204,15 @@ def term_quantities(terms: Collection[str], tests: Sequence[Observed], unit: str
             quantity("renewal", "renewal", "reagent", "linear", rate, (0.0, 10.0 / first), unit=per)
         )
     return found
+
+
+def spread_quantity(asked: float | str) -> Quantity:
+    """Return the spread of sizes within a test: standard deviation over mean, log-normal by mass."""
+    free = asked == "free"
+    value = 0.6 if isinstance(asked, str) else float(asked)
+    if not (free or SPREAD_BOUNDS[0] <= value <= SPREAD_BOUNDS[1]):
+        raise argument_error("spread", f"{asked}", f"{SPREAD_BOUNDS[0]:g} to {SPREAD_BOUNDS[1]:g}")
+    return quantity("spread", "spread", "sizes", "log", value, SPREAD_BOUNDS, free=free)
 
 
 def share_quantity() -> Quantity:

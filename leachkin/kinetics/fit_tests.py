@@ -54,6 +54,7 @@ def fit_tests(
     drive: DriveForm | str = "power",
     terms: Collection[str] = (),
     slow_law: str | None = None,
+    spread: float | Literal["free"] | None = None,
     balances: Mapping[str, ReagentBalance] | None = None,
     level: float = 0.95,
 ) -> FitResult:
@@ -91,6 +92,9 @@ def fit_tests(
         "loss" (from solution, up to a capacity), "renewal" (of the reagent, with a balance).
     slow_law : str, optional
         Law of a second, slower fraction of the leachable metal.
+    spread : float or "free", optional
+        Of tests with one size each, taken as the one that 80 % of the mass passes: log-normal
+        by mass about it, standard deviation over mean. Left out, that size is all there is.
     balances : mapping of test to ReagentBalance, optional
         Where the strength was not titrated: it follows from the extraction itself.
     level : float
@@ -126,6 +130,7 @@ def fit_tests(
         drive=DriveForm(drive) if isinstance(drive, str) else drive,
         terms=tuple(terms),
         slow_law=slow_law,
+        spread=spread,
         balances=dict(balances or {}),
         level=level,
     )

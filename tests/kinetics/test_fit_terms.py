@@ -113,6 +113,7 @@ CASES = {
     "slow fraction": {"slow_law": "ash_layer"},
     "slow first order": {"slow_law": "first_order"},
     "by temperature": {"ultimate": "by temperature"},
+    "spread": {"spread": "free"},
 }
 
 
@@ -121,6 +122,9 @@ CASES = {
 def test_jacobian_against_differences(case, name):
     options = FitOptions(law=name, reagent_order="free", size_exponents="free", **CASES[case])
     tests = conditions(case)
+    if case == "spread":
+        sizes = map(SizeDistribution.single, (1.0, 2.0, 4.0))
+        tests = [replace(o, sizes=size) for o, size in zip(tests, sizes, strict=True)]
     layout, _ = layout_of(options, tests)
     design = FitDesign.of(layout, tests)
     generator = np.random.default_rng(0)
@@ -140,6 +144,8 @@ def test_jacobian_against_differences(case, name):
 def test_a_batch_of_vectors_is_no_other_path():
     for options in CASES.values():
         tests = conditions("")
+        if "spread" in options:
+            tests = [replace(o, sizes=SizeDistribution.single(1.0)) for o in tests]
         layout, _ = layout_of(FitOptions(law="ash_layer+chemical", **options), tests)
         design = FitDesign.of(layout, tests)
         base = layout.starts[layout.free_index]
@@ -307,6 +313,23 @@ def test_ultimate_by_temperature_comes_back():
     fit = fit_tests(tests, "chemical", ultimate="by temperature")
     near(fit, "ultimate_288.1_K", 0.7)
     near(fit, "ultimate_313.1_K", 0.85)
+
+
+def test_a_spread_comes_back_where_only_p80_is_known():
+    tests = []
+    for p80 in (0.5, 1.0, 2.0):
+        median = p80 * np.exp(-0.8416212 * np.sqrt(np.log1p(0.9**2)))
+        sizes = SizeDistribution.log_normal(float(median), 0.9, 61)
+        E = law().extraction(TIME_H, sizes)
+        one = observed(f"{p80:g}", E, noise=0.002)
+        tests.append(replace(one, sizes=SizeDistribution.single(p80)))
+    same = {"ultimate": "one", "reference": Reference(size_mm=1.0)}
+    fit = fit_tests(tests, "chemical", spread="free", **same)
+    found = fit.parameter("spread")
+    assert abs(np.log(found.value / 0.9)) < 3.5 * found.standard_error / found.value
+    near(fit, "tau_chemical", 12.0)
+    single = fit_tests(tests, "chemical", **same)
+    assert single.sum_of_squares > 10.0 * fit.sum_of_squares
 
 
 def test_stirring_moves_the_film_only():
