@@ -95,9 +95,8 @@ class ClockPath:
         by_hours = -sum(by_kind.values())  # dX/d ln(hours)
         slopes: dict[Key, Array] = {}
         for kind in kinds:
-            for key, slope in self._by_time(
-                layout, full, part + kind, by_kind[kind], wanted
-            ).items():
+            own = self._by_time(layout, full, part + kind, by_kind[kind], wanted)
+            for key, slope in own.items():
                 slopes[key] = slopes.get(key, 0.0) + slope
         for name, slope in by_shape.items():
             slopes[("shape", part + name)] = slope

@@ -20,6 +20,7 @@ from leachkin.kinetics.fit_layout import Layout
 from leachkin.kinetics.fit_loss import Loss
 from leachkin.kinetics.fit_march import MarchPath
 from leachkin.kinetics.reagent_balance import ReagentBalance
+from leachkin.problems import argument_error
 from leachkin.testwork import Observed
 
 Array = NDArray[np.float64]
@@ -218,13 +219,22 @@ def _path(
 ) -> ClockPath | MarchPath:
     """Return the exact path of one clock, or the march where no one clock serves."""
     if balances:
+        _check_grains_alone(layout, "a reagent by balance")
         return MarchPath.of(layout, tests, [balances.get(o.test) for o in tests])
     several = len(layout.kinds) > 1 or len(layout.slow_kinds) > 1
     warmed = several and any(drifts(o) for o in tests)
     by_resistance = layout.drive_form.kind == "power" and not layout.has("order", "reagent")
     if warmed or (by_resistance and any(_strength_moves(o) for o in tests)):
+        _check_grains_alone(layout, "conditions that change, without one clock")
         return MarchPath.of(layout, tests)
     return ClockPath(elements, Exposure.of(layout, tests))
+
+
+def _check_grains_alone(layout: Layout, found: str) -> None:
+    """Stop at a term that a march through the states of the grains cannot carry."""
+    for name, which in (("spread", "sizes"), ("lag", "lag"), ("fade", "fade")):
+        if layout.has(name, which):
+            raise argument_error(name, f"a {name} with {found}", "one of the two")
 
 
 def _strength_moves(observed: Observed) -> bool:

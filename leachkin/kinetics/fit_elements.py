@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 
 import numpy as np
 from numpy.typing import NDArray
@@ -74,8 +74,7 @@ class Elements:
     def of(cls, layout: Layout, tests: Sequence[Observed]) -> Elements:
         """Flatten tests for a layout."""
         parts = [_flatten(observed, layout) for observed in tests]
-        names = ("time", "thermal", "ln_size", "ln_stirring", "ln_strength", "deviate")
-        names = (*names, "share", "weights")
+        names = [f.name for f in fields(cls) if f.name not in ("reading_of", "starts")]
         classes = np.concatenate([part["classes"] for part in parts])
         return cls(
             reading_of=np.repeat(np.arange(classes.size), classes.astype(np.intp)),

@@ -207,7 +207,7 @@ def term_quantities(terms: Collection[str], tests: Sequence[Observed], unit: str
 
 
 def spread_quantity(asked: float | str) -> Quantity:
-    """Return the spread of sizes within a test: standard deviation over mean, log-normal by mass."""
+    """Return the spread of sizes within a test: standard deviation over mean, log-normal."""
     free = asked == "free"
     value = 0.6 if isinstance(asked, str) else float(asked)
     if not (free or SPREAD_BOUNDS[0] <= value <= SPREAD_BOUNDS[1]):
