@@ -31,6 +31,9 @@ class Problem:
         and is provisional; note: done, and should be known.
     found, allowed, try_this : str
         What was found with its unit, what is allowed, what to type or to look at.
+    paste : str
+        The line of the settings that answers the question, as ``sheets.ton = "short"``; "" where
+        no setting does.
     """
 
     file: str
@@ -40,6 +43,7 @@ class Problem:
     found: str
     allowed: str = ""
     try_this: str = ""
+    paste: str = ""
 
     @property
     def where(self) -> str:

@@ -139,6 +139,17 @@ def split_heading(heading: str) -> tuple[str, str | None]:
     return text, None
 
 
+def is_spelling(text: str) -> bool:
+    """Return True for a spelling of the table, with one meaning or more.
+
+    Examples
+    --------
+    >>> is_spelling("mg/L"), is_spelling("oz/t"), is_spelling("pot")
+    (True, True, False)
+    """
+    return _fold(text) in _by_spelling()
+
+
 def known_spellings(target: str) -> list[str]:
     """Return the unambiguous spellings that convert to the target unit, in order of the table."""
     return [

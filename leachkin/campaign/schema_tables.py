@@ -27,12 +27,14 @@ from leachkin.campaign.schema_money import (
 )
 from leachkin.campaign.schema_plant import HEAP, TANK, size_tables
 from leachkin.campaign.schema_print import RATE_LAW, RATE_LAW_ULTIMATE
+from leachkin.campaign.schema_sheets import ALL as SHEETS
 
 SCHEMA = Schema(
     (
         CAMPAIGN,
         REAGENT_PER_METAL,
         TABLES,
+        *SHEETS,
         PRECISION,
         FIT,
         EXCLUDE,

@@ -4,13 +4,14 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from pathlib import Path
+from typing import Any
 
 from leachkin.campaign.extraction_sheet import read_extraction_sheet
 from leachkin.campaign.settings import Settings
 from leachkin.errors import InputProblems
 from leachkin.files import Sheet, read_sheet
 from leachkin.problems import Problem
-from leachkin.testwork import Exclusion, Observed, Test, TestworkSettings, read_tests
+from leachkin.testwork import Answers, Exclusion, Observed, Test, TestworkSettings, read_tests
 
 #: The sheets that hold bench tests; the extraction sheet is read on its own.
 BENCH_SHEETS = ("tests", "readings", "heads", "closeout", "sieves")
@@ -22,12 +23,13 @@ def read_sheets(
     """Return the sheets that open, by name, and a problem for each that does not."""
     sheets: dict[str, Sheet] = {}
     problems: list[Problem] = []
+    decimal_mark = settings.get("sheets.decimal_mark")
     for name in (*BENCH_SHEETS, "extraction"):
         setting = settings.values.get(f"tables.{name}")
         if setting is None:
             continue
         try:
-            sheets[name] = read_sheet(str(setting.value), folder)
+            sheets[name] = read_sheet(str(setting.value), folder, decimal_mark)
             problems.extend(sheets[name].problems)
         except InputProblems as error:
             key = f"tables.{name}"
@@ -42,9 +44,13 @@ def read_sheets(
 def tests_of_sheets(
     settings: Settings, sheets: Mapping[str, Sheet]
 ) -> tuple[tuple[Test, ...], tuple[Problem, ...]]:
-    """Return the tests of the bench sheets; none where no tests sheet is named or opens."""
+    """Return the tests of the bench sheets; none where no tests sheet is named or opens.
+
+    A stop at opening a sheet takes out what it is about; everything else is read, so that a check
+    can say how the tests stand.
+    """
     bench = {name: sheet for name, sheet in sheets.items() if name in BENCH_SHEETS}
-    if not bench or any(p.level == "stop" for sheet in bench.values() for p in sheet.problems):
+    if not bench:
         return (), ()
     try:
         return read_tests(bench, testwork_settings(settings))
@@ -61,6 +67,31 @@ def testwork_settings(settings: Settings) -> TestworkSettings:
         reagent=str(settings.get("campaign.reagent") or ""),
         precision={kind: pair for kind, pair in precision.items() if pair is not None},
         exclusions=tuple(exclusions(settings)),
+        answers=answers_of(settings),
+    )
+
+
+def answers_of(settings: Settings) -> Answers:
+    """Return what the user has answered about how the sheets are written."""
+
+    def free(path: str) -> dict[str, Any]:
+        return {name: setting.value for name, setting in settings.free.get(path, {}).items()}
+
+    return Answers(
+        decimal_mark=settings.get("sheets.decimal_mark"),
+        negative_assays=settings.get("sheets.negative_assays"),
+        codes=free("sheets.codes"),
+        limits=free("sheets.limits"),
+        ton=settings.get("sheets.ton"),
+        mesh=settings.get("sheets.mesh"),
+        electrode=settings.get("sheets.electrode"),
+        solution_density_g_per_mL=settings.get("sheets.solution_density"),
+        cyanide=settings.get("sheets.cyanide"),
+        lime=settings.get("sheets.lime"),
+        dates=settings.get("sheets.dates"),
+        clock_times=settings.get("sheets.clock_times"),
+        size_slope=settings.get("sheets.size_slope"),
+        stock_solutions=free("sheets.stock_solutions"),
     )
 
 

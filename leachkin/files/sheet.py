@@ -37,6 +37,8 @@ class Sheet:
         What was noticed while reading.
     content : bytes
         The file as it was, for its SHA-256.
+    form : str
+        What it was made of where it is not a plain table, as "bench sheet"; "" for a plain one.
     """
 
     file: str
@@ -46,6 +48,7 @@ class Sheet:
     decimal: DecimalMark = "."
     problems: tuple[Problem, ...] = ()
     content: bytes = field(default=b"", repr=False)
+    form: str = ""
 
     def column(self, heading: str) -> list[str]:
         """Return the cells of a column as text.

@@ -1,5 +1,6 @@
 """Testwork: sheets become tests, metal balances and observed values."""
 
+from leachkin.testwork.answers import Answers
 from leachkin.testwork.balance import metal_balance
 from leachkin.testwork.explain import explain_balance
 from leachkin.testwork.observe import observe, observed_from_extraction
@@ -22,6 +23,7 @@ from leachkin.testwork.sizes import SizeDistribution
 
 __all__ = [
     "AliquotPolicy",
+    "Answers",
     "Assays",
     "BalanceLimits",
     "Exclusion",

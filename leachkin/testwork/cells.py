@@ -5,23 +5,38 @@ from __future__ import annotations
 import re
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
 
+from leachkin.errors import UnitError
 from leachkin.files import ERROR_CODES, Sheet, parse_numeral
 from leachkin.problems import Level, Problem
+from leachkin.tables import read_table
+from leachkin.testwork.answers import Answers
 from leachkin.testwork.columns import Use
 from leachkin.testwork.records import Array
-from leachkin.units import convert
+from leachkin.testwork.written_units import apertures_of
+from leachkin.units import convert, parse_quantity, split_heading
 
-#: Words that stand for "no number" in a laboratory's sheet.
-_WORDS = "nil n/a na nan none trace tr - -- \u2013 \u2014 nd n.d. nr nss is lnr bdl pending . ?"
-MISSING_WORDS = frozenset(_WORDS.split())
 _NUMBER_AND_UNIT = re.compile(r"([+-]?[0-9.,]+(?:[eE][+-]?[0-9]+)?)\s*([^\s0-9].*)")
 _MOST_PROBLEMS = 12  #: of one kind in one column; the rest are counted
 _MOST_LISTED = 8
 _LARGEST = 1e12  #: of any number as written; its inverse is the smallest
+
+
+#: What laboratories write for "no number" by filling a field: -9, -99, -999.0, ...
+_FILLED = re.compile(r"[-\u2212]9+(?:[.,]0*)?")
+_BOUND = re.compile(
+    r"(?P<sign>[<>\u2264\u2265]|less than |greater than |more than )=?\s*(?P<rest>.+)", re.I
+)
+
+
+@lru_cache(maxsize=1)
+def code_meanings() -> Mapping[str, str]:
+    """Return what the codes of laboratories mean: "missing" or "below limit"."""
+    return {row.text("code"): row.text("meaning") for row in read_table("cell_codes").rows}
 
 
 @dataclass
@@ -34,14 +49,20 @@ class CellReader:
     uses : mapping of key to Use
     problems : list of Problem
         Added to.
+    answers : Answers
+        What codes and negative assays mean.
     """
 
     sheet: Sheet
     uses: Mapping[str, Use]
     problems: list[Problem]
+    answers: Answers = field(default_factory=Answers)
     _texts: dict[str, list[str]] = field(default_factory=dict)
     _missing: list[tuple[int, str, str]] = field(default_factory=list)
     _censored: list[tuple[int, str, str]] = field(default_factory=list)
+    _about: list[tuple[int, str, str]] = field(default_factory=list)
+    _no_limit: dict[str, list[tuple[int, str, str]]] = field(default_factory=dict)
+    _filled: dict[str, list[tuple[int, str, str]]] = field(default_factory=dict)
 
     @property
     def row_numbers(self) -> list[int]:
@@ -65,15 +86,30 @@ class CellReader:
     def assays(self, key: str) -> tuple[Array, NDArray[np.int64]] | None:
         """Return a column of assays and its bounds (-1 below, +1 above); None without it.
 
-        A negative assay is asked about and missing meanwhile.
+        A negative assay is what the answers say; without one it is asked about and missing
+        meanwhile.
         """
         found = self._read(key, bounds_allowed=True)
         if found is None:
             return None
         values, bounds = found
-        self._ask(key, values < 0.0, _negative_assay)
-        values[values < 0.0] = np.nan
+        negative = values < 0.0
+        if self.answers.negative_assays == "below limit":
+            values[negative], bounds[negative] = -values[negative], -1
+            self._tell(self._censored, key, negative)
+        elif self.answers.negative_assays == "missing":
+            values[negative] = np.nan
+            self._tell(self._missing, key, negative)
+        else:
+            self._ask(key, negative, _negative_assay, paste=_NEGATIVE)
+            values[negative] = np.nan
         return values, bounds
+
+    def _tell(self, listed: list[tuple[int, str, str]], key: str, which: NDArray[np.bool_]) -> None:
+        use = self.uses[key]
+        for i in np.flatnonzero(which):
+            row = self.sheet.rows[i]
+            listed.append((row.number, use.heading, row.cells[use.position]))
 
     def flag(
         self,
@@ -102,6 +138,60 @@ class CellReader:
                     "not taken for the limit itself: a fit uses them as bounds",
                 )
             )
+        if self._about:
+            self.problems.append(
+                self._gathered(self._about, 'with "~", read as the number itself', "")
+            )
+        self.problems.extend(self._limits_to_ask())
+        self.problems.extend(self._codes_to_ask())
+
+    def _limits_to_ask(self) -> list[Problem]:
+        """Ask once for each column whose codes say "below limit" and no number."""
+        found = []
+        for heading, cells in self._no_limit.items():
+            name, _ = split_heading(heading)
+            use = next(use for use in self.uses.values() if use.heading == heading)
+            limit = f'{_quoted(self._analyte(heading) or name)} = "0.01 {use.spelling or "g/L"}"'
+            row, _, code = cells[0]
+            more = f" and {len(cells) - 1} more" if len(cells) > 1 else ""
+            found.append(
+                Problem(
+                    self.sheet.file,
+                    row,
+                    heading,
+                    "ask",
+                    f"{code!r}{more} says below the limit, and not which; missing meanwhile",
+                    '"<" and the limit, or the limit in the settings',
+                    f"write {limit} (with your limit) under [sheets.limits] in the settings",
+                    f"sheets.limits.{limit}",
+                )
+            )
+        return found
+
+    def _analyte(self, heading: str) -> str:
+        key = next(key for key, use in self.uses.items() if use.heading == heading)
+        return key.partition(":")[2].partition("@")[0]
+
+    def _codes_to_ask(self) -> list[Problem]:
+        """Ask once for each filled-in number such as -99."""
+        found = []
+        for code, cells in self._filled.items():
+            row, heading, _ = cells[0]
+            more = f" and {len(cells) - 1} more cells" if len(cells) > 1 else ""
+            line = f'"{code}" = "missing"'
+            found.append(
+                Problem(
+                    self.sheet.file,
+                    row,
+                    heading,
+                    "ask",
+                    f"{code}{more}: a code for a missing number? Read as missing meanwhile",
+                    '"missing" or "below limit"',
+                    f"write {line} under [sheets.codes] in the settings",
+                    f"sheets.codes.{line}",
+                )
+            )
+        return found
 
     def _gathered(self, cells: list[tuple[int, str, str]], what: str, more: str) -> Problem:
         listed = "; ".join(f'row {r} "{h}" {c!r}' for r, h, c in cells[:_MOST_LISTED])
@@ -122,6 +212,8 @@ class CellReader:
             text = row.cells[use.position]
             if not text:
                 continue
+            if text[0] in "-\u2212" and self._is_filled(text, use, row.number):
+                continue
             try:
                 values[i] = parse_numeral(text, decimal)
             except ValueError as error:
@@ -131,6 +223,17 @@ class CellReader:
         bad += self._beyond_measure(values, use)
         self._not_numbers(use, sorted(bad), bounds_allowed)
         return _converted(values, use), bounds
+
+    def _is_filled(self, text: str, use: Use, row: int) -> bool:
+        """Whether a negative number is a code; one that the settings do not know is asked about."""
+        meaning = self.answers.codes.get(text)
+        if meaning == "missing":
+            self._missing.append((row, use.heading, text))
+            return True
+        if meaning is None and _FILLED.fullmatch(text) and len(text) > 2 and use.target != "K":
+            self._filled.setdefault(text, []).append((row, use.heading, text))
+            return True
+        return False
 
     def _beyond_measure(self, values: Array, use: Use) -> list[tuple[int, str]]:
         """Numbers that no balance or flask has, made missing."""
@@ -144,22 +247,54 @@ class CellReader:
         self, text: str, use: Use, row: int, bounds_allowed: bool
     ) -> tuple[float, int, bool]:
         """Value, bound and whether the cell is at fault, for a cell that is no plain number."""
-        if text.casefold() in MISSING_WORDS:
-            self._missing.append((row, use.heading, text))
-            return np.nan, 0, False
+        meaning = self.answers.codes.get(text) or code_meanings().get(text.casefold())
+        if meaning is not None:
+            return self._coded(text, meaning, use, row, bounds_allowed)
         if text.upper() in ERROR_CODES:  # the reader of the file has told of it
             return np.nan, 0, False
         try:
-            if bounds_allowed and text[0] in "<>":
-                value = parse_numeral(text[1:].lstrip("= "), self.sheet.decimal)
+            if bounds_allowed and (bound := _BOUND.fullmatch(text)):
+                value = self._numeral(bound["rest"], use)
                 self._censored.append((row, use.heading, text))
-                return value, -1 if text[0] == "<" else 1, False
-            match = _NUMBER_AND_UNIT.fullmatch(text)
-            if match and use.spelling and _bare(match.group(2)) == _bare(use.spelling):
-                return parse_numeral(match.group(1), self.sheet.decimal), 0, False
+                below = bound["sign"][0].casefold() in "<\u2264l"
+                return value, -1 if below else 1, False
+            if text[0] in "~\u2248":
+                value = self._numeral(text[1:], use)
+                self._about.append((row, use.heading, text))
+                return value, 0, False
+            return self._numeral(text, use), 0, False
         except ValueError:
-            pass
-        return np.nan, 0, True
+            return np.nan, 0, True
+
+    def _numeral(self, text: str, use: Use) -> float:
+        """A number, its unit written behind it or not."""
+        match = _NUMBER_AND_UNIT.fullmatch(text.strip())
+        if match and use.spelling and _bare(match.group(2)) == _bare(use.spelling):
+            return parse_numeral(match.group(1), self.sheet.decimal)
+        return parse_numeral(text, self.sheet.decimal)
+
+    def _coded(
+        self, text: str, meaning: str, use: Use, row: int, bounds_allowed: bool
+    ) -> tuple[float, int, bool]:
+        """A code for a missing number, or for one below a limit that the settings may know."""
+        if meaning == "below limit" and bounds_allowed:
+            limit = self._limit(use)
+            if limit is not None:
+                self._censored.append((row, use.heading, text))
+                return limit, -1, False
+            self._no_limit.setdefault(use.heading, []).append((row, use.heading, text))
+        self._missing.append((row, use.heading, text))
+        return np.nan, 0, False
+
+    def _limit(self, use: Use) -> float | None:
+        """The limit of a column in its own unit, from the settings."""
+        written = self.answers.limits.get(self._analyte(use.heading))
+        if written is None or not use.target:
+            return None
+        try:
+            return parse_quantity(written, use.target) / use.scale()
+        except UnitError:
+            return None
 
     def _not_numbers(self, use: Use, bad: list[tuple[int, str]], bounds_allowed: bool) -> None:
         unit = f" in {use.spelling}" if use.spelling else ""
@@ -184,19 +319,22 @@ class CellReader:
         wrong: NDArray[np.bool_],
         words: Callable[[str], tuple[str, str, str]],
         level: Level = "ask",
+        paste: str = "",
     ) -> None:
         use = self.uses[key]
         places = np.flatnonzero(wrong)
         for i in places[:_MOST_PROBLEMS]:
             row = self.sheet.rows[i]
             found, allowed, try_this = words(row.cells[use.position])
-            self.problems.append(
-                Problem(self.sheet.file, row.number, use.heading, level, found, allowed, try_this)
-            )
+            where = (self.sheet.file, row.number, use.heading)
+            self.problems.append(Problem(*where, level, found, allowed, try_this, paste))
         if places.size > _MOST_PROBLEMS:
             row = self.sheet.rows[places[_MOST_PROBLEMS]]
             more = f"{places.size - _MOST_PROBLEMS} more such cells from here on"
             self.problems.append(Problem(self.sheet.file, row.number, use.heading, level, more))
+
+
+_NEGATIVE = 'sheets.negative_assays = "below limit"'
 
 
 def _negative_assay(cell: str) -> tuple[str, str, str]:
@@ -204,19 +342,26 @@ def _negative_assay(cell: str) -> tuple[str, str, str]:
     return (
         f"the assay is negative ({cell}): is it below a limit? Read as missing meanwhile",
         'a number from 0 up, or "<" and the limit',
-        f'write "<{limit}" if {limit} is the limit, or leave the cell empty',
+        f'write "<{limit}" if {limit} is the limit; for all of them, negative_assays = '
+        '"below limit" or "missing" under [sheets] in the settings',
     )
 
 
 def _converted(values: Array, use: Use) -> Array:
+    if use.series:
+        return apertures_of(use.series, values)
     if not use.target:
         return values
     if use.target != "K":
-        return np.asarray(values * use.scale())
+        return np.asarray(values * use.scale() + use.added)
     known = ~np.isnan(values)
     unique, where = np.unique(values[known], return_inverse=True)
     values[known] = np.array([convert(v, use.spelling, "K") for v in unique])[where]
     return values
+
+
+def _quoted(name: str) -> str:
+    return name if re.fullmatch(r"[A-Za-z0-9_-]+", name) else f'"{name}"'
 
 
 def _bare(unit: str) -> str:

@@ -10,20 +10,20 @@ import numpy as np
 from leachkin.files import Sheet
 from leachkin.problems import Problem
 from leachkin.testwork.cells import CellReader
-from leachkin.testwork.columns import ANALYTE, Family, Field, of_family, resolve_columns
-from leachkin.testwork.names import TestNames, fold_name
+from leachkin.testwork.columns import ASSAYED, Family, Field, of_family, resolve_columns
+from leachkin.testwork.names import TEST_NAMES, TestNames, fold_name
 from leachkin.testwork.records import Array, Product
 from leachkin.testwork.settings import TestworkSettings
 
 FIELDS = (
-    Field("test", "test", names=("test id", "test no", "test name"), needed=True),
+    Field("test", "test", names=TEST_NAMES, needed=True),
     Field("product", "product", needed=True),
     Field("mass", "mass (g)", ("g",), ("dry mass", "residue mass")),
     Field("volume", "volume (mL)", ("mL",)),
     Field("replicate", "replicate", names=("assay no",)),
 )
 #: An analyte column may be of a solid (kg/t inside) or of a solution (g/L inside).
-FAMILIES = (Family("assay", "{} (%)", ANALYTE, ("kg/t", "g/L"), ("Cu", "Fe", "Zn", "Au", "Ag")),)
+FAMILIES = (Family("assay", "{} (%)", ASSAYED, ("kg/t", "g/L"), ("Cu", "Fe", "Zn", "Au", "Ag")),)
 
 
 @dataclass(frozen=True)
@@ -55,10 +55,10 @@ def read_closeout_sheet(
         Rows of one product with the same amount, or without one, are replicate assays. A product
         with a mass and a volume, such as slurry, becomes its solids and its solution.
     """
-    uses = resolve_columns(sheet, FIELDS, FAMILIES, problems)
+    uses = resolve_columns(sheet, FIELDS, FAMILIES, problems, settings, "closeout")
     if not {"test", "product"} <= set(uses):
         return {}
-    reader = CellReader(sheet, uses, problems)
+    reader = CellReader(sheet, uses, problems, settings.answers)
     columns = _Columns(reader)
     found: dict[str, tuple[tuple[Product, ...], tuple[int, ...]]] = {}
     for test, rows in _rows_by_test(reader, names).items():

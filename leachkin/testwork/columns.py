@@ -4,12 +4,17 @@ from __future__ import annotations
 
 import re
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from leachkin.errors import UnitError, nearest_names
 from leachkin.files import Sheet
-from leachkin.problems import Problem, unit_problem
-from leachkin.units import convert, known_spellings, split_heading
+from leachkin.problems import Problem
+from leachkin.testwork.answers import Answers
+from leachkin.testwork.bases import Basis, as_element, as_reagent
+from leachkin.testwork.settings import TestworkSettings
+from leachkin.testwork.trade_names import Question, as_trade_name, plain_text
+from leachkin.testwork.written_units import Heading, read_unit
+from leachkin.units import convert, is_spelling, known_spellings, split_heading
 
 FREE_TEXT = ("note", "remark", "comment")
 _SYMBOLS = (
@@ -19,6 +24,9 @@ _SYMBOLS = (
 )
 ELEMENTS = frozenset(_SYMBOLS.split())
 ANALYTE = r"(?P<analyte>[A-Z][a-z]?(?:[1-9]?[+-])?)"  #: an element, or an ion of it as Fe2+
+_PARTS = r"(?:[A-Z][a-z]?[0-9]*|\((?:[A-Z][a-z]?[0-9]*)+\)[0-9]*)+"
+#: An element, an ion, or a compound of a metal as U3O8 or CuSO4.5H2O.
+ASSAYED = rf"(?P<analyte>[A-Z][a-z]?(?:[1-9]?[+-])?|{_PARTS}(?:\.[0-9]*{_PARTS})?)"
 FORMULA = r"(?P<formula>(?:[A-Z][a-z]?[0-9]*|\((?:[A-Z][a-z]?[0-9]*)+\)[0-9]*)+)"
 
 
@@ -36,6 +44,8 @@ class Field:
     names : tuple of str
         Other names that are read.
     needed : bool
+    in_words : bool
+        True where the cells are words that may hold their own unit; the heading's unit is kept.
     """
 
     key: str
@@ -43,6 +53,7 @@ class Field:
     units: tuple[str, ...] = ()
     names: tuple[str, ...] = ()
     needed: bool = False
+    in_words: bool = False
 
 
 @dataclass(frozen=True)
@@ -63,21 +74,43 @@ class Family:
 class Use:
     """What a column of a sheet is used for.
 
-    ``target`` is "" for text and bare numbers, else the unit that values are converted to.
+    ``target`` is "" for text and bare numbers, else the unit that values are converted to; the
+    converted number is multiplied by ``factor``, and ``added`` is added to it. ``series`` names
+    the sieve series of mesh numbers.
     """
 
     position: int
     heading: str
     spelling: str
     target: str
+    factor: float = 1.0
+    series: str = ""
+    added: float = 0.0
 
     def scale(self) -> float:
         """Return the factor to the target unit (not for temperatures)."""
-        return convert(1.0, self.spelling, self.target) if self.target else 1.0
+        one = convert(1.0, self.spelling, self.target) if self.target else 1.0
+        return one * self.factor
+
+
+@dataclass(frozen=True)
+class _Meaning:
+    """A column that is known: its key, how to write it, its units, and the formula in its name."""
+
+    key: str
+    example: str
+    units: tuple[str, ...]
+    formula: str = ""
+    in_words: bool = False
 
 
 def resolve_columns(
-    sheet: Sheet, fields: Sequence[Field], families: Sequence[Family], problems: list[Problem]
+    sheet: Sheet,
+    fields: Sequence[Field],
+    families: Sequence[Family],
+    problems: list[Problem],
+    settings: TestworkSettings | None = None,
+    kind: str = "",
 ) -> dict[str, Use]:
     """Find what each column means; what cannot be used is left out and told in problems.
 
@@ -87,31 +120,17 @@ def resolve_columns(
     fields, families : sequence
     problems : list of Problem
         Added to.
+    settings : TestworkSettings, optional
+        For the metals, the reagent and the answers that units hang on.
+    kind : str
+        Name of the sheet, as "readings".
 
     Returns
     -------
     dict of key to Use
     """
-    by_name = {_folded(name): f for f in fields for name in _names_of(f)}
-    uses: dict[str, Use] = {}
-    for position, heading in enumerate(sheet.header):
-        if heading.casefold().startswith(FREE_TEXT):
-            continue
-        name, spelling = split_heading(heading)
-        meaning = _meaning(name, by_name, families)
-        if meaning is None:
-            problems.append(_unknown(sheet, heading, fields, families))
-            continue
-        key, example, units = meaning
-        use, problem = _use(sheet, position, spelling, units, example)
-        if use is not None and (key := _keyed(key, use, units)) in uses:
-            problem = _twice(sheet, heading, uses[key].heading)
-        if problem is not None:
-            problems.append(problem)
-        elif use is not None:
-            uses[key] = use
-    problems.extend(_not_there(sheet, fields, uses))
-    return uses
+    resolver = _Resolver(sheet, fields, families, problems, settings, kind)
+    return resolver.resolved()
 
 
 def of_family(uses: Mapping[str, Use], key: str) -> dict[str, Use]:
@@ -120,26 +139,299 @@ def of_family(uses: Mapping[str, Use], key: str) -> dict[str, Use]:
     return {name[len(start) :]: use for name, use in uses.items() if name.startswith(start)}
 
 
-def _folded(name: str) -> str:
-    return re.sub(r"[\s_-]+", "", name.casefold())
+def fold_heading(name: str) -> str:
+    """Return a name without case, spaces, hyphens, underscores, dots and colons."""
+    return re.sub(r"[\s_.:-]+", "", name.casefold())
+
+
+class _Resolver:
+    """Walks the headings of one sheet."""
+
+    def __init__(
+        self,
+        sheet: Sheet,
+        fields: Sequence[Field],
+        families: Sequence[Family],
+        problems: list[Problem],
+        settings: TestworkSettings | None,
+        kind: str,
+    ) -> None:
+        self.sheet, self.fields, self.families = sheet, fields, families
+        self.problems, self.settings, self.kind = problems, settings, kind
+        self.by_name: dict[str, list[Field]] = {}
+        for field in fields:
+            for name in _names_of(field):
+                self.by_name.setdefault(fold_heading(name), []).append(field)
+        self.uses: dict[str, Use] = {}
+        self.converted: set[str] = set()
+        self.seen: set[str] = set()
+
+    def resolved(self) -> dict[str, Use]:
+        for position, heading in enumerate(self.sheet.header):
+            if heading.casefold().startswith(FREE_TEXT):
+                continue
+            self._read(position, heading)
+        self.problems.extend(self._not_there())
+        return self.uses
+
+    def _read(self, position: int, heading: str) -> None:
+        found = self._meaning_of(heading)
+        if found is None:
+            self.problems.append(self._unknown(heading))
+            return
+        meaning, spelling, question = found
+        self.seen.add(meaning.key)
+        if question is not None:
+            self.problems.append(self._question(heading, question))
+            return
+        use = self._use(position, heading, meaning, spelling)
+        if use is None:
+            return
+        key, use, converted = self._on_its_basis(meaning, use)
+        key = f"{key}@{use.target}" if len(meaning.units) > 1 else key
+        if key not in self.uses:
+            self.uses[key] = use
+            self.converted |= {key} if converted else set()
+        elif converted or key in self.converted:
+            if key in self.converted and not converted:
+                self.uses[key], use = use, self.uses[key]
+                self.converted.discard(key)
+            self.problems.append(self._note(use.heading, "the same is in another column; not used"))
+        else:
+            self.problems.append(self._twice(heading, self.uses[key].heading))
+
+    def _meaning_of(self, heading: str) -> tuple[_Meaning, str | None, Question | None] | None:
+        for name, spelling in heading_candidates(heading):
+            if meaning := self._field(name, spelling):
+                return meaning, spelling, None
+            if meaning := self._family(name):
+                return meaning, spelling, None
+            if self.settings is None:
+                continue
+            trade, question = as_trade_name(name, self.settings, self.kind)
+            if trade != name and (meaning := self._family(trade)):
+                return meaning, spelling, question
+        return None
+
+    def _field(self, name: str, spelling: str | None) -> _Meaning | None:
+        """The field of that name; of several, the one that the unit fits."""
+        fields = self.by_name.get(fold_heading(name), [])
+        if not fields:
+            return None
+        fitting = [f for f in fields if _fits(spelling, f.units)] if len(fields) > 1 else fields
+        chosen = (fitting or fields)[0]
+        return _Meaning(chosen.key, chosen.heading, chosen.units, in_words=chosen.in_words)
+
+    def _family(self, name: str) -> _Meaning | None:
+        for family in self.families:
+            match = re.fullmatch(family.pattern, " ".join(name.split()))
+            if match and _symbols_known(match):
+                whole = "whole" in match.groupdict()
+                named = match.group(0) if whole else match.group(1)
+                formula = next(
+                    t for k, t in match.groupdict().items() if k in ("analyte", "formula") and t
+                )
+                if not self._is_assay(family, named, formula):
+                    continue
+                heading = family.heading.format(named)
+                return _Meaning(f"{family.key}:{named}", heading, family.units, formula)
+        return None
+
+    def _is_assay(self, family: Family, named: str, formula: str) -> bool:
+        """Whether a compound may stand where elements do: one whose metal is plain."""
+        elements = set(re.findall(r"[A-Z][a-z]?", formula))
+        if self.kind == "heads" or not family.key.startswith("assay") or len(elements) == 1:
+            return True
+        return self._as_element(named) is not None
+
+    def _use(
+        self, position: int, heading: str, meaning: _Meaning, spelling: str | None
+    ) -> Use | None:
+        if meaning.in_words:
+            return Use(position, heading, spelling or "", "")
+        if not meaning.units or meaning.units == ("",):
+            return Use(position, heading, "", "")
+        if not spelling:
+            self.problems.append(self._no_unit(heading, meaning))
+            return None
+        answers = self.settings.answers if self.settings is not None else Answers()
+        place = Heading(
+            self.sheet.file, self.sheet.header_row, heading, meaning.key, meaning.formula, spelling
+        )
+        reading, problems = read_unit(place, meaning.units, answers)
+        self.problems.extend(problems)
+        if reading is None:
+            return None
+        return Use(
+            position,
+            heading,
+            reading.spelling,
+            reading.target,
+            reading.factor,
+            reading.series,
+            reading.added,
+        )
+
+    def _on_its_basis(self, meaning: _Meaning, use: Use) -> tuple[str, Use, bool]:
+        """A compound as its metal, another cyanide or lime as the campaign's reagent."""
+        family, _, name = meaning.key.partition(":")
+        basis: Basis | None = None
+        if self.settings is not None and family in ("free", "added", "start"):
+            basis = as_reagent(name, self.settings.reagent)
+        elif family in ("assay", "made up", "start metal"):
+            basis = self._as_element(name)
+        if basis is None or basis.name == name:
+            return meaning.key, use, False
+        found = f"{name} is read as {basis.name}, 1 g as {basis.factor:.4g} g"
+        self.problems.append(self._note(use.heading, found))
+        return f"{family}:{basis.name}", replace(use, factor=use.factor * basis.factor), True
+
+    def _as_element(self, name: str) -> Basis | None:
+        """A compound as its metal; in the heads only where the campaign counts that metal."""
+        metals = self.settings.metals if self.settings is not None else ()
+        basis = as_element(name, metals)
+        if basis is not None and self.kind == "heads" and basis.name not in metals:
+            return None
+        return basis
+
+    def _note(self, heading: str, found: str) -> Problem:
+        return Problem(self.sheet.file, self.sheet.header_row, heading, "note", found)
+
+    def _question(self, heading: str, question: Question) -> Problem:
+        place = Heading(self.sheet.file, self.sheet.header_row, heading, "", "", "")
+        others = ", or ".join(question.choices[1:])
+        return place.ask(
+            f"{question.word!r} given as what? The column is not read before that is known",
+            " / ".join(question.choices),
+            question.paste,
+            f"or {others}",
+        )
+
+    def _no_unit(self, heading: str, meaning: _Meaning) -> Problem:
+        accepted = ", ".join(s for unit in meaning.units for s in known_spellings(unit)[:6])
+        return Problem(
+            self.sheet.file,
+            self.sheet.header_row,
+            heading,
+            "stop",
+            "the heading has no unit",
+            accepted,
+            f'write it as "{meaning.example}"',
+        )
+
+    def _twice(self, heading: str, first: str) -> Problem:
+        return Problem(
+            self.sheet.file,
+            self.sheet.header_row,
+            heading,
+            "stop",
+            f"it means the same as column {first!r}",
+            "each quantity in one column",
+            "begin one of the headings with 'note' to keep it out",
+        )
+
+    def _unknown(self, heading: str) -> Problem:
+        known = [field.heading for field in self.fields]
+        known += [f.heading.format(name) for f in self.families for name in f.examples]
+        near = nearest_names(heading, known)
+        if self.sheet.form:
+            return Problem(
+                self.sheet.file,
+                self.sheet.header_row,
+                heading,
+                "note",
+                "this column is not used",
+                "",
+                f"did you mean {' or '.join(near)}?" if near else "",
+            )
+        keep_out = f"begin it with 'note' to keep it out: \"note {heading}\""
+        hint = f"did you mean {' or '.join(near)}? Or {keep_out}" if near else keep_out
+        found = f"unknown column {heading!r}"
+        where = (self.sheet.file, self.sheet.header_row, heading)
+        return Problem(*where, "stop", found, ", ".join(known), hint)
+
+    def _not_there(self) -> list[Problem]:
+        if not self.sheet.header:
+            return []
+        return [
+            Problem(
+                self.sheet.file,
+                self.sheet.header_row,
+                "",
+                "stop",
+                f"there is no column {field.heading!r}",
+                ", ".join(f.heading for f in self.fields if f.needed),
+                f'add a column "{field.heading}"',
+            )
+            for field in self.fields
+            if field.needed and field.key not in self.uses and field.key not in self.seen
+        ]
+
+
+def heading_candidates(heading: str) -> list[tuple[str, str | None]]:
+    """Return how a heading may part into name and unit, the likeliest first.
+
+    Examples
+    --------
+    >>> heading_candidates("Cu mg/L")[-1], heading_candidates("Charge g (dry)")[-1]
+    (('Cu', 'mg/L'), ('Charge', 'g'))
+    """
+    text = plain_text(heading)
+    name, spelling = split_heading(text)
+    found: list[tuple[str, str | None]] = [(name, spelling)]
+    extra = ""
+    if spelling is not None and not is_spelling(spelling.partition(" ")[0]):
+        extra = spelling
+    bare = name if extra else text
+    parts = [*_unit_at_the_end(bare)]
+    if extra and extra.casefold() not in _NOT_DRY:
+        found += [(f"{n} {extra}", s) for n, s in parts] + parts
+    elif extra:
+        found += [(f"{n} {extra}", s) for n, s in parts]
+    else:
+        found += parts
+    against = [(re.sub(r"\s+(?:vs\.?|against)\s.*$", "", n), s) for n, s in found]
+    return list(dict.fromkeys([*found, *against]))
+
+
+_NOT_DRY = ("wet", "as received", "ar", "moist", "wmt")
+
+
+def _unit_at_the_end(text: str) -> list[tuple[str, str | None]]:
+    """A unit without brackets: behind the last space, comma or underscore."""
+    found: list[tuple[str, str | None]] = []
+    spaced = re.sub(r"_per_", "/", text)
+    for separator in (" ", ", ", "_"):
+        words = spaced.split(separator)
+        for count in (2, 1):
+            if len(words) <= count:
+                continue
+            unit = " ".join(words[-count:])
+            if is_spelling(unit):
+                found.append((separator.join(words[:-count]).strip(" ,_"), unit))
+    if spaced.endswith("%") and len(spaced) > 1:
+        found.append((spaced[:-1].strip(), "%"))
+    if spaced.startswith("% ") or re.match(r"%[A-Z]", spaced):
+        found.append((spaced[1:].strip(), "%"))
+    return found
 
 
 def _names_of(field: Field) -> tuple[str, ...]:
     return (split_heading(field.heading)[0], *field.names)
 
 
-def _meaning(
-    name: str, by_name: Mapping[str, Field], families: Sequence[Family]
-) -> tuple[str, str, tuple[str, ...]] | None:
-    field = by_name.get(_folded(name))
-    if field is not None:
-        return field.key, field.heading, field.units
-    for family in families:
-        match = re.fullmatch(family.pattern, " ".join(name.split()))
-        if match and _symbols_known(match):
-            named = match.group(0) if "whole" in match.groupdict() else match.group(1)
-            return f"{family.key}:{named}", family.heading.format(named), family.units
-    return None
+def _fits(spelling: str | None, units: tuple[str, ...]) -> bool:
+    if not units or units == ("",):
+        return spelling is None
+    if spelling is None:
+        return False
+    for unit in units:
+        try:
+            convert(1.0, spelling, unit)
+        except UnitError:
+            continue
+        return True
+    return False
 
 
 def _symbols_known(match: re.Match[str]) -> bool:
@@ -148,83 +440,3 @@ def _symbols_known(match: re.Match[str]) -> bool:
         text for key, text in match.groupdict().items() if key in ("analyte", "formula") and text
     )
     return set(re.findall(r"[A-Z][a-z]?", named)) <= ELEMENTS
-
-
-def _use(
-    sheet: Sheet, position: int, spelling: str | None, units: tuple[str, ...], example: str
-) -> tuple[Use | None, Problem | None]:
-    heading = sheet.header[position]
-    if not units or units == ("",):
-        return Use(position, heading, "", ""), None
-    if not spelling:
-        accepted = ", ".join(s for unit in units for s in known_spellings(unit)[:6])
-        problem = Problem(
-            sheet.file,
-            sheet.header_row,
-            heading,
-            "stop",
-            "the heading has no unit",
-            accepted,
-            f'write it as "{example}"',
-        )
-        return None, problem
-    errors = []
-    for target in units:
-        try:
-            convert(1.0, spelling, target)
-        except UnitError as error:
-            errors.append(error)
-            continue
-        return Use(position, heading, spelling, target), None
-    where = {"file": sheet.file, "column": heading}
-    return None, unit_problem(errors[0], row=sheet.header_row, **where)
-
-
-def _keyed(key: str, use: Use, units: tuple[str, ...]) -> str:
-    """Where a family takes two kinds of unit, the second kind has its own key."""
-    return f"{key}@{use.target}" if len(units) > 1 else key
-
-
-def _twice(sheet: Sheet, heading: str, first: str) -> Problem:
-    return Problem(
-        sheet.file,
-        sheet.header_row,
-        heading,
-        "stop",
-        f"it means the same as column {first!r}",
-        "each quantity in one column",
-        "begin one of the headings with 'note' to keep it out",
-    )
-
-
-def _unknown(
-    sheet: Sheet, heading: str, fields: Sequence[Field], families: Sequence[Family]
-) -> Problem:
-    known = [field.heading for field in fields]
-    known += [family.heading.format(name) for family in families for name in family.examples]
-    near = nearest_names(heading, known)
-    keep_out = f"begin it with 'note' to keep it out: \"note {heading}\""
-    hint = f"did you mean {' or '.join(near)}? Or {keep_out}" if near else keep_out
-    found = f"unknown column {heading!r}"
-    return Problem(sheet.file, sheet.header_row, heading, "stop", found, ", ".join(known), hint)
-
-
-def _not_there(sheet: Sheet, fields: Sequence[Field], uses: Mapping[str, Use]) -> list[Problem]:
-    if not sheet.header:
-        return []
-    written = {_folded(split_heading(heading)[0]) for heading in sheet.header}
-    return [
-        Problem(
-            sheet.file,
-            sheet.header_row,
-            "",
-            "stop",
-            f"there is no column {field.heading!r}",
-            ", ".join(f.heading for f in fields if f.needed),
-            f'add a column "{field.heading}"',
-        )
-        for field in fields
-        if field.needed
-        and field.key not in uses
-        and not any(_folded(name) in written for name in _names_of(field))
-    ]

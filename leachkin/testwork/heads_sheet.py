@@ -12,12 +12,12 @@ from leachkin.files import Sheet
 from leachkin.problems import Problem, unknown_name
 from leachkin.testwork.cells import CellReader
 from leachkin.testwork.columns import FORMULA, Family, Field, of_family, resolve_columns
-from leachkin.testwork.names import fold_name
+from leachkin.testwork.names import TEST_NAMES, fold_name
 from leachkin.testwork.records import Array, Head
 from leachkin.testwork.settings import TestworkSettings
 
 FIELDS = (
-    Field("test", "test", names=("test id", "test no", "test name")),
+    Field("test", "test", names=TEST_NAMES),
     Field("domain", "domain", names=("ore", "ore type")),
     Field("lower", "size lower (mm)", ("mm",), ("lower size",)),
     Field("upper", "size upper (mm)", ("mm",), ("upper size", "top size")),
@@ -112,8 +112,8 @@ def read_heads_sheet(
         Replicates averaged. The standard deviation of a mean comes from its replicates where
         there are two or more that differ, and from the precision otherwise.
     """
-    uses = resolve_columns(sheet, FIELDS, FAMILIES, problems)
-    reader = CellReader(sheet, uses, problems)
+    uses = resolve_columns(sheet, FIELDS, FAMILIES, problems, settings, "heads")
+    reader = CellReader(sheet, uses, problems, settings.answers)
     analytes = of_family(uses, "assay")
     values = {name: found for name in analytes if (found := reader.assays(f"assay:{name}"))}
     groups = _grouped_rows(reader)

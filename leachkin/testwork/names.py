@@ -9,6 +9,11 @@ from typing import get_args
 from leachkin.problems import Problem, unknown_name
 from leachkin.testwork.records import AliquotPolicy
 
+#: Other headings of a column of test names.
+TEST_NAMES = (
+    "test id", "test no", "test name", "test number", "testno", "bottle", "bottle no",
+    "bottle id", "column no", "column id",
+)  # fmt: skip
 KINDS = ("bottle roll", "stirred tank", "column")
 POLICIES: tuple[AliquotPolicy, ...] = get_args(AliquotPolicy)
 _OTHER_POLICY_NAMES: dict[str, AliquotPolicy] = {
@@ -32,6 +37,18 @@ def fold_name(name: str) -> str:
     True
     """
     return re.sub(r"[\s_-]+", "", name.casefold())
+
+
+def is_test_heading(heading: str) -> bool:
+    """Return True for the heading of a column of test names.
+
+    Examples
+    --------
+    >>> is_test_heading("Test No."), is_test_heading("time (h)")
+    (True, False)
+    """
+    folded = fold_name(heading).strip(".:#")
+    return folded in {fold_name(name) for name in ("test", *TEST_NAMES)}
 
 
 def find_policy(text: str) -> AliquotPolicy | None:

@@ -18,8 +18,8 @@ from leachkin.testwork.records import Array, Exclusion, Head, History, Product, 
 from leachkin.testwork.recursion import solution_ledger
 from leachkin.testwork.settings import TestworkSettings
 from leachkin.testwork.sieves_sheet import SieveTable, read_sieves_sheet
-from leachkin.testwork.sizes import SizeDistribution
 from leachkin.testwork.tests_sheet import ROOM_TEMPERATURE_K, TestRow, read_tests_sheet
+from leachkin.testwork.written_sizes import sizes_of_row
 
 SHEETS = ("tests", "readings", "heads", "closeout", "sieves")
 
@@ -114,7 +114,8 @@ def _read_parts(
     closeout: Mapping[str, tuple[tuple[Product, ...], tuple[int, ...]]] = {}
     heads, sieves = Heads(), {}
     if "readings" in tables:
-        readings = read_readings_sheet(tables["readings"], settings, names, problems)
+        starts = {row.name: row.start for row in rows.values() if row.start}
+        readings = read_readings_sheet(tables["readings"], settings, names, problems, starts)
     if "closeout" in tables:
         closeout = read_closeout_sheet(tables["closeout"], settings, names, problems)
     if "heads" in tables:
@@ -130,11 +131,11 @@ def _test(row: TestRow, parts: _Parts, settings: TestworkSettings, problems: lis
     readings = parts.readings.get(row.name)
     products, closeout_rows = parts.closeout.get(row.name, ((), ()))
     table = parts.sieves.get(fold_name(row.name))
-    if table is None and row.size_mm is None:
+    if table is None and not row.has_size:
         table = parts.sieves.get(fold_name(row.domain)) or parts.sieves.get("")
     sizes = table.sizes if table is not None else None
-    if table is None and row.size_mm is not None:
-        sizes = SizeDistribution.from_classes(list(row.size_mm), [1.0])
+    if table is None and row.has_size:
+        sizes = sizes_of_row(row, settings, problems, parts.files["tests"])
     floor, proportional = settings.precision_of("residue")
     temperature = _temperature(row, readings, parts, problems)
     test = Test(
@@ -223,6 +224,7 @@ def _with_readings(
         free_reagent_g_per_L=readings.free_g_per_L.get(reagent or ""),
         added_g=readings.added_g,
         makeup_metal_g_per_L=readings.makeup_metal_g_per_L,
+        logged=readings.logged,
     )
     test = _start_strength(test, problems)
     ledger = solution_ledger(test)

@@ -11,26 +11,36 @@ from numpy.typing import NDArray
 from leachkin.files import Sheet
 from leachkin.problems import Problem
 from leachkin.testwork.cells import CellReader
-from leachkin.testwork.columns import ANALYTE, FORMULA, Family, Field, resolve_columns
-from leachkin.testwork.names import TestNames
+from leachkin.testwork.clock import with_hours
+from leachkin.testwork.columns import ANALYTE, ASSAYED, FORMULA, Family, Field, resolve_columns
+from leachkin.testwork.names import TEST_NAMES, TestNames, is_test_heading
 from leachkin.testwork.records import Array, Assays
 from leachkin.testwork.settings import TestworkSettings
 from leachkin.testwork.tests_sheet import likely_kelvin
+from leachkin.testwork.written_units import SHE_MV
 
 FIELDS = (
-    Field("test", "test", names=("test id", "test no", "test name"), needed=True),
-    Field("time", "time (h)", ("h",), ("elapsed time", "leach time"), needed=True),
-    Field("aliquot", "aliquot (mL)", ("mL",), ("sample volume", "aliquot volume")),
-    Field("makeup", "make-up (mL)", ("mL",), ("makeup volume", "replaced")),
+    Field("test", "test", names=TEST_NAMES, needed=True),
+    Field("time", "time (h)", ("h",), ("elapsed time", "leach time", "elapsed", "t"), needed=True),
+    Field(
+        "aliquot", "aliquot (mL)", ("mL",), ("sample volume", "aliquot volume", "sample", "aliq")
+    ),
+    Field("makeup", "make-up (mL)", ("mL",), ("makeup volume", "replaced", "topup", "top up")),
     Field("pH", "pH", ("",)),
-    Field("temperature", "temperature (degC)", ("K",)),
+    Field("temperature", "temperature (degC)", ("K",), ("temp", "t")),
+    Field("Eh", "Eh (mV)", (SHE_MV,), ("ORP", "redox", "redox potential", "potential")),
+    Field("DO", "DO (mg/L)", ("mg/L",), ("dissolved oxygen", "dissolved O2", "D.O.")),
 )
 FAMILIES = (
     Family("free", "free {} (g/L)", rf"free {FORMULA}", ("g/L",), ("H2SO4", "NaCN")),
     Family("added", "{} added (g)", rf"{FORMULA} added", ("g",), ("H2SO4", "NaCN", "CaO")),
     Family("made up", "{} in make-up (g/L)", rf"{ANALYTE} in make-?up", ("g/L",), ("Cu", "Au")),
-    Family("assay", "{} (g/L)", ANALYTE, ("g/L",), ("Cu", "Fe", "Zn", "Ni", "Co", "Au", "Ag")),
+    Family("assay", "{} (g/L)", ASSAYED, ("g/L",), ("Cu", "Fe", "Zn", "Ni", "Co", "Au", "Ag")),
 )
+
+
+_LARGEST_EH_MV = 2000.0  #: beyond it water does not stand
+_LOGGED = {"Eh": "Eh_mV_SHE", "DO": "DO_mg_per_L"}
 
 
 @dataclass(frozen=True)
@@ -47,6 +57,7 @@ class Readings:
     added_g: Mapping[str, Array]
     makeup_metal_g_per_L: Mapping[str, Array]
     rows: tuple[int, ...]
+    logged: Mapping[str, Array] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
@@ -58,7 +69,11 @@ class _Columns:
 
 
 def read_readings_sheet(
-    sheet: Sheet, settings: TestworkSettings, names: TestNames, problems: list[Problem]
+    sheet: Sheet,
+    settings: TestworkSettings,
+    names: TestNames,
+    problems: list[Problem],
+    starts: Mapping[str, str] | None = None,
 ) -> dict[str, Readings]:
     """Read the readings sheet.
 
@@ -71,16 +86,20 @@ def read_readings_sheet(
         The tests there are.
     problems : list of Problem
         Added to: unknown columns and tests, cells that are no numbers, times that go back.
+    starts : mapping of test name to str, optional
+        When each test started, for times written as dates or by the clock.
 
     Returns
     -------
     dict of test name to Readings
         Rows without a time, or with one before the row above, are left out.
     """
-    uses = resolve_columns(sheet, FIELDS, FAMILIES, problems)
+    test_position = next((i for i, h in enumerate(sheet.header) if is_test_heading(h)), None)
+    sheet = with_hours(sheet, test_position, starts or {}, settings.answers, problems)
+    uses = resolve_columns(sheet, FIELDS, FAMILIES, problems, settings, "readings")
     if not {"test", "time"} <= set(uses):
         return {}
-    reader = CellReader(sheet, uses, problems)
+    reader = CellReader(sheet, uses, problems, settings.answers)
     columns = _columns(reader, settings)
     groups = _rows_by_test(reader, names)
     reader.finish()
@@ -117,6 +136,11 @@ def _check(reader: CellReader, numbers: dict[str, Array]) -> None:
             for i in np.flatnonzero(~np.isnan(values)):
                 values[i] = likely_kelvin(float(values[i]), reader, key, int(i))
             wrong = values <= 0.0
+        elif key == "Eh":
+            wrong = np.abs(values) > _LARGEST_EH_MV
+            reader.flag(
+                key, wrong, f"within {_LARGEST_EH_MV:g} mV of SHE", "look at the unit", "ask"
+            )
         else:
             wrong = values < 0.0
             reader.flag(key, wrong, "a number from 0 up")
@@ -190,6 +214,7 @@ def _readings(rows: NDArray[np.int64], columns: _Columns, reader: CellReader) ->
         added_g=_family(numbers, "added"),
         makeup_metal_g_per_L=_family(numbers, "made up"),
         rows=row_numbers,
+        logged={name: numbers[key] for key, name in _LOGGED.items() if key in numbers},
     )
 
 

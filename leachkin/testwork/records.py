@@ -179,6 +179,9 @@ class Test:
     exclusions : tuple of Exclusion
     files : mapping of str to str
         File that each kind of row came from: "tests", "readings", "closeout".
+    logged : mapping of str to ndarray, shape (m,)
+        What else was read at the times of the test, by name with its unit: "Eh_mV_SHE",
+        "DO_mg_per_L".
     """
 
     __test__ = False  # not a test case for pytest
@@ -213,6 +216,7 @@ class Test:
     sizes_by_analyte: Mapping[str, SizeDistribution] = field(default_factory=dict)
     exclusions: tuple[Exclusion, ...] = ()
     files: Mapping[str, str] = field(default_factory=dict)
+    logged: Mapping[str, Array] = field(default_factory=dict)
 
     @property
     def is_excluded(self) -> bool:

@@ -9,6 +9,7 @@ import numpy as np
 
 from leachkin.errors import UnitError
 from leachkin.problems import argument_error
+from leachkin.testwork.answers import Answers
 from leachkin.testwork.records import Array, Exclusion
 from leachkin.units import parse_quantity
 
@@ -53,6 +54,8 @@ class TestworkSettings:
         The proportional part of "head" is also the scatter of one charge's head about the mean.
     exclusions : tuple of Exclusion
     limits : BalanceLimits
+    answers : Answers
+        What the user has answered about how the sheets are written.
     """
 
     __test__ = False  # not a test case for pytest
@@ -62,6 +65,7 @@ class TestworkSettings:
     precision: Mapping[str, tuple[float, float]]
     exclusions: tuple[Exclusion, ...] = ()
     limits: BalanceLimits = field(default_factory=BalanceLimits)
+    answers: Answers = field(default_factory=Answers)
 
     def __post_init__(self) -> None:
         for kind in PRECISION_KINDS:

@@ -11,19 +11,19 @@ from leachkin.errors import InputProblems
 from leachkin.files import Sheet
 from leachkin.problems import Problem
 from leachkin.testwork.cells import CellReader
-from leachkin.testwork.columns import ANALYTE, Family, Field, of_family, resolve_columns
-from leachkin.testwork.names import fold_name
+from leachkin.testwork.columns import ASSAYED, Family, Field, of_family, resolve_columns
+from leachkin.testwork.names import TEST_NAMES, fold_name
 from leachkin.testwork.records import Array
 from leachkin.testwork.settings import TestworkSettings
 from leachkin.testwork.sizes import SizeDistribution
 
 FIELDS = (
-    Field("test", "test", names=("test id", "test no", "test name")),
+    Field("test", "test", names=TEST_NAMES),
     Field("domain", "domain", names=("ore", "ore type", "domain or test")),
     Field("aperture", "aperture (mm)", ("mm",), ("sieve", "size"), needed=True),
     Field("retained", "retained (g)", ("g",), ("mass retained",), needed=True),
 )
-FAMILIES = (Family("assay", "{} (%)", ANALYTE, ("kg/t",), ("Cu", "Zn", "Au", "Ag")),)
+FAMILIES = (Family("assay", "{} (%)", ASSAYED, ("kg/t",), ("Cu", "Zn", "Au", "Ag")),)
 
 
 @dataclass(frozen=True)
@@ -52,10 +52,12 @@ def read_sieves_sheet(
     dict of folded test or domain name to SieveTable
         "" for a table that names neither.
     """
-    uses = resolve_columns(sheet, FIELDS, FAMILIES, problems)
+    uses = resolve_columns(sheet, FIELDS, FAMILIES, problems, settings, "sieves")
     if not {"aperture", "retained"} <= set(uses):
         return {}
-    reader = CellReader(_pan_as_zero(sheet, uses["aperture"].position), uses, problems)
+    reader = CellReader(
+        _pan_as_zero(sheet, uses["aperture"].position), uses, problems, settings.answers
+    )
     aperture, retained = reader.numbers("aperture"), reader.numbers("retained")
     assays = {
         name: found[0]

@@ -9,24 +9,45 @@ import numpy as np
 
 from leachkin.constants import ZERO_CELSIUS_K
 from leachkin.files import Sheet
-from leachkin.problems import Problem, unknown_name
-from leachkin.testwork.cells import CellReader
+from leachkin.problems import Level, Problem, unknown_name
+from leachkin.testwork.cells import CellReader, code_meanings
 from leachkin.testwork.columns import ANALYTE, FORMULA, Family, Field, of_family, resolve_columns
-from leachkin.testwork.names import KINDS, POLICIES, TestNames, find_policy
+from leachkin.testwork.names import KINDS, POLICIES, TEST_NAMES, TestNames, find_policy
 from leachkin.testwork.records import AliquotPolicy, Array
 from leachkin.testwork.settings import TestworkSettings
+from leachkin.testwork.written_sizes import SizeProblem, WrittenSize, read_size
+from leachkin.testwork.written_units import known_meshes
 
 FIELDS = (
-    Field("test", "test", names=("test id", "test no", "test name"), needed=True),
-    Field("domain", "domain", names=("ore", "ore type")),
-    Field("kind", "kind", names=("test kind", "type")),
-    Field("solids", "dry solids (g)", ("g",), ("solids dry", "dry mass", "dry charge"), True),
-    Field("solution", "solution (mL)", ("mL",), ("solution volume",), True),
+    Field("test", "test", names=TEST_NAMES, needed=True),
+    Field("domain", "domain", names=("ore", "ore type", "sample", "composite", "lithology")),
+    Field("kind", "kind", names=("test kind", "type", "test type")),
+    Field(
+        "solids",
+        "dry solids (g)",
+        ("g",),
+        ("solids dry", "dry mass", "dry charge", "charge dry", "charge", "solids", "mass dry"),
+        True,
+    ),
+    Field(
+        "wet",
+        "wet solids (g)",
+        ("g",),
+        ("wet mass", "wet charge", "charge wet", "solids wet", "mass wet", "charge as received"),
+    ),
+    Field("moisture", "moisture (%)", ("1",), ("moisture content", "ore moisture")),
+    Field("solution", "solution (mL)", ("mL",), ("solution volume", "soln", "volume"), True),
+    Field("solids share", "solids (%)", ("1",), ("pulp density", "pulp solids")),
     Field("lower", "size lower (mm)", ("mm",), ("lower size",)),
     Field("upper", "size upper (mm)", ("mm",), ("upper size", "top size")),
-    Field("temperature", "temperature (degC)", ("K",)),
-    Field("aliquots", "aliquots", names=("aliquot policy",)),
-    Field("stirring", "stirring (rpm)", ("rpm",), ("stirring speed",)),
+    Field(
+        "size", "size (mm)", names=("size fraction", "particle size", "crush size"), in_words=True
+    ),
+    Field("P80", "P80 (um)", names=("K80", "F80", "80 % passing"), in_words=True),
+    Field("temperature", "temperature (degC)", ("K",), ("temp", "t")),
+    Field("start", "started", names=("start", "start time", "start date", "date started")),
+    Field("aliquots", "aliquots", names=("aliquot policy", "aliquot")),
+    Field("stirring", "stirring (rpm)", ("rpm",), ("stirring speed", "rolling speed", "agitation")),
 )
 FAMILIES = (
     Family("start", "start {} (g/L)", rf"start {FORMULA}", ("g/L",), ("H2SO4", "NaCN")),
@@ -60,6 +81,14 @@ class TestRow:
     aliquots: AliquotPolicy | None
     start_metal_g_per_L: Mapping[str, float]
     row: int
+    single_mm: float | None = None
+    p80_mm: float | None = None
+    start: str = ""
+
+    @property
+    def has_size(self) -> bool:
+        """True where the row says a size of some kind."""
+        return any(s is not None for s in (self.size_mm, self.single_mm, self.p80_mm))
 
 
 def read_tests_sheet(
@@ -79,15 +108,18 @@ def read_tests_sheet(
     dict of test name to TestRow
         Tests without dry solids or solution are left out, with a stop.
     """
-    uses = resolve_columns(sheet, FIELDS, FAMILIES, problems)
-    if not {"test", "solids", "solution"} <= set(uses):
+    found_problems: list[Problem] = []
+    uses = resolve_columns(sheet, FIELDS, FAMILIES, found_problems, settings, "tests")
+    problems.extend(p for p in found_problems if not _stands_otherwise(p, set(uses)))
+    charged = {"solids", "wet"} & set(uses)
+    if "test" not in uses or not charged or not {"solution", "solids share"} & set(uses):
         return {}
-    reader = CellReader(sheet, uses, problems)
+    reader = CellReader(sheet, uses, problems, settings.answers)
     columns = _columns(reader, settings)
     found: dict[str, TestRow] = {}
     for i, name in enumerate(reader.texts("test")):
         if _name_is_good(name, found, sheet, i, problems):
-            row = _row(i, name, reader, columns)
+            row = _row(i, name, reader, columns, settings)
             if row is not None:
                 found[name] = row
     reader.finish()
@@ -95,15 +127,34 @@ def read_tests_sheet(
     return found
 
 
+def _stands_otherwise(problem: Problem, keys: set[str]) -> bool:
+    """Whether a column that is not there can be worked out from others."""
+    instead = {"'dry solids (g)'": "wet", "'solution (mL)'": "solids share"}
+    return any(
+        key in keys and problem.found == f"there is no column {name}"
+        for name, key in instead.items()
+    )
+
+
 def _columns(reader: CellReader, settings: TestworkSettings) -> dict[str, Array]:
     """The numeric columns by key, NaN where there is none, checked against what has meaning."""
     absent = np.full(len(reader.sheet.rows), np.nan)
-    keys = ["solids", "solution", "lower", "upper", "temperature", "stirring"]
+    keys = ["solids", "wet", "moisture", "solution", "solids share", "lower", "upper"]
+    keys += ["temperature", "stirring"]
     columns = {key: _or_absent(reader.numbers(key), absent) for key in keys}
-    for key in ("solids", "solution", "lower", "upper"):
+    for key in ("solids", "wet", "solution", "lower", "upper"):
         if key in reader.uses:
             reader.flag(key, columns[key] <= 0.0, "a number above 0")
             columns[key][columns[key] <= 0.0] = np.nan
+    for key, allowed in (
+        ("moisture", "0 to below 100 %"),
+        ("solids share", "above 0, below 100 %"),
+    ):
+        if key in reader.uses:
+            wrong = (columns[key] < 0.0) | (columns[key] >= 1.0)
+            wrong |= (columns[key] <= 0.0) & (key != "moisture")
+            reader.flag(key, wrong, allowed, "look at the unit")
+            columns[key][wrong] = np.nan
     reagents = of_family(reader.uses, "start")
     chosen = settings.reagent if settings.reagent in reagents else None
     if settings.reagent is None and len(reagents) == 1:
@@ -162,28 +213,40 @@ def _name_is_good(
     return True
 
 
-def _row(i: int, name: str, reader: CellReader, columns: Mapping[str, Array]) -> TestRow | None:
+def _row(
+    i: int,
+    name: str,
+    reader: CellReader,
+    columns: Mapping[str, Array],
+    settings: TestworkSettings,
+) -> TestRow | None:
     number = reader.sheet.rows[i].number
-    if not _charge_is_there(i, reader, columns):
+    charge = _charge(i, reader, columns)
+    if charge is None:
         return None
     metals = of_family(reader.uses, "start metal")
+    size = _size(i, reader, columns, settings)
+    reagent = _or_none(columns["reagent"][i])
     return TestRow(
         name=name,
         domain=reader.texts("domain")[i] or DEFAULT_DOMAIN,
         kind=_kind(reader.texts("kind")[i], reader, number),
-        solids_g=float(columns["solids"][i]),
-        solution_mL=float(columns["solution"][i]),
-        size_mm=_size(i, reader, columns),
+        solids_g=charge.solids_g,
+        solution_mL=charge.solution_mL,
+        size_mm=size.pair_mm,
         temperature_K=_temperature(i, reader, columns),
-        reagent_g_per_L=_or_none(columns["reagent"][i]),
+        reagent_g_per_L=None if reagent is None else reagent * charge.dilution,
         stirring_rpm=_or_none(columns["stirring"][i]),
         aliquots=_policy(reader.texts("aliquots")[i], reader, number),
         start_metal_g_per_L={
-            metal: value
+            metal: value * charge.dilution
             for metal in metals
             if (value := _or_none(columns[f"start metal:{metal}"][i])) is not None
         },
         row=number,
+        single_mm=size.single_mm,
+        p80_mm=size.p80_mm,
+        start=reader.texts("start")[i],
     )
 
 
@@ -191,24 +254,76 @@ def _or_none(value: float) -> float | None:
     return None if np.isnan(value) else float(value)
 
 
-def _charge_is_there(i: int, reader: CellReader, columns: Mapping[str, Array]) -> bool:
-    good = True
-    for key, what in (("solids", "dry solids"), ("solution", "solution")):
-        if np.isnan(columns[key][i]):
-            good = False
-            if not reader.texts(key)[i]:
-                reader.problems.append(
-                    Problem(
-                        reader.sheet.file,
-                        reader.sheet.rows[i].number,
-                        reader.uses[key].heading,
-                        "stop",
-                        f"the {what} are missing" if key == "solids" else f"the {what} is missing",
-                        "a number above 0",
-                        "dry mass, not as received" if key == "solids" else "the starting volume",
-                    )
-                )
-    return good
+@dataclass(frozen=True)
+class _Charge:
+    """Dry solids and solution of a test; what came with wet ore dilutes what was added."""
+
+    solids_g: float
+    solution_mL: float
+    dilution: float = 1.0
+
+
+def _charge(i: int, reader: CellReader, columns: Mapping[str, Array]) -> _Charge | None:
+    solids, water = _dry_solids(i, reader, columns)
+    solution = float(columns["solution"][i])
+    share = float(columns["solids share"][i])
+    if np.isnan(solution) and not np.isnan(share + solids):
+        solution, water = solids * (1.0 - share) / share, 0.0
+        found = f"the solution is worked out from {100 * share:g} % solids: {solution:.5g} mL"
+        where = (reader.sheet.file, reader.sheet.rows[i].number, "solution (mL)")
+        reader.problems.append(Problem(*where, "note", f"{found}, at 1 g/mL"))
+    if np.isnan(solids) or np.isnan(solution):
+        _say_what_is_missing(i, reader, np.isnan(solids), np.isnan(solution))
+        return None
+    return _Charge(solids, solution + water, solution / (solution + water))
+
+
+def _dry_solids(i: int, reader: CellReader, columns: Mapping[str, Array]) -> tuple[float, float]:
+    """Dry solids [g] and the water that came with them [mL]."""
+    dry, wet, moisture = (float(columns[key][i]) for key in ("solids", "wet", "moisture"))
+    if np.isnan(wet):
+        return dry, 0.0
+    where = (reader.sheet.file, reader.sheet.rows[i].number, reader.uses["wet"].heading)
+    if not np.isnan(dry):
+        return dry, max(wet - dry, 0.0)
+    if np.isnan(moisture):
+        reader.problems.append(
+            Problem(
+                *where,
+                "ask",
+                f"{wet:g} g wet and no moisture; taken as dry meanwhile, which reads heads high "
+                "and extraction low",
+                "the dry mass, or the moisture in per cent of the wet mass",
+                'add a column "moisture (%)" or "dry solids (g)"',
+            )
+        )
+        return wet, 0.0
+    dry = wet * (1.0 - moisture)
+    found = f"charge {wet:g} g with {100 * moisture:g} % moisture: dry {dry:.1f} g used, and "
+    found += f"{wet - dry:.1f} mL of water joins the solution"
+    reader.problems.append(Problem(*where, "note", found))
+    return dry, wet - dry
+
+
+def _say_what_is_missing(i: int, reader: CellReader, solids: bool, solution: bool) -> None:
+    for key, missing, what in (
+        ("solids", solids, "the dry solids are missing"),
+        ("solution", solution, "the solution is missing"),
+    ):
+        if not missing or reader.texts(key)[i]:
+            continue
+        use = reader.uses.get(key)
+        reader.problems.append(
+            Problem(
+                reader.sheet.file,
+                reader.sheet.rows[i].number,
+                use.heading if use is not None else "",
+                "stop",
+                what,
+                "a number above 0",
+                "dry mass, not as received" if key == "solids" else "the starting volume",
+            )
+        )
 
 
 def _kind(text: str, reader: CellReader, number: int) -> str:
@@ -240,7 +355,36 @@ def _policy(text: str, reader: CellReader, number: int) -> AliquotPolicy | None:
     return policy
 
 
-def _size(i: int, reader: CellReader, columns: Mapping[str, Array]) -> tuple[float, float] | None:
+def _size(
+    i: int, reader: CellReader, columns: Mapping[str, Array], settings: TestworkSettings
+) -> WrittenSize:
+    pair = _sieve_pair(i, reader, columns)
+    if pair is not None:
+        return WrittenSize(pair_mm=pair)
+    for key in ("size", "P80"):
+        text = reader.texts(key)[i]
+        if not text or text.casefold() in code_meanings():
+            continue
+        use = reader.uses[key]
+        if reader.sheet.decimal == ",":
+            text = text.replace(",", ".")
+        try:
+            return read_size(text, use.spelling, settings.answers, key == "P80")
+        except SizeProblem as fault:
+            level: Level = "ask" if fault.paste or "top size" in fault.found else "stop"
+            where = (reader.sheet.file, reader.sheet.rows[i].number, use.heading)
+            words = (fault.found, fault.allowed, fault.try_this, fault.paste)
+            reader.problems.append(Problem(*where, level, *words))
+    return WrittenSize()
+
+
+def _sieve_pair(
+    i: int, reader: CellReader, columns: Mapping[str, Array]
+) -> tuple[float, float] | None:
+    for key in ("lower", "upper"):
+        use = reader.uses.get(key)
+        if use is not None and use.series and np.isnan(columns[key][i]) and reader.texts(key)[i]:
+            reader.problems.append(_no_such_mesh(i, reader, key))
     lower, upper = float(columns["lower"][i]), float(columns["upper"][i])
     if np.isnan(lower) or np.isnan(upper):
         return None
@@ -258,6 +402,19 @@ def _size(i: int, reader: CellReader, columns: Mapping[str, Array]) -> tuple[flo
         )
     )
     return None
+
+
+def _no_such_mesh(i: int, reader: CellReader, key: str) -> Problem:
+    series = reader.uses[key].series
+    return Problem(
+        reader.sheet.file,
+        reader.sheet.rows[i].number,
+        reader.uses[key].heading,
+        "stop",
+        f"{reader.texts(key)[i]!r} is no mesh of the {series} series",
+        ", ".join(known_meshes(series)),
+        "write the aperture in mm under (mm)",
+    )
 
 
 def _temperature(i: int, reader: CellReader, columns: Mapping[str, Array]) -> float | None:
