@@ -13,6 +13,7 @@ Kind = Literal[
     "text",
     "texts",
     "choice",
+    "choices",
     "boolean",
     "integer",
     "number",

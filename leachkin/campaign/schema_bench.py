@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from leachkin.campaign.schema import COLDEST_K, HOTTEST_K, Key, TableSchema
+from leachkin.kinetics import DRIVES, TERM_OPTIONS
 
 CAMPAIGN = TableSchema(
     "campaign",
@@ -61,6 +62,12 @@ PRECISION = TableSchema(
     ),
 )
 
+_RESISTANCES = (
+    ("film", "the liquid film"),
+    ("ash_layer", "the ash layer"),
+    ("chemical", "the chemical step"),
+)
+
 FIT = TableSchema(
     "fit",
     "How the tests are fitted.",
@@ -92,7 +99,7 @@ FIT = TableSchema(
             "Ultimate extraction",
             default="by size",
             why="sizes may lock up different shares",
-            choices=("by size", "one"),
+            choices=("by size", "by temperature", "one"),
             above=0.0,
             at_most=1.0,
         ),
@@ -114,6 +121,56 @@ FIT = TableSchema(
             high=1.2,
             choices=("free",),
             at_least=0.0,
+            at_most=3.0,
+        ),
+        *(
+            Key(
+                f"order_{kind}",
+                "choice or number",
+                f"Order in the reagent of {name} alone; the others then have their own too",
+                choices=("free",),
+                at_least=0.0,
+                at_most=3.0,
+            )
+            for kind, name in _RESISTANCES
+        ),
+        Key(
+            "drive",
+            "choice",
+            "What advances the clock: a power of the reagent, two reagents (A^a B^b), either of "
+            "two (A B/(A + q B)), oxidised to reduced, pH, or a power near a solubility",
+            choices=DRIVES,
+        ),
+        Key("second", "text", "Column of the second reagent of the drive; O2 where left out"),
+        Key("oxidised", "text", "Column of the oxidised species; Fe3+ where left out"),
+        Key("reduced", "text", "Column of the reduced species; Fe2+ where left out"),
+        Key(
+            "terms",
+            "choices",
+            "Optional terms in the law: a lag, a share that dissolves at once, a fade of the rate, "
+            "a loss from solution",
+            choices=("lag", "soluble", "fade", "loss"),
+        ),
+        Key(
+            "try_terms",
+            "choices",
+            "Further terms whose need is tested; all but the slow fraction where left out",
+            choices=tuple(TERM_OPTIONS),
+        ),
+        Key(
+            "reagent_history",
+            "choice",
+            "Strength where nobody titrated: held at the start, or by its balance with metal and "
+            "gangue",
+            choices=("held", "balance"),
+        ),
+        Key("slow_law", "law", "Law of a second, slower fraction of the leachable metal"),
+        Key(
+            "spread",
+            "choice or number",
+            "Spread of sizes within a test that has only its P80: standard deviation over mean",
+            choices=("free",),
+            above=0.0,
             at_most=3.0,
         ),
     ),

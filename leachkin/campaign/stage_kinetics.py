@@ -6,12 +6,14 @@ from collections.abc import Sequence
 from typing import Any
 
 from leachkin.campaign.campaign import Campaign
+from leachkin.campaign.fit_balances import fit_balances
 from leachkin.campaign.printed_law import law_from_print
 from leachkin.campaign.settings import Settings
 from leachkin.campaign.sheets import exclusions
 from leachkin.campaign.stage_results import KineticsStage
 from leachkin.errors import InputProblems, LeachkinError
 from leachkin.kinetics import (
+    DriveForm,
     FitResult,
     Ranking,
     Reference,
@@ -151,9 +153,14 @@ def _fitted(campaign: Campaign, key: str, tests: Sequence[Observed], level: floa
                 )
             ]
         )
-    ranking = rank_tests(tests, **fit_options(campaign.settings, level))
+    balances = fit_balances(campaign, key.rpartition("/")[2])
+    options = {
+        **fit_options(campaign.settings, level),
+        **({"balances": balances} if balances else {}),
+    }
+    ranking = rank_tests(tests, **options)
     fit = carried(ranking)
-    two_step, notes = _two_step(tests, fit, fit_options(campaign.settings, level))
+    two_step, notes = _two_step(tests, fit, options)
     return KineticsStage(
         key,
         fit.law,
@@ -187,11 +194,30 @@ def fit_options(settings: Settings, level: float) -> dict[str, Any]:
         "laws": settings.get("fit.laws"),
         "ultimate": settings.get("fit.ultimate"),
         "size_exponents": settings.get("fit.size_exponents"),
-        "reagent_order": settings.get("fit.reagent_order"),
+        "reagent_order": _orders(settings),
+        "drive": _drive(settings),
+        "terms": settings.get("fit.terms"),
+        "slow_law": settings.get("fit.slow_law"),
+        "spread": settings.get("fit.spread"),
         "reference": _reference(settings),
         "level": level,
     }
     return {name: value for name, value in options.items() if value is not None}
+
+
+def _orders(settings: Settings) -> Any:
+    """Return one order for all resistances, or one each where any has its own."""
+    own = {kind: settings.get(f"fit.order_{kind}") for kind in ("film", "ash_layer", "chemical")}
+    given = {kind: order for kind, order in own.items() if order is not None}
+    return given or settings.get("fit.reagent_order")
+
+
+def _drive(settings: Settings) -> DriveForm | None:
+    kind = settings.get("fit.drive")
+    if kind is None:
+        return None
+    names = {role: settings.get(f"fit.{role}") for role in ("second", "oxidised", "reduced")}
+    return DriveForm(kind, {role: name for role, name in names.items() if name})
 
 
 def _reference(settings: Settings) -> Reference | None:

@@ -148,6 +148,10 @@ def _choice(key: Key, raw: Any, loose: bool) -> str:
     raise _stop(f"{raw!r}", ", ".join(repr(choice) for choice in key.choices), hint)
 
 
+def _choices(key: Key, raw: Any, loose: bool) -> tuple[str, ...]:
+    return tuple(_choice(key, item, loose) for item in _items(key, raw, loose))
+
+
 def _boolean(key: Key, raw: Any, loose: bool) -> bool:
     if isinstance(raw, bool):
         return raw
@@ -263,6 +267,7 @@ _READERS: dict[str, Callable[[Key, Any, bool], Any]] = {
     "law": _law,
     "laws": _laws,
     "choice": _choice,
+    "choices": _choices,
     "boolean": _boolean,
     "integer": _integer,
     "number": _number,

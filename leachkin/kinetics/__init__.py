@@ -14,7 +14,7 @@ from leachkin.kinetics.arrhenius_two_step import (
 )
 from leachkin.kinetics.box import DataBox
 from leachkin.kinetics.demand import ReagentDemand
-from leachkin.kinetics.drive import Drive, DriveForm, ln_drive
+from leachkin.kinetics.drive import DRIVES, Drive, DriveForm, ln_drive
 from leachkin.kinetics.evidence import Evidence, EvidenceLine, gather_evidence, stirring_power
 from leachkin.kinetics.fit_curve import fit_curve, straightened_time
 from leachkin.kinetics.fit_layout import Layout, Quantity
@@ -100,6 +100,7 @@ __all__ = [
     "GangueReadings",
     "fit_gangue",
     "DEFAULT_LAWS",
+    "DRIVES",
     "Drive",
     "DriveForm",
     "ln_drive",

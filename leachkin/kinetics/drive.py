@@ -49,6 +49,7 @@ READS: dict[str, tuple[str, ...]] = {
     "acidity": ("pH",),
     "solubility": ("reagent", "metal"),
 }
+DRIVES: tuple[str, ...] = tuple(READS)
 #: Parameters of each form, beyond the reagent order that power, two_reagents, acidity and
 #: solubility share.
 PARAMETERS: dict[str, tuple[str, ...]] = {

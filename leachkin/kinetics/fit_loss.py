@@ -26,9 +26,16 @@ CUTS = 6
 
 @dataclass(frozen=True)
 class Loss:
-    """The readings of each test, refined so that the loss can be followed between them."""
+    """The readings of every test, refined so that the loss can be followed between them.
 
-    parts: tuple[slice, ...]
+    Attributes
+    ----------
+    reading : ndarray of int, shape (steps, tests)
+        Reading at the end of each step; a shorter test stands still at its last one.
+    hours : ndarray, shape (steps, tests)
+    """
+
+    reading: NDArray[np.intp]
     hours: Array
 
     @staticmethod
@@ -45,55 +52,65 @@ class Loss:
 
     @classmethod
     def of(cls, tests: Sequence[Observed]) -> Loss:
-        """Lay out refined tests one behind the other."""
-        ends = np.cumsum([0, *(o.time_h.size for o in tests)])
-        parts = tuple(slice(int(a), int(b)) for a, b in pairwise(ends))
-        return cls(parts, np.concatenate([np.diff(o.time_h, prepend=0.0) for o in tests]))
+        """Lay out refined tests side by side."""
+        sizes = [o.time_h.size for o in tests]
+        firsts = np.cumsum([0, *sizes])
+        step = np.arange(max(sizes))[:, None]
+        reading = firsts[:-1] + np.minimum(step, np.array(sizes) - 1)
+        hours = np.concatenate([np.diff(o.time_h, prepend=0.0) for o in tests])[reading]
+        return cls(
+            reading.astype(np.intp), np.where(step < np.array(sizes), hours, 0.0), firsts[-1]
+        )
 
     def net(self, layout: Layout, full: Array, extraction: Array) -> Array:
         """Return the extraction less the loss, shape B + (M,)."""
-        return self._march(layout, full, extraction, None)[0]
+        capacity, rate = (value[..., None] for value in _natural(layout, full))
+        net, lost, before = np.empty_like(extraction), np.zeros(()), np.zeros(())
+        for at, hours in zip(self.reading, self.hours, strict=True):
+            now = extraction[..., at]
+            lost = loss_step(lost, 0.5 * (before + now), capacity, rate * hours)[0]
+            net[..., at], before = now - lost, now
+        return net
 
     def net_and_gradient(
         self, layout: Layout, full: Array, extraction: Array, gradient: Array
     ) -> tuple[Array, Array]:
         """Return the net extraction and its derivatives by the free quantities."""
-        net, slope = self._march(layout, full, extraction, gradient)
-        return net, gradient if slope is None else slope
-
-    def _march(
-        self, layout: Layout, full: Array, extraction: Array, gradient: Array | None
-    ) -> tuple[Array, Array | None]:
-        places = [layout.position("loss", name) for name in ("capacity", "rate")]
-        capacity, rate = (layout.natural(full, place) for place in places)
-        net = np.array(extraction)
-        slope = None if gradient is None else np.array(gradient)
-        own = np.zeros((*full.shape[:-1], 2, 0 if gradient is None else gradient.shape[-1]))
-        for i, place in enumerate(places if gradient is not None else []):
-            quantity = layout.quantities[place]
-            column = [j for j, q in enumerate(layout.free) if q.name == quantity.name]
-            own[..., i, column] = np.asarray(natural_slope(quantity.scale, full[..., place]))[
-                ..., None
-            ]
-        for part in self.parts:
-            lost = np.zeros(full.shape[:-1])
-            by = np.zeros((*full.shape[:-1], own.shape[-1]))
-            before = np.zeros(full.shape[:-1])
-            before_by = np.zeros_like(by)
-            for m in range(part.start, part.stop):
-                now = extraction[..., m]
-                turns = rate * self.hours[m]
-                lost, slopes = loss_step(lost, 0.5 * (before + now), capacity, turns)
-                if gradient is not None and slope is not None:
-                    by_lost, by_dissolved, by_capacity, by_turns = (s[..., None] for s in slopes)
-                    by = (
-                        by_lost * by
-                        + by_dissolved * 0.5 * (before_by + gradient[..., m, :])
-                        + by_capacity * own[..., 0, :]
-                        + by_turns * self.hours[m] * own[..., 1, :]
-                    )
-                    slope[..., m, :] = gradient[..., m, :] - by
-                    before_by = gradient[..., m, :]
-                before = now
-                net[..., m] = now - lost
+        capacity, rate = (value[..., None] for value in _natural(layout, full))
+        by_own = _own_slopes(layout, full)
+        net, slope = np.empty_like(extraction), np.empty_like(gradient)
+        lost, before = np.zeros(()), np.zeros(())
+        by, before_by = np.zeros(()), np.zeros(())
+        for at, hours in zip(self.reading, self.hours, strict=True):
+            now, now_by = extraction[..., at], gradient[..., at, :]
+            lost, slopes = loss_step(lost, 0.5 * (before + now), capacity, rate * hours)
+            by_lost, by_dissolved, by_capacity, by_turns = (
+                np.broadcast_to(s, now.shape)[..., None] for s in slopes
+            )
+            by = (
+                by_lost * by
+                + by_dissolved * 0.5 * (before_by + now_by)
+                + by_capacity * by_own[0]
+                + by_turns * hours[:, None] * by_own[1]
+            )
+            net[..., at], slope[..., at, :] = now - lost, now_by - by
+            before, before_by = now, now_by
         return net, slope
+
+
+def _natural(layout: Layout, full: Array) -> list[Array]:
+    """Return capacity and rate, each of shape B."""
+    return [layout.natural(full, layout.position("loss", n)) for n in ("capacity", "rate")]
+
+
+def _own_slopes(layout: Layout, full: Array) -> list[Array]:
+    """Return d(capacity) and d(rate) by the free quantities, each B + (1, p)."""
+    found = []
+    for name in ("capacity", "rate"):
+        place = layout.position("loss", name)
+        slope = np.zeros((*full.shape[:-1], 1, len(layout.free)))
+        column = np.flatnonzero(layout.free_index == place)
+        scale = natural_slope(layout.quantities[place].scale, full[..., place])
+        slope[..., column] = np.asarray(scale)[..., None, None]
+        found.append(slope)
+    return found

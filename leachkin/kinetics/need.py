@@ -152,8 +152,12 @@ def _tested(
         fit = fit_tests(observed, law, **wider)
     except InputProblems as error:
         return TermTest(term, None, note=str(error))
-    if not (fit.converged and base.converged):
-        return TermTest(term, None, fit=fit, note=fit.message or base.message)
+    if not base.converged:
+        return TermTest(term, None, fit=fit, note=base.message)
+    if not fit.converged:
+        gain = base.aicc - fit.aicc  # a minimum further down could only add to it
+        what = "would gain" if gain > 0.0 else "no gain so far"
+        return TermTest(term, None, False, gain, (), fit, f"{what}, but {fit.message}")
     if len(fit.names) <= len(base.names):
         return TermTest(term, None, note="the tests do not vary what it needs")
     found = nested_test(fit, base)
