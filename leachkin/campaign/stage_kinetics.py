@@ -153,11 +153,8 @@ def _fitted(campaign: Campaign, key: str, tests: Sequence[Observed], level: floa
                 )
             ]
         )
-    balances = fit_balances(campaign, key.rpartition("/")[2])
-    options = {
-        **fit_options(campaign.settings, level),
-        **({"balances": balances} if balances else {}),
-    }
+    options = fit_options(campaign.settings, level)
+    options["balances"] = fit_balances(campaign, key.rpartition("/")[2])
     ranking = rank_tests(tests, **options)
     fit = carried(ranking)
     two_step, notes = _two_step(tests, fit, options)

@@ -58,9 +58,7 @@ class Loss:
         step = np.arange(max(sizes))[:, None]
         reading = firsts[:-1] + np.minimum(step, np.array(sizes) - 1)
         hours = np.concatenate([np.diff(o.time_h, prepend=0.0) for o in tests])[reading]
-        return cls(
-            reading.astype(np.intp), np.where(step < np.array(sizes), hours, 0.0), firsts[-1]
-        )
+        return cls(reading.astype(np.intp), np.where(step < np.array(sizes), hours, 0.0))
 
     def net(self, layout: Layout, full: Array, extraction: Array) -> Array:
         """Return the extraction less the loss, shape B + (M,)."""
