@@ -19,6 +19,7 @@ from leachkin.campaign.stage_results import (
 )
 from leachkin.constants import ZERO_CELSIUS_K
 from leachkin.hazards import cautions_table
+from leachkin.kinetics import RateLaw
 from leachkin.problems import Problem
 from leachkin.reagents import budget_tables as budget_sheets
 from leachkin.result_table import Cell, Column, ResultTable
@@ -118,7 +119,16 @@ def reference_words(stage: KineticsStage) -> str:
     return (
         f"{stage.key}, law {stage.law.name}, at {celsius:.4g} degC, "
         f"{reference.reagent_g_per_L:.4g} g/L reagent and {reference.size_mm:.4g} mm"
+        f"{_other_species(stage.law)}"
     )
+
+
+def _other_species(law: RateLaw) -> str:
+    """The rest of the solution that the times refer to, where the drive reads more than one."""
+    if law.drive is None:
+        return ""
+    said = [f"{n} {v:.4g}" for n, v in law.drive.reference.items() if n != "reagent"]
+    return f"; drive {law.drive.kind} at {', '.join(said)} (g/L, or pH)"
 
 
 def gangue_table(stage: GangueStage) -> ResultTable:

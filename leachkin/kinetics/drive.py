@@ -154,6 +154,12 @@ class Drive:
         """Order in the reagent while the others stand at the reference; None without one."""
         return self.parameters["reagent_order"] if self.kind == "two_reagents" else None
 
+    @property
+    def own_order(self) -> Array:
+        """Order in the reagent once everything else is held; 0 where the reagent is no power."""
+        reads = "reagent" in READS[self.kind]
+        return self.parameters.get("reagent_order", np.zeros(())) if reads else np.zeros(())
+
     def select(self, index: int) -> Drive:
         """Return one member of a batch; numbers without a batch stay."""
         held = {

@@ -202,15 +202,18 @@ class RateLaw:
         ----------
         solution : mapping of str to array_like
             Species as the drive names them ("reagent", "second", "oxidised", "reduced", "metal"
-            [g/L], "pH"); those left out stand at the reference.
+            [g/L], "pH"); those left out stand at the reference. A reagent that is left out is not
+            held: it keeps its order where the drive has one.
         """
         if self.drive is None:
-            rate = [self._ln_drive(r, solution.get("reagent")) for r in self.resistances]
+            rates = [self._ln_drive(r, solution.get("reagent")) for r in self.resistances]
+            orders = [r.order for r in self.resistances]
         else:
-            rate = [np.log(self.drive.rate(solution))] * len(self.resistances)
+            rates = [np.log(self.drive.rate(solution))] * len(self.resistances)
+            orders = [self.drive.own_order] * len(self.resistances)
         held = tuple(
-            replace(r, ln_tau=r.ln_tau - ln_rate, order=0.0)
-            for r, ln_rate in zip(self.resistances, rate, strict=True)
+            replace(r, ln_tau=r.ln_tau - rate, order=0.0 if "reagent" in solution else order)
+            for r, rate, order in zip(self.resistances, rates, orders, strict=True)
         )
         slow = None if self.slow is None else self.slow.held_at(solution)
         return replace(self, resistances=held, drive=None, slow=slow)
@@ -441,10 +444,7 @@ class RateLaw:
         at = np.atleast_1d(np.asarray(time_h, dtype=float))
         if not np.all(np.isfinite(at)) or np.any(at < 0.0):
             raise argument_error("time_h", "a time below 0 or not finite", "finite, from 0 h up")
-        lag, fade = (
-            value[..., None] if value.ndim else value
-            for value in (np.asarray(self.lag_h), np.asarray(self.fade_per_h))
-        )
+        lag, fade = (np.asarray(value)[..., None] for value in (self.lag_h, self.fade_per_h))
         if not np.any(lag) and not np.any(fade):
             return at[..., None, :], np.ones((1, 1))
         found = effective_hours(at, lag, fade)

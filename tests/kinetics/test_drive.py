@@ -120,6 +120,20 @@ def test_a_solution_that_is_held_only_rescales_time():
     assert_allclose(held.extraction(times, ORE), law().extraction(pace * times, ORE), rtol=1e-13)
 
 
+def test_a_reagent_that_is_not_held_keeps_its_order():
+    both = law("two_reagents")
+    partly = both.held_at({"second": 2.0})
+    assert float(partly.order) == 0.7
+    times = np.array([0.5, 3.0, 9.0])
+    pace = float(both.drive.rate({"reagent": 3.0, "second": 2.0}))
+    assert_allclose(
+        partly.extraction(times, ORE, reagent_g_per_L=3.0),
+        both.extraction(pace * times, ORE),
+        rtol=1e-13,
+    )
+    assert float(law("solubility").held_at({"metal": 5.0}).order) == 1.1
+
+
 def test_holding_a_power_is_the_power():
     plain = law(None)
     times = np.array([0.5, 3.0, 9.0])
