@@ -26,6 +26,8 @@ from leachkin.kinetics.intervals import bootstrap_tests, fit_problem, profile_in
 from leachkin.kinetics.leave_out import LeftOut, leave_one_out, left_out_table
 from leachkin.kinetics.need import TERM_OPTIONS, TermTest, need_table, tests_of_need
 from leachkin.kinetics.nested import NestedTest, nested_test
+from leachkin.kinetics.next_tests import Candidate, NextTests, next_tests
+from leachkin.kinetics.next_tests_result import CandidateGain, Outlook, Separation, Step
 from leachkin.kinetics.ore_curve import OreCurve
 from leachkin.kinetics.other_laws import (
     CLOCK_LAWS,
@@ -130,6 +132,13 @@ __all__ = [
     "in_words",
     "rank_laws",
     "rank_tests",
+    "Candidate",
+    "CandidateGain",
+    "NextTests",
+    "Outlook",
+    "Separation",
+    "Step",
+    "next_tests",
     "Bottle",
     "Noise",
     "SimulatedTest",
