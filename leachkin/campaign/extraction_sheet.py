@@ -89,6 +89,12 @@ def read_extraction_sheet(
     return tuple(observed), tuple(dict.fromkeys(problems))
 
 
+def is_extraction_sheet(sheet: Sheet) -> bool:
+    """Return True where a heading speaks of extraction, so that this is no bench sheet."""
+    roles = [_meaning(i, heading) for i, heading in enumerate(sheet.header)]
+    return any(column is not None and column.role == "extraction" for column in roles)
+
+
 def _columns(sheet: Sheet) -> tuple[list[_Column], list[Problem]]:
     columns, problems = [], []
     for position, heading in enumerate(sheet.header):

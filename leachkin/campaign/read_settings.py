@@ -364,7 +364,7 @@ def _example(key: Key) -> str:
 def _default_tables(walk: _Walk) -> Iterator[str]:
     """The tables whose defaults act: those in the file, and precision and fit with tests."""
     yield from walk.tables
-    tested = {"tables.tests", "tables.extraction"} & set(walk.values)
+    tested = {"tables.tests", "tables.bench", "tables.extraction"} & set(walk.values)
     if tested:
         yield from ({"precision", "fit"} - walk.tables)
 

@@ -37,6 +37,7 @@ TABLES = TableSchema(
         Key("heads", "text", "Head assays, replicates as rows"),
         Key("closeout", "text", "Products weighed and assayed at the end"),
         Key("sieves", "text", "Sieve tables by domain or test"),
+        Key("bench", "texts", "Bench sheets as they are; a workbook without # is every one in it"),
         Key("extraction", "text", "Extraction against time, where no bench sheet exists"),
     ),
 )

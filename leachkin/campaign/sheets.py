@@ -2,60 +2,144 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
 from leachkin.campaign.extraction_sheet import read_extraction_sheet
-from leachkin.campaign.settings import Settings
+from leachkin.campaign.settings import Setting, Settings
 from leachkin.errors import InputProblems
-from leachkin.files import Sheet, read_sheet
+from leachkin.files import (
+    WORKBOOK_ENDINGS,
+    Sheet,
+    check_path_text,
+    read_grid,
+    read_sheet,
+    read_workbook,
+)
 from leachkin.problems import Problem
-from leachkin.testwork import Answers, Exclusion, Observed, Test, TestworkSettings, read_tests
+from leachkin.testwork import (
+    Answers,
+    Exclusion,
+    Observed,
+    Test,
+    TestworkSettings,
+    is_bench_sheet,
+    read_tests,
+    tables_of_bench_sheet,
+)
 
 #: The sheets that hold bench tests; the extraction sheet is read on its own.
 BENCH_SHEETS = ("tests", "readings", "heads", "closeout", "sieves")
 
 
+#: The sheets of a campaign by the table they hold, each in the order it was named.
+SheetsByTable = Mapping[str, Sequence[Sheet]]
+
+
 def read_sheets(
     settings: Settings, folder: Path, file: str
-) -> tuple[dict[str, Sheet], tuple[Problem, ...]]:
-    """Return the sheets that open, by name, and a problem for each that does not."""
-    sheets: dict[str, Sheet] = {}
+) -> tuple[dict[str, list[Sheet]], tuple[Problem, ...]]:
+    """Return the sheets that open, by table, and a problem for each that does not."""
+    sheets: dict[str, list[Sheet]] = {}
     problems: list[Problem] = []
     decimal_mark = settings.get("sheets.decimal_mark")
     for name in (*BENCH_SHEETS, "extraction"):
         setting = settings.values.get(f"tables.{name}")
-        if setting is None:
-            continue
-        try:
-            sheets[name] = read_sheet(str(setting.value), folder, decimal_mark)
-            problems.extend(sheets[name].problems)
-        except InputProblems as error:
-            key = f"tables.{name}"
-            problems.extend(
-                p.at(file=file, row=setting.line, column=key) if not p.file else p
-                for p in error.problems
-                if isinstance(p, Problem)
-            )
+        if setting is not None:
+            with _told(problems, setting, file):
+                sheet = read_sheet(str(setting.value), folder, decimal_mark)
+                sheets.setdefault(name, []).append(sheet)
+                problems.extend(sheet.problems)
+    bench = settings.values.get("tables.bench")
+    for text in bench.value if bench is not None else ():
+        with _told(problems, bench, file):
+            _add_bench_sheets(text, folder, decimal_mark, sheets, problems)
     return sheets, tuple(problems)
 
 
+@contextmanager
+def _told(problems: list[Problem], setting: Setting | None, file: str) -> Iterator[None]:
+    """Gather what a sheet that does not open says, with the place where it is named."""
+    try:
+        yield
+    except InputProblems as error:
+        row, key = (setting.line, setting.key) if setting is not None else (None, "")
+        problems.extend(
+            p.at(file=file, row=row, column=key) if not p.file else p
+            for p in error.problems
+            if isinstance(p, Problem)
+        )
+
+
+def _add_bench_sheets(
+    text: str,
+    folder: Path,
+    decimal_mark: str | None,
+    sheets: dict[str, list[Sheet]],
+    problems: list[Problem],
+) -> None:
+    """Add what a bench sheet holds, or every bench sheet of a workbook, to the tables."""
+    path = check_path_text(text)
+    if path.lower().endswith(WORKBOOK_ENDINGS):
+        grids = read_workbook(folder / path, path, decimal_mark)
+    else:
+        grids = [read_grid(path, folder, decimal_mark)]
+    bench = [grid for grid in grids if is_bench_sheet(grid)]
+    if not bench:
+        raise InputProblems([no_bench_sheet(path)])
+    for grid in bench:
+        problems.extend(grid.problems)
+        taken = [c for sheet in sheets.get("tests", ()) for c in _names(sheet)]
+        for name, sheet in tables_of_bench_sheet(grid, problems, taken).items():
+            sheets.setdefault(name, []).append(sheet)
+
+
+def _names(sheet: Sheet) -> list[str]:
+    return sheet.column("test") if "test" in sheet.header else []
+
+
+def no_bench_sheet(file: str) -> Problem:
+    """Return the problem for a file that is named as a bench sheet and is none."""
+    return Problem(
+        file,
+        None,
+        "",
+        "stop",
+        "no table of readings was found",
+        "a row of headings with a time and at least two more, and readings under it",
+        'write the headings in one row, as "Time h", "pH", "Cu mg/L"',
+    )
+
+
 def tests_of_sheets(
-    settings: Settings, sheets: Mapping[str, Sheet]
+    settings: Settings, sheets: SheetsByTable
 ) -> tuple[tuple[Test, ...], tuple[Problem, ...]]:
     """Return the tests of the bench sheets; none where no tests sheet is named or opens.
 
     A stop at opening a sheet takes out what it is about; everything else is read, so that a check
     can say how the tests stand.
     """
-    bench = {name: sheet for name, sheet in sheets.items() if name in BENCH_SHEETS}
+    bench = {name: found for name, found in sheets.items() if name in BENCH_SHEETS}
     if not bench:
         return (), ()
     try:
         return read_tests(bench, testwork_settings(settings))
     except InputProblems as error:
         return (), tuple(p for p in error.problems if isinstance(p, Problem))
+
+
+def metals_of_sheets(settings: Settings, sheets: SheetsByTable) -> tuple[tuple[str, ...], str]:
+    """Return the metals and the reagent that the sheets themselves speak of, "" where none."""
+    bench = {name: found for name, found in sheets.items() if name in BENCH_SHEETS}
+    tests, _ = read_tests(bench, replace(testwork_settings(settings), metals=(), reagent=None))
+    dissolved = [name for test in tests for name in test.solution]
+    heads = {name for test in tests for name in test.heads}
+    metals = dict.fromkeys([n for n in dissolved if n in heads] or dissolved)
+    reagents = dict.fromkeys(test.reagent for test in tests if test.reagent)
+    return tuple(metals), next(iter(reagents), "")
 
 
 def testwork_settings(settings: Settings) -> TestworkSettings:
@@ -105,13 +189,17 @@ def exclusions(settings: Settings) -> Iterator[Exclusion]:
 
 
 def observed_of_sheet(
-    settings: Settings, sheets: Mapping[str, Sheet]
+    settings: Settings, sheets: SheetsByTable
 ) -> tuple[tuple[Observed, ...], tuple[Problem, ...]]:
     """Return the extraction-only observations, none where no such sheet is named or opens."""
-    sheet = sheets.get("extraction")
-    if sheet is None or any(p.level == "stop" for p in sheet.problems):
-        return (), ()
+    observed: list[Observed] = []
+    problems: list[Problem] = []
     part = settings.get("precision.solution") if "precision.solution" in settings.values else None
     given = settings.values.get("precision.solution")
     relative = part[1] if part is not None and given is not None and given.given else None
-    return read_extraction_sheet(sheet, relative)
+    for sheet in sheets.get("extraction", ()):
+        if not any(p.level == "stop" for p in sheet.problems):
+            found, told = read_extraction_sheet(sheet, relative)
+            observed += found
+            problems += told
+    return tuple(observed), tuple(problems)

@@ -110,6 +110,8 @@ def _text(key: Key, raw: Any, loose: bool) -> str:
 
 
 def _texts(key: Key, raw: Any, loose: bool) -> tuple[str, ...]:
+    if isinstance(raw, str) and raw.strip() and not loose:
+        raw = [raw]  # one entry needs no brackets
     items = _items(key, raw, loose)
     return tuple(_text(key, item, loose) for item in items)
 

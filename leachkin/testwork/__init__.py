@@ -2,6 +2,7 @@
 
 from leachkin.testwork.answers import Answers
 from leachkin.testwork.balance import metal_balance
+from leachkin.testwork.bench_form import is_bench_sheet, tables_of_bench_sheet
 from leachkin.testwork.explain import explain_balance
 from leachkin.testwork.observe import observe, observed_from_extraction
 from leachkin.testwork.read import domain_heads, read_tests
@@ -40,11 +41,13 @@ __all__ = [
     "domain_heads",
     "explain_balance",
     "extraction_table",
+    "is_bench_sheet",
     "metal_balance",
     "observe",
     "observed_from_extraction",
     "read_precision",
     "read_tests",
     "reagent_use",
+    "tables_of_bench_sheet",
     "test_inventory",
 ]

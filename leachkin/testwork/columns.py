@@ -218,7 +218,7 @@ class _Resolver:
         fields = self.by_name.get(fold_heading(name), [])
         if not fields:
             return None
-        fitting = [f for f in fields if _fits(spelling, f.units)] if len(fields) > 1 else fields
+        fitting = [f for f in fields if unit_fits(spelling, f.units)] if len(fields) > 1 else fields
         chosen = (fitting or fields)[0]
         return _Meaning(chosen.key, chosen.heading, chosen.units, in_words=chosen.in_words)
 
@@ -420,7 +420,8 @@ def _names_of(field: Field) -> tuple[str, ...]:
     return (split_heading(field.heading)[0], *field.names)
 
 
-def _fits(spelling: str | None, units: tuple[str, ...]) -> bool:
+def unit_fits(spelling: str | None, units: tuple[str, ...]) -> bool:
+    """Return True where a written unit converts to one of a field's units."""
     if not units or units == ("",):
         return spelling is None
     if spelling is None:

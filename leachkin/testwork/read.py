@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -10,7 +10,8 @@ import numpy as np
 from leachkin.files import Sheet
 from leachkin.problems import Problem, unknown_name
 from leachkin.testwork.closeout_sheet import read_closeout_sheet
-from leachkin.testwork.heads_sheet import Heads, read_heads_sheet
+from leachkin.testwork.heads_sheet import HeadRows, Heads, read_heads_sheet
+from leachkin.testwork.merge_readings import merged
 from leachkin.testwork.names import POLICIES, TestNames, fold_name
 from leachkin.testwork.readings_sheet import Readings, read_readings_sheet
 from leachkin.testwork.reagent_use import history_of
@@ -23,26 +24,54 @@ from leachkin.testwork.written_sizes import sizes_of_row
 
 SHEETS = ("tests", "readings", "heads", "closeout", "sieves")
 
+#: One sheet of a kind, or several.
+Tables = Mapping[str, Sheet | Sequence[Sheet]]
+
+
+@dataclass(frozen=True)
+class _Closed:
+    """The products of one test, and where they were read."""
+
+    products: tuple[Product, ...] = ()
+    rows: tuple[int, ...] = ()
+    file: str = ""
+
 
 @dataclass(frozen=True)
 class _Parts:
-    """What the sheets hold, by test."""
+    """What the sheets hold, by test; ``files`` has the first file of each kind."""
 
     readings: Mapping[str, Readings]
-    closeout: Mapping[str, tuple[tuple[Product, ...], tuple[int, ...]]]
+    closeout: Mapping[str, _Closed]
     heads: Heads
     sieves: Mapping[str, SieveTable]
     files: Mapping[str, str]
 
+    def files_of(self, row: TestRow) -> dict[str, str]:
+        """Return the file of each kind that a test was read from."""
+        readings, closed = self.readings.get(row.name), self.closeout.get(row.name)
+        found = dict(self.files) | {"tests": row.file}
+        if readings is not None:
+            found["readings"] = readings.file
+        if closed is not None:
+            found["closeout"] = closed.file
+        return found
+
+
+def sheets_of(tables: Tables, key: str) -> tuple[Sheet, ...]:
+    """Return the sheets of a kind, none where there is none."""
+    found = tables.get(key, ())
+    return (found,) if isinstance(found, Sheet) else tuple(found)
+
 
 def read_tests(
-    tables: Mapping[str, Sheet], settings: TestworkSettings
+    tables: Tables, settings: TestworkSettings
 ) -> tuple[tuple[Test, ...], tuple[Problem, ...]]:
     """Read the sheets of a campaign into tests.
 
     Parameters
     ----------
-    tables : mapping of str to Sheet
+    tables : mapping of str to Sheet or sequence of Sheet
         Out of "tests", "readings", "heads", "closeout" and "sieves"; those that are there.
     settings : TestworkSettings
 
@@ -56,9 +85,11 @@ def read_tests(
         ``problems`` too. After a stop the tests hold what could be read.
     """
     problems: list[Problem] = []
-    if "tests" not in tables:
+    if not sheets_of(tables, "tests"):
         return (), tuple(_no_tests_sheet(tables))
-    rows = read_tests_sheet(tables["tests"], settings, problems)
+    rows: dict[str, TestRow] = {}
+    for sheet in sheets_of(tables, "tests"):
+        rows |= read_tests_sheet(sheet, settings, problems, rows)
     parts = _read_parts(tables, settings, rows, problems)
     tests = [_test(row, parts, settings, problems) for row in rows.values()]
     problems.extend(_exclusion_problems(settings, tests))
@@ -86,12 +117,12 @@ def domain_heads(
     return read_heads_sheet(sheet, settings, (), problems).of(domain), tuple(problems)
 
 
-def _no_tests_sheet(tables: Mapping[str, Sheet]) -> list[Problem]:
+def _no_tests_sheet(tables: Tables) -> list[Problem]:
     for key in ("readings", "closeout"):
-        if key in tables:
+        for sheet in sheets_of(tables, key):
             return [
                 Problem(
-                    tables[key].file,
+                    sheet.file,
                     None,
                     "",
                     "stop",
@@ -104,40 +135,49 @@ def _no_tests_sheet(tables: Mapping[str, Sheet]) -> list[Problem]:
 
 
 def _read_parts(
-    tables: Mapping[str, Sheet],
+    tables: Tables,
     settings: TestworkSettings,
     rows: Mapping[str, TestRow],
     problems: list[Problem],
 ) -> _Parts:
     names = TestNames(rows)
-    readings: Mapping[str, Readings] = {}
-    closeout: Mapping[str, tuple[tuple[Product, ...], tuple[int, ...]]] = {}
-    heads, sieves = Heads(), {}
-    if "readings" in tables:
-        starts = {row.name: row.start for row in rows.values() if row.start}
-        readings = read_readings_sheet(tables["readings"], settings, names, problems, starts)
-    if "closeout" in tables:
-        closeout = read_closeout_sheet(tables["closeout"], settings, names, problems)
-    if "heads" in tables:
-        domains = [row.domain for row in rows.values()]
-        heads = read_heads_sheet(tables["heads"], settings, domains, problems)
-    if "sieves" in tables:
-        sieves = read_sieves_sheet(tables["sieves"], settings, problems)
-    files = {key: sheet.file for key, sheet in tables.items()}
-    return _Parts(readings, closeout, heads, sieves, files)
+    readings: dict[str, Readings] = {}
+    closeout: dict[str, _Closed] = {}
+    groups: list[HeadRows] = []
+    sieves: dict[str, SieveTable] = {}
+    starts = {row.name: row.start for row in rows.values() if row.start}
+    for sheet in sheets_of(tables, "readings"):
+        for name, read in read_readings_sheet(sheet, settings, names, problems, starts).items():
+            before = readings.get(name)
+            readings[name] = read if before is None else merged(before, read, name, problems)
+    for sheet in sheets_of(tables, "closeout"):
+        found = read_closeout_sheet(sheet, settings, names, problems)
+        for name, (products, numbers) in found.items():
+            old = closeout.get(name, _Closed())
+            closeout[name] = _Closed(
+                old.products + products, old.rows or numbers, old.file or sheet.file
+            )
+    domains = [row.domain for row in rows.values()]
+    for sheet in sheets_of(tables, "heads"):
+        groups += read_heads_sheet(sheet, settings, domains, problems).groups
+    for sheet in sheets_of(tables, "sieves"):
+        sieves |= read_sieves_sheet(sheet, settings, problems)
+    files = {key: sheets_of(tables, key)[0].file for key in tables if sheets_of(tables, key)}
+    return _Parts(readings, closeout, Heads(tuple(groups)), sieves, files)
 
 
 def _test(row: TestRow, parts: _Parts, settings: TestworkSettings, problems: list[Problem]) -> Test:
     readings = parts.readings.get(row.name)
-    products, closeout_rows = parts.closeout.get(row.name, ((), ()))
+    closed = parts.closeout.get(row.name, _Closed())
+    files = parts.files_of(row)
     table = parts.sieves.get(fold_name(row.name))
     if table is None and not row.has_size:
         table = parts.sieves.get(fold_name(row.domain)) or parts.sieves.get("")
     sizes = table.sizes if table is not None else None
     if table is None and row.has_size:
-        sizes = sizes_of_row(row, settings, problems, parts.files["tests"])
+        sizes = sizes_of_row(row, settings, problems, row.file)
     floor, proportional = settings.precision_of("residue")
-    temperature = _temperature(row, readings, parts, problems)
+    temperature = _temperature(row, readings, problems)
     test = Test(
         name=row.name,
         domain=row.domain,
@@ -154,15 +194,15 @@ def _test(row: TestRow, parts: _Parts, settings: TestworkSettings, problems: lis
         aliquot_mL=np.zeros(0),
         makeup_mL=np.zeros(0),
         solution={},
-        products=products,
+        products=closed.products,
         heads=parts.heads.of(row.domain, row.size_mm, row.name),
         residue_mass_sd_relative=proportional + floor / row.solids_g,
-        rows=_rows_of(row, readings, closeout_rows, parts),
+        rows=_rows_of(row, readings, closed, files),
         reagent=settings.reagent or None,
         start_metal_g_per_L=row.start_metal_g_per_L,
         sizes_by_analyte=table.by_analyte if table is not None else {},
         exclusions=tuple(e for e in settings.exclusions if e.test == row.name),
-        files=parts.files,
+        files=files,
     )
     if readings is not None:
         test = _with_readings(test, readings, settings, problems)
@@ -170,9 +210,7 @@ def _test(row: TestRow, parts: _Parts, settings: TestworkSettings, problems: lis
     return test
 
 
-def _temperature(
-    row: TestRow, readings: Readings | None, parts: _Parts, problems: list[Problem]
-) -> float:
+def _temperature(row: TestRow, readings: Readings | None, problems: list[Problem]) -> float:
     """The temperature of a test: as written, or the mean of its log, or asked about."""
     if row.temperature_K is not None:
         return row.temperature_K
@@ -181,7 +219,7 @@ def _temperature(
         return float(np.nanmean(logged))
     problems.append(
         Problem(
-            parts.files["tests"],
+            row.file,
             row.row,
             "temperature (degC)",
             "ask",
@@ -194,16 +232,15 @@ def _temperature(
 
 
 def _rows_of(
-    row: TestRow, readings: Readings | None, closeout_rows: tuple[int, ...], parts: _Parts
+    row: TestRow, readings: Readings | None, closed: _Closed, files: Mapping[str, str]
 ) -> dict[str, tuple[int, ...]]:
-    found: dict[str, tuple[int, ...]] = {parts.files["tests"]: (row.row,)}
+    found: dict[str, tuple[int, ...]] = {row.file: (row.row,)}
     for key, rows in (
         ("readings", readings.rows if readings is not None else ()),
-        ("closeout", closeout_rows),
+        ("closeout", closed.rows),
     ):
         if rows:
-            file = parts.files[key]
-            found[file] = (*found.get(file, ()), *rows)
+            found[files[key]] = (*found.get(files[key], ()), *rows)
     return found
 
 

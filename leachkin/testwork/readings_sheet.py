@@ -21,6 +21,7 @@ from leachkin.testwork.written_units import SHE_MV
 
 FIELDS = (
     Field("test", "test", names=TEST_NAMES, needed=True),
+    Field("sample id", "sample id", names=("sample", "sample no", "sample number", "lab no")),
     Field("time", "time (h)", ("h",), ("elapsed time", "leach time", "elapsed", "t"), needed=True),
     Field(
         "aliquot", "aliquot (mL)", ("mL",), ("sample volume", "aliquot volume", "sample", "aliq")
@@ -58,6 +59,7 @@ class Readings:
     makeup_metal_g_per_L: Mapping[str, Array]
     rows: tuple[int, ...]
     logged: Mapping[str, Array] = field(default_factory=dict)
+    file: str = ""
 
 
 @dataclass(frozen=True)
@@ -120,7 +122,7 @@ def _columns(reader: CellReader, settings: TestworkSettings) -> _Columns:
             if found is not None:
                 sd = settings.sd("solution", found[0], name)
                 assays[name] = (found[0], sd, found[1])
-        elif key != "test" and (values := reader.numbers(key)) is not None:
+        elif key not in ("test", "sample id") and (values := reader.numbers(key)) is not None:
             numbers[key] = values
     _check(reader, numbers)
     return _Columns(numbers, assays)
@@ -215,6 +217,7 @@ def _readings(rows: NDArray[np.int64], columns: _Columns, reader: CellReader) ->
         makeup_metal_g_per_L=_family(numbers, "made up"),
         rows=row_numbers,
         logged={name: numbers[key] for key, name in _LOGGED.items() if key in numbers},
+        file=reader.sheet.file,
     )
 
 

@@ -84,6 +84,7 @@ class TestRow:
     single_mm: float | None = None
     p80_mm: float | None = None
     start: str = ""
+    file: str = ""
 
     @property
     def has_size(self) -> bool:
@@ -92,7 +93,10 @@ class TestRow:
 
 
 def read_tests_sheet(
-    sheet: Sheet, settings: TestworkSettings, problems: list[Problem]
+    sheet: Sheet,
+    settings: TestworkSettings,
+    problems: list[Problem],
+    others: Mapping[str, TestRow] | None = None,
 ) -> dict[str, TestRow]:
     """Read the tests sheet.
 
@@ -102,6 +106,8 @@ def read_tests_sheet(
     settings : TestworkSettings
     problems : list of Problem
         Added to.
+    others : mapping of test name to TestRow, optional
+        Tests of other sheets, whose names may not come again.
 
     Returns
     -------
@@ -117,11 +123,12 @@ def read_tests_sheet(
     reader = CellReader(sheet, uses, problems, settings.answers)
     columns = _columns(reader, settings)
     found: dict[str, TestRow] = {}
+    known = dict(others or {})
     for i, name in enumerate(reader.texts("test")):
-        if _name_is_good(name, found, sheet, i, problems):
+        if _name_is_good(name, known, sheet, i, problems):
             row = _row(i, name, reader, columns, settings)
             if row is not None:
-                found[name] = row
+                found[name] = known[name] = row
     reader.finish()
     problems.extend(_alike(sheet, found))
     return found
@@ -204,13 +211,17 @@ def _name_is_good(
                 row,
                 "test",
                 "stop",
-                f"test {name!r} stands in row {found[name].row} too",
+                f"test {name!r} stands in {_place(found[name], sheet)} too",
                 "each test once",
                 "rename one of them",
             )
         )
         return False
     return True
+
+
+def _place(row: TestRow, sheet: Sheet) -> str:
+    return f"row {row.row}" if row.file == sheet.file else f"{row.file}, row {row.row},"
 
 
 def _row(
@@ -247,6 +258,7 @@ def _row(
         single_mm=size.single_mm,
         p80_mm=size.p80_mm,
         start=reader.texts("start")[i],
+        file=reader.sheet.file,
     )
 
 

@@ -30,6 +30,7 @@ _WHOLE = re.compile(r"\b(?:total|tot\.?|soln\.?|solution|dissolved|assay|grade|c
 _ADDED = re.compile(
     r"(?:(?P<a>.+?) (?:added|add\.?|additions?|dosed|dose|dosage)|(?:added|add) (?P<b>.+))", re.I
 )
+_START = re.compile(r"(?:start|starting|initial|feed) (?P<of>.+)", re.I)
 _FREE = re.compile(r"(?:free|residual|titrated) (?P<of>.+)|(?P<also>.+) (?:free|titration)", re.I)
 ACIDS = ("H2SO4", "HCl", "HNO3")
 REAGENTS = (*ACIDS, "NaCN", "KCN", "CN", "NaOH", "NH3", "CaO", "Ca(OH)2", "Na2CO3")
@@ -86,6 +87,9 @@ def as_trade_name(
     if match := _ADDED.fullmatch(text):
         what, question = _substance((match["a"] or match["b"]).strip(), settings)
         return f"{what} added", question
+    if match := _START.fullmatch(text):
+        what, question = _substance(match["of"].strip(), settings)
+        return f"start {what}", question
     if match := _FREE.fullmatch(text):
         what, question = _substance((match["of"] or match["also"]).strip(), settings)
         return f"free {what}", question
