@@ -178,7 +178,7 @@ def _of_document(
     sheets, sheet_problems = read_sheets(settings, folder, document.file)
     tests, test_problems = tests_of_sheets(settings, sheets)
     observed, observed_problems = observed_of_sheet(settings, sheets)
-    inputs = {document.file: sha256_of(document.content)}
+    inputs = {document.file.split("#")[0]: sha256_of(document.content)}
     inputs |= {
         sheet.file.split("#")[0]: sha256_of(sheet.content)
         for found in sheets.values()

@@ -7,6 +7,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 
 from leachkin.campaign.campaign import Campaign, read_leniently
+from leachkin.campaign.read_settings import quoted, split_dotted
 from leachkin.campaign.result_tables import problems_table
 from leachkin.campaign.run import STAGES
 from leachkin.errors import InputProblems
@@ -38,6 +39,8 @@ class CheckOutcome:
         Stages that would run.
     paste : tuple of str
         What to type, each with its file and row.
+    settings : tuple of str
+        Lines for the settings that answer questions, as ``sheets.ton = "short"``.
     """
 
     problems: tuple[Problem, ...]
@@ -45,6 +48,7 @@ class CheckOutcome:
     counts: Mapping[str, int] = field(default_factory=dict)
     stages: tuple[str, ...] = ()
     paste: tuple[str, ...] = ()
+    settings: tuple[str, ...] = ()
 
     @property
     def stops(self) -> int:
@@ -64,6 +68,26 @@ class CheckOutcome:
         problems = f"{levels[0]} stops, {levels[1]} questions, {levels[2]} notes"
         stages = f"would run: {', '.join(self.stages)}" if self.stages else "nothing would run"
         return f"{tests}; {problems}; {stages}."
+
+    def settings_block(self, workbook: bool = False) -> str:
+        """Return the lines that answer questions, as they are pasted; "" where there is none.
+
+        Parameters
+        ----------
+        workbook : bool
+            True for rows of a settings sheet instead of lines of a campaign file.
+        """
+        if workbook:
+            return "\n".join(
+                f"{key}\t{value.strip(chr(34))}"
+                for key, _, value in (line.partition(" = ") for line in self.settings)
+            )
+        tables: dict[str, list[str]] = {}
+        for line in self.settings:
+            key, _, value = line.partition(" = ")
+            *table, name = split_dotted(key)
+            tables.setdefault(".".join(table), []).append(f"{quoted(name)} = {value}")
+        return "\n".join(f"[{table}]\n" + "\n".join(lines) for table, lines in tables.items())
 
     def tables(self) -> tuple[ResultTable, ...]:
         """Return the inventory of tests, the problems, and the lines to paste."""
@@ -96,7 +120,7 @@ def check_campaign(path: str | Path, overrides: Mapping[str, str] | None = None)
         campaign = read_leniently(path, overrides)
     except InputProblems as error:
         problems = tuple(p for p in error.problems if isinstance(p, Problem))
-        return CheckOutcome(problems, paste=tuple(_lines(problems)))
+        return CheckOutcome(problems, paste=tuple(_lines(problems)), settings=_settings(problems))
     problems = _sorted(campaign.problems)
     states = [test.state for test in campaign.tests]
     return CheckOutcome(
@@ -105,7 +129,12 @@ def check_campaign(path: str | Path, overrides: Mapping[str, str] | None = None)
         {state: states.count(state) for state in dict.fromkeys(states)},
         () if any(p.level == "stop" for p in problems) else tuple(_stages(campaign)),
         tuple(_lines(problems)),
+        _settings(problems),
     )
+
+
+def _settings(problems: Iterable[Problem]) -> tuple[str, ...]:
+    return tuple(dict.fromkeys(problem.paste for problem in problems if problem.paste))
 
 
 def _sorted(problems: Iterable[Problem]) -> tuple[Problem, ...]:

@@ -24,11 +24,16 @@ def check(ctx: click.Context, campaign: str, settings: Mapping[str, str]) -> Non
 
     outcome = check_campaign(campaign, settings)
     print_problems(outcome.problems, to_stdout=True)
-    click.echo(outcome.summary)
     if outcome.paste:
         click.echo("To type:")
         for line in outcome.paste:
             click.echo(f"  {line}")
+    if outcome.settings:
+        workbook = campaign.lower().endswith((".xlsx", ".xlsm"))
+        where = 'the sheet "settings" (key, value)' if workbook else "campaign.toml"
+        click.echo(f"To paste into {where}, with your answer:")
+        click.echo(outcome.settings_block(workbook))
+    click.echo(outcome.summary)
     if outcome.stops:
         ctx.exit(1)
     remark(f"next: leachkin extraction {campaign}")
