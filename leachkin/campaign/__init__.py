@@ -16,6 +16,7 @@ from leachkin.campaign.stage_results import (
     LawElsewhere,
     TankStage,
 )
+from leachkin.campaign.templates import TEMPLATE_KINDS, write_template_workbook
 from leachkin.campaign.what_if import key_figures, what_if
 
 __all__ = [
@@ -36,6 +37,7 @@ __all__ = [
     "LawElsewhere",
     "Quantity",
     "Settings",
+    "TEMPLATE_KINDS",
     "TankStage",
     "campaign_file_page",
     "check_campaign",
@@ -45,4 +47,5 @@ __all__ = [
     "register_table",
     "run_campaign",
     "what_if",
+    "write_template_workbook",
 ]

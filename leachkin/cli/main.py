@@ -18,6 +18,7 @@ from leachkin.errors import LeachkinError, nearest_names
 
 _COMMANDS = {
     "run": ("leachkin.cli.run", "Run every stage whose table is there and write the report."),
+    "template": ("leachkin.cli.template", "A workbook to fill in."),
     "check": ("leachkin.cli.check", "List every problem with file, row and column."),
     "extraction": ("leachkin.cli.extraction", "Metal balance and extraction of every test."),
     "fit": ("leachkin.cli.fit", "Fit and rank rate laws, with intervals."),

@@ -6,6 +6,7 @@ from leachkin.files.grid import Grid, grid_of
 from leachkin.files.numerals import ERROR_CODES, parse_numeral
 from leachkin.files.paths import check_path_text, file_bytes
 from leachkin.files.sheet import Sheet, SheetRow, build_sheet, column_letters
+from leachkin.files.template_writer import TemplateSheet, write_template
 from leachkin.files.toml_document import TomlDocument, read_toml
 from leachkin.files.workbook import (
     WORKBOOK_ENDINGS,
@@ -24,6 +25,7 @@ __all__ = [
     "Grid",
     "Sheet",
     "SheetRow",
+    "TemplateSheet",
     "TomlDocument",
     "build_sheet",
     "check_path_text",
@@ -42,6 +44,7 @@ __all__ = [
     "whole_directory",
     "write_csv",
     "write_json",
+    "write_template",
     "write_text",
     "write_xlsx",
 ]

@@ -54,7 +54,7 @@ def write_xlsx(tables: Iterable[ResultTable], path: str | Path) -> None:
         _add_sheet(book, table, _sheet_name(table.name, names))
     buffer = io.BytesIO()
     book.save(buffer)
-    Path(path).write_bytes(_without_clock(buffer.getvalue()))
+    Path(path).write_bytes(without_clock(buffer.getvalue()))
 
 
 def _sheet_name(name: str, taken: set[str]) -> str:
@@ -111,8 +111,8 @@ def _text_cell(sheet: Any, text: str, bold: bool = False) -> Any:
     return cell
 
 
-def _without_clock(content: bytes) -> bytes:
-    """The same archive with fixed dates, so that the same tables give the same file."""
+def without_clock(content: bytes) -> bytes:
+    """Return the same archive with fixed dates, so that the same tables give the same file."""
     packed = io.BytesIO()
     with zipfile.ZipFile(io.BytesIO(content)) as old, zipfile.ZipFile(packed, "w") as new:
         for entry in old.infolist():

@@ -4,6 +4,7 @@ from leachkin.testwork.answers import Answers
 from leachkin.testwork.balance import metal_balance
 from leachkin.testwork.bench_form import is_bench_sheet, tables_of_bench_sheet
 from leachkin.testwork.explain import explain_balance
+from leachkin.testwork.names import EXAMPLE
 from leachkin.testwork.observe import observe, observed_from_extraction
 from leachkin.testwork.read import domain_heads, read_tests
 from leachkin.testwork.reagent_use import ReagentUse, reagent_use
@@ -23,6 +24,7 @@ from leachkin.testwork.settings import BalanceLimits, TestworkSettings, read_pre
 from leachkin.testwork.sizes import SizeDistribution
 
 __all__ = [
+    "EXAMPLE",
     "AliquotPolicy",
     "Answers",
     "Assays",

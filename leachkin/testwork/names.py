@@ -9,6 +9,8 @@ from typing import get_args
 from leachkin.problems import Problem, unknown_name
 from leachkin.testwork.records import AliquotPolicy
 
+#: A row whose test or domain begins so shows how to fill a sheet in, and is left out.
+EXAMPLE = "EXAMPLE"
 #: Other headings of a column of test names.
 TEST_NAMES = (
     "test id", "test no", "test name", "test number", "testno", "bottle", "bottle no",

@@ -12,7 +12,7 @@ from leachkin.problems import Problem, unknown_name
 from leachkin.testwork.closeout_sheet import read_closeout_sheet
 from leachkin.testwork.heads_sheet import HeadRows, Heads, read_heads_sheet
 from leachkin.testwork.merge_readings import merged
-from leachkin.testwork.names import POLICIES, TestNames, fold_name
+from leachkin.testwork.names import EXAMPLE, POLICIES, TestNames, fold_name, is_test_heading
 from leachkin.testwork.readings_sheet import Readings, read_readings_sheet
 from leachkin.testwork.reagent_use import history_of
 from leachkin.testwork.records import Array, Exclusion, Head, History, Product, Test
@@ -85,6 +85,10 @@ def read_tests(
         ``problems`` too. After a stop the tests hold what could be read.
     """
     problems: list[Problem] = []
+    tables = {
+        key: [_without_examples(sheet, problems) for sheet in sheets_of(tables, key)]
+        for key in tables
+    }
     if not sheets_of(tables, "tests"):
         return (), tuple(_no_tests_sheet(tables))
     rows: dict[str, TestRow] = {}
@@ -94,6 +98,21 @@ def read_tests(
     tests = [_test(row, parts, settings, problems) for row in rows.values()]
     problems.extend(_exclusion_problems(settings, tests))
     return tuple(_with_their_problems(tests, problems)), tuple(problems)
+
+
+def _without_examples(sheet: Sheet, problems: list[Problem]) -> Sheet:
+    """The sheet without the rows that show how to fill it in."""
+    named = [i for i, h in enumerate(sheet.header) if is_test_heading(h) or h == "domain"]
+    shown = [
+        row for row in sheet.rows if any(row.cells[i].upper().startswith(EXAMPLE) for i in named)
+    ]
+    if not shown:
+        return sheet
+    numbers = ", ".join(str(row.number) for row in shown)
+    found = f"row {numbers} is an example and left out"
+    problems.append(Problem(sheet.file, shown[0].number, "", "note", found))
+    left = {row.number for row in shown}
+    return replace(sheet, rows=tuple(row for row in sheet.rows if row.number not in left))
 
 
 def domain_heads(
