@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from leachkin.inference import natural_slope
 from leachkin.kinetics.drive import ln_drive
 from leachkin.kinetics.fit_elements import Elements, Exposure
+from leachkin.kinetics.fit_grains import GrainSteps
 from leachkin.kinetics.fit_layout import SLOW, Key, Layout
 from leachkin.kinetics.ore_terms import effective_hours
 from leachkin.kinetics.other_laws import clock_conversion_and_sensitivities
@@ -34,10 +35,14 @@ class _Hours:
 
 @dataclass(frozen=True)
 class ClockPath:
-    """Extraction and its derivatives by the quantities of a layout."""
+    """Extraction and its derivatives by the quantities of a layout.
+
+    ``grains`` stands where no one clock serves the resistances of a fraction.
+    """
 
     elements: Elements
     exposure: Exposure
+    grains: GrainSteps | None = None
 
     def extraction(self, layout: Layout, full: Array) -> Array:
         """Return the extraction at every reading, shape B + (M,)."""
@@ -53,7 +58,8 @@ class ClockPath:
             if key in slopes:
                 value = full[..., layout.position(*key)]
                 scale = np.asarray(natural_slope(quantity.scale, value))[..., None]
-                gradient[..., j] = slopes[key] * scale
+                by_logarithm = quantity.role == "time"
+                gradient[..., j] = slopes[key] if by_logarithm else slopes[key] * scale
         return E, gradient
 
     def _mixed(
@@ -85,9 +91,11 @@ class ClockPath:
     def _conversions(
         self, layout: Layout, full: Array, part: str, wanted: frozenset[Key]
     ) -> tuple[Array, dict[Key, Array]]:
-        """X and dX/d(natural quantity) of one fraction, each B + (L,)."""
+        """X and dX/d(quantity) of one fraction, each B + (L,); of times by their logarithms."""
         el = self.elements
         kinds = layout.slow_kinds if part else layout.kinds
+        if self.grains is not None and len(kinds) > 1:
+            return self.grains.conversions(layout, el, full, part, wanted)
         hours = self._hours(layout, full, part, wanted)
         at = hours.hours[..., el.reading_of]
         times = {kind: np.exp(ln_times(layout, el, full, part + kind)) for kind in kinds}
@@ -118,9 +126,7 @@ class ClockPath:
         }
         slopes: dict[Key, Array] = {}
         if ("time", which) in wanted:
-            value = layout.natural(full, layout.position("time", which))[..., None]
-            sign = -1.0 if which.endswith("clock") else 1.0
-            slopes[("time", which)] = sign * by_log / value
+            slopes[("time", which)] = -by_log if which.endswith("clock") else by_log
         if layout.has("spread", "sizes"):
             sigma, by_spread = _ln_deviation(layout, full)
             covariates["size_exponent"] = el.ln_size + sigma * el.deviate
@@ -187,11 +193,7 @@ def drive_at_nodes(
     value, slopes = ln_drive(
         layout.drive_form.kind, exposure.values, layout.drive_reference, parameters
     )
-    keyed = {
-        ("order", "reagent") if name == "reagent_order" else ("drive", name): slope
-        for name, slope in slopes.items()
-    }
-    return value, keyed
+    return value, {layout.drive_key(name): slope for name, slope in slopes.items()}
 
 
 def _law(

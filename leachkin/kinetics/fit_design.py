@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from leachkin.inference import below_limit_residual
 from leachkin.kinetics.fit_clock import ClockPath, ln_times
 from leachkin.kinetics.fit_elements import Elements, Exposure, drifts, thermal_covariate
+from leachkin.kinetics.fit_grains import GrainSteps
 from leachkin.kinetics.fit_layout import Layout
 from leachkin.kinetics.fit_loss import Loss
 from leachkin.kinetics.fit_march import MarchPath
@@ -217,17 +218,18 @@ def _path(
     elements: Elements,
     balances: Mapping[str, ReagentBalance],
 ) -> ClockPath | MarchPath:
-    """Return the exact path of one clock, or the march where no one clock serves."""
+    """Return one clock or the steps of the grains, or the march where a balance is followed."""
     if balances:
         _check_grains_alone(layout, "a reagent by balance")
         return MarchPath.of(layout, tests, [balances.get(o.test) for o in tests])
     several = len(layout.kinds) > 1 or len(layout.slow_kinds) > 1
     warmed = several and any(drifts(o) for o in tests)
     by_resistance = layout.drive_form.kind == "power" and not layout.has("order", "reagent")
+    grains = None
     if warmed or (by_resistance and any(_strength_moves(o) for o in tests)):
         _check_grains_alone(layout, "conditions that change, without one clock")
-        return MarchPath.of(layout, tests)
-    return ClockPath(elements, Exposure.of(layout, tests))
+        grains = GrainSteps.of(layout, tests, elements)
+    return ClockPath(elements, Exposure.of(layout, tests), grains)
 
 
 def _check_grains_alone(layout: Layout, found: str) -> None:

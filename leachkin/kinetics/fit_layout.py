@@ -160,11 +160,15 @@ class Layout:
 
     def drive_parameters(self, full: Array) -> dict[str, Array]:
         """Return the parameters of the drive by name, each of shape B."""
-        keys = {
-            name: ("order", "reagent") if name == "reagent_order" else ("drive", name)
+        return {
+            name: self.natural(full, self.position(*self.drive_key(name)))
             for name in PARAMETERS[self.drive_form.kind]
         }
-        return {name: self.natural(full, self.position(*key)) for name, key in keys.items()}
+
+    @staticmethod
+    def drive_key(name: str) -> Key:
+        """Return the role of a parameter of the drive, and of what."""
+        return ("order", "reagent") if name == "reagent_order" else ("drive", name)
 
     def warmed_kind(self, part: str) -> str | None:
         """Return the one resistance of a fraction, whose clock can follow a temperature."""

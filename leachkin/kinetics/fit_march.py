@@ -1,20 +1,18 @@
-"""Extraction of a fit step by step, where no one clock serves.
+"""Extraction of a fit whose reagent follows from the extraction itself, by its balance.
 
-For resistances of different order in a changing solution, of different activation energy at a
-changing temperature, and for a reagent that is followed by its balance. Every step is
-``z -> depth(time(z) + dt)`` of the rate law; derivatives are central differences, all in one batch.
+Every step is ``z -> depth(time(z) + dt)`` of the rate law under the strength that is left;
+derivatives are central differences, all in one batch.
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from leachkin.kinetics.drive import READS
-from leachkin.kinetics.fit_elements import drifts, species_of
+from leachkin.kinetics.fit_grains import HistorySteps, history_steps
 from leachkin.kinetics.fit_layout import Layout
 from leachkin.kinetics.rate_law import RateLaw
 from leachkin.kinetics.reagent_balance import ReagentBalance
@@ -23,21 +21,8 @@ from leachkin.testwork import Observed, SizeDistribution
 Array = NDArray[np.float64]
 #: Step of the differences on the fitted scale: balances rounding against curvature.
 DIFFERENCE = 1e-5
-#: A step is cut where more than this changes on it: K, and ln of the strength.
-STEP_K, STEP_LN = 2.0, 0.08
-MOST_CUTS = 24
 #: Steps between readings where the strength follows from the extraction itself.
 BALANCE_STEPS = 6
-
-
-@dataclass(frozen=True)
-class _Steps:
-    """The steps of one test: length, what holds in the middle, and the readings at their ends."""
-
-    hours: Array
-    temperature_K: Array
-    values: Mapping[str, Array]
-    ends_reading: tuple[tuple[int, ...], ...]
 
 
 @dataclass(frozen=True)
@@ -45,7 +30,7 @@ class MarchPath:
     """Extraction at the readings of tests, marched through their conditions."""
 
     tests: tuple[Observed, ...]
-    steps: tuple[_Steps, ...]
+    steps: tuple[HistorySteps, ...]
     balances: tuple[ReagentBalance | None, ...]
 
     @classmethod
@@ -53,14 +38,14 @@ class MarchPath:
         cls,
         layout: Layout,
         tests: Sequence[Observed],
-        balances: Sequence[ReagentBalance | None] | None = None,
+        balances: Sequence[ReagentBalance | None],
     ) -> MarchPath:
-        """Cut the history of every test into steps."""
-        of_tests = tuple(balances) if balances is not None else (None,) * len(tests)
+        """Cut the history of every test into steps; a test without a balance has its titrations."""
         steps = tuple(
-            _steps(o, layout, balance) for o, balance in zip(tests, of_tests, strict=True)
+            history_steps(o, layout, None if balance is None else BALANCE_STEPS)
+            for o, balance in zip(tests, balances, strict=True)
         )
-        return cls(tuple(tests), steps, of_tests)
+        return cls(tuple(tests), steps, tuple(balances))
 
     def extraction(self, layout: Layout, full: Array) -> Array:
         """Return the extraction at every reading, shape B + (M,)."""
@@ -89,7 +74,7 @@ class MarchPath:
         flat: Array,
         law: RateLaw,
         observed: Observed,
-        steps: _Steps,
+        steps: HistorySteps,
         balance: ReagentBalance | None,
     ) -> Array:
         sizes = observed.sizes or SizeDistribution.single(layout.reference.size_mm)
@@ -101,23 +86,15 @@ class MarchPath:
         warmth = observed.temperature_K
         found[:] = law.extraction_of_depth(depth, sizes, warmth)[..., None]  # readings at time 0
         for i, readings in enumerate(steps.ends_reading):
-            solution = {role: values[i] for role, values in steps.values.items()}
-            hours, strength = _driven(law, steps.hours[i], solution)
+            strength = steps.values["reagent"][i]
             kelvin = steps.temperature_K[i]
-            depth = law.advance(depth, hours, sizes, kelvin, strength, observed.stirring_rpm)
+            depth = law.advance(
+                depth, steps.hours[i], sizes, kelvin, strength, observed.stirring_rpm
+            )
             if readings:
                 E = law.extraction_of_depth(depth, sizes, warmth)
                 found[:, list(readings)] = E[..., None]
         return found
-
-
-def _driven(
-    law: RateLaw, hours: Array, solution: Mapping[str, Array]
-) -> tuple[Array, Array | None]:
-    """Return the hours of a step and the strength in it; a drive of its own acts on the hours."""
-    if law.drive is None:
-        return hours, solution["reagent"]
-    return hours * law.drive.rate(solution), None
 
 
 def _by_balance(
@@ -126,7 +103,7 @@ def _by_balance(
     law: RateLaw,
     sizes: SizeDistribution,
     observed: Observed,
-    steps: _Steps,
+    steps: HistorySteps,
     balance: ReagentBalance,
     head: Array,
 ) -> Array:
@@ -153,34 +130,3 @@ def _by_balance(
             found[:, reading] = E
             state = state.sampled(reading)
     return found
-
-
-def _steps(observed: Observed, layout: Layout, balance: ReagentBalance | None) -> _Steps:
-    """Cut the time from 0 to the last reading so that little changes on a step."""
-    history = observed.history
-    edges = np.union1d([0.0], observed.time_h)
-    times = np.zeros(1) if history is None else history.time_h
-    kelvin = np.full(times.size, observed.temperature_K)
-    if history is not None and drifts(observed):
-        kelvin = history.temperature_K
-    read = {role: species_of(observed, layout, role) for role in READS[layout.drive_form.kind]}
-    if history is not None:
-        edges = np.union1d(edges, times[times < edges[-1]])
-    changed = np.abs(np.diff(np.interp(edges, times, kelvin))) / STEP_K
-    for role, values in read.items():
-        ln_value = values if role == "pH" else np.log(np.maximum(values, 1e-9 * values.max()))
-        changed = np.maximum(changed, np.abs(np.diff(np.interp(edges, times, ln_value))) / STEP_LN)
-    cuts = np.clip(np.ceil(changed), 1, MOST_CUTS).astype(int)
-    if balance is not None:
-        cuts = np.full(cuts.size, BALANCE_STEPS)
-    fine = np.concatenate(
-        [np.linspace(edges[i], edges[i + 1], cuts[i] + 1)[:-1] for i in range(cuts.size)]
-        + [edges[-1:]]
-    )
-    middle = 0.5 * (fine[:-1] + fine[1:])
-    ends = tuple(
-        tuple(np.flatnonzero(np.isclose(observed.time_h, end, rtol=1e-12, atol=0.0)).tolist())
-        for end in fine[1:]
-    )
-    at_middle = {role: np.interp(middle, times, values) for role, values in read.items()}
-    return _Steps(np.diff(fine), np.interp(middle, times, kelvin), at_middle, ends)

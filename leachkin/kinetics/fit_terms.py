@@ -114,8 +114,9 @@ def _orders_by_kind(
         own = asked.get(kind, 1.0)
         free = own == "free"
         value = 1.0 if isinstance(own, str) else float(own)
+        which = "reagent" if len(kinds) == 1 else kind  # one resistance has one clock
         name = named("order", kind)
-        found.append(quantity(name, "order", kind, "linear", value, ORDER_BOUNDS, free=free))
+        found.append(quantity(name, "order", which, "linear", value, ORDER_BOUNDS, free=free))
     return found
 
 

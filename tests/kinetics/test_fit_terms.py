@@ -1,4 +1,4 @@
-"""Drives, optional terms, a second fraction, orders and temperatures inside a fit."""
+"""Drives, optional terms and a second fraction inside a fit."""
 
 from __future__ import annotations
 
@@ -15,91 +15,15 @@ from leachkin.kinetics import (
     RateLaw,
     Reference,
     Resistance,
-    extraction_along,
     fit_tests,
 )
 from leachkin.kinetics.fit_design import FitDesign
-from leachkin.kinetics.fit_march import MarchPath
 from leachkin.kinetics.fit_options import FitOptions
 from leachkin.kinetics.fit_setup import layout_of
-from leachkin.kinetics.reagent_balance import ReagentBalance
-from leachkin.testwork import History, Observed, SizeDistribution, observed_from_extraction
-
-TIME_H = np.array([0.5, 1.0, 2.0, 4.0, 8.0, 16.0, 30.0, 48.0])
-ORE = SizeDistribution.from_classes([0.5, 1.0, 2.0, 4.0], [0.3, 0.4, 0.3])
-NOISE = 0.004
-
-
-def law(name: str = "chemical", **more) -> RateLaw:
-    parts = {
-        "chemical": (Resistance("chemical", np.log(12.0), 46.0),),
-        "ash_layer+chemical": (
-            Resistance("ash_layer", np.log(20.0), 19.0),
-            Resistance("chemical", np.log(8.0), 46.0),
-        ),
-        "first_order": (Resistance("clock", np.log(6.0), 46.0),),
-    }[name]
-    ultimate = more.pop("ultimate", [0.88])
-    reference = more.pop("reference", Reference())
-    return RateLaw(name, parts, reference, [1.0], ultimate, **more)
-
-
-def observed(test: str, E, seed: int = 5, noise: float = NOISE, time_h=TIME_H, **more) -> Observed:
-    generator = np.random.default_rng([seed, len(test), *map(ord, test)])
-    values = np.asarray(E) + noise * generator.standard_normal(time_h.size)
-    sd = max(noise, 1e-6)
-    return observed_from_extraction(time_h, values, sd, test=test, sizes=ORE, **more)
-
-
-def history(time_h, *, temperature_K=298.15, reagent=10.0, **others) -> History:
-    time = np.asarray(time_h, dtype=float)
-    full = np.ones(time.size)
-    return History(
-        time,
-        full * temperature_K,
-        full * reagent,
-        {name.replace("_", "+"): full * value for name, value in others.items()},
-    )
-
-
-def near(fit, name: str, truth: float, errors: float = 3.5) -> None:
-    found = fit.parameter(name)
-    assert found.standard_error is not None, f"{name}: {found.why_no_interval}"
-    assert abs(found.value - truth) <= errors * found.standard_error, f"{name}: {found}"
-
+from leachkin.testwork import History, SizeDistribution
+from tests.kinetics.bench import NOISE, ORE, TIME_H, conditions, history, law, near, observed
 
 # --- derivatives: every path against differences, every quantity at once
-
-
-def conditions(kind: str) -> list[Observed]:
-    """Three tests that differ in all that a drive may read, with histories."""
-    found = []
-    for i, (kelvin, strength) in enumerate([(298.15, 10.0), (313.15, 20.0), (298.15, 5.0)]):
-        at = np.array([0.0, 6.0, 20.0, 48.0])
-        own = History(
-            at,
-            kelvin + np.zeros(4),
-            strength * np.array([1.0, 0.8, 0.7, 0.5]),
-            {
-                "O2": np.array([8.0, 6.0, 7.0, 8.0]) / 1000.0 * (1 + i),
-                "Fe3+": np.array([3.0, 2.0, 1.5, 1.0]) + i,
-                "Fe2+": np.array([0.5, 1.0, 1.5, 2.0]),
-                "pH": np.array([1.5, 1.6, 1.8, 2.0]) + 0.1 * i,
-                "Cu": np.array([0.0, 1.0, 2.0, 3.0]),
-            },
-        )
-        found.append(
-            observed(
-                f"t{i}",
-                0.5 * (1 - np.exp(-TIME_H / 10)),
-                temperature_K=kelvin,
-                reagent_g_per_L=strength,
-                history=own,
-                key="ore/Cu",
-                stirring_rpm=100.0 * (i + 1),
-            )
-        )
-    return found
 
 
 CASES = {
@@ -350,143 +274,6 @@ def test_stirring_moves_the_film_only():
     )
     near(fit, "stirring_exponent_film", 0.6)
     near(fit, "tau_film", 10.0)
-
-
-# --- no one clock: the march
-
-
-def warming(kelvin: float) -> History:
-    at = np.array([0.0, 10.0, 30.0, 48.0])
-    return History(at, kelvin + np.array([0.0, 8.0, 15.0, 10.0]))
-
-
-def marched_tests(noise: float) -> list[Observed]:
-    found = []
-    for kelvin in (288.15, 303.15):
-        own = warming(kelvin)
-        E = extraction_along(
-            law("ash_layer+chemical"),
-            ORE,
-            TIME_H,
-            lambda t, own=own: float(np.interp(t, own.time_h, own.temperature_K)),
-            steps_per_interval=400,
-        )
-        found.append(observed(f"{kelvin:g}", E, temperature_K=kelvin, history=own, noise=noise))
-    return found
-
-
-def test_a_logged_temperature_moves_each_resistance_by_its_own_energy():
-    tests = marched_tests(0.0)
-    same = {"ultimate": "one", "reference": Reference(size_mm=1.0)}
-    fit = fit_tests(tests, "ash_layer+chemical", **same)
-    assert isinstance(fit.design.path, MarchPath)
-    assert fit.parameter("tau_ash_layer").value == pytest.approx(20.0, rel=4e-3)
-    assert fit.parameter("activation_energy_ash_layer").value == pytest.approx(19.0, abs=0.4)
-    assert fit.parameter("activation_energy_chemical").value == pytest.approx(46.0, abs=0.8)
-    blind = fit_tests([replace(o, history=None) for o in tests], "ash_layer+chemical", **same)
-    assert abs(blind.parameter("tau_ash_layer").value / 20.0 - 1.0) > 0.1
-
-
-def test_march_and_clock_agree_where_both_serve():
-    """One resistance at a changing temperature: exact by the sum, second order by the march."""
-    own = warming(298.15)
-    tests = [observed("a", 0.5 * TIME_H / 48.0, history=own)]
-    layout, _ = layout_of(FitOptions(law="chemical", ultimate="one"), tests)
-    clock = FitDesign.of(layout, tests)
-    assert not isinstance(clock.path, MarchPath)
-    march = replace(clock, path=MarchPath.of(layout, tests))
-    vector = layout.starts[layout.free_index]
-    assert_allclose(march.expected(vector), clock.expected(vector), atol=2e-5)
-    by_march, by_clock = (one.residuals_and_jacobian(vector)[1] * NOISE for one in (march, clock))
-    assert_allclose(by_march, by_clock, atol=1e-4)
-
-
-def test_orders_by_resistance():
-    parts = (
-        Resistance("ash_layer", np.log(20.0), order=1.0),
-        Resistance("chemical", np.log(8.0), order=0.4),
-    )
-    truth = RateLaw("ash_layer+chemical", parts, Reference(reagent_g_per_L=10.0), [1.0], [0.88])
-    tests = [
-        observed(
-            f"{strength:g}",
-            truth.extraction(TIME_H, ORE, reagent_g_per_L=strength),
-            reagent_g_per_L=strength,
-            noise=0.002,
-        )
-        for strength in (3.0, 10.0, 30.0)
-    ]
-    fit = fit_tests(
-        tests,
-        "ash_layer+chemical",
-        ultimate="one",
-        reagent_order={"chemical": "free"},
-        reference=Reference(size_mm=1.0, reagent_g_per_L=10.0),
-    )
-    near(fit, "order_chemical", 0.4)
-    near(fit, "tau_ash_layer", 20.0)
-    assert not fit.law.shared_clock()
-
-
-# --- a reagent by its own balance
-
-
-def run_down(seed: int, noise: float = NOISE, renewal: float = 0.0) -> list[Observed]:
-    """Acid that the ore itself spends, to 30 % of its start: by an integrator of its own."""
-    from scipy.integrate import solve_ivp
-
-    truth = law()
-    found = []
-    for i, start in enumerate((6.0, 20.0)):
-
-        def slopes(_t, state, start=start):
-            s, C = state
-            E1, E0 = (float(truth.extraction(max(s, 0.0) + h, ORE)) for h in (1e-4, 0.0))
-            pace = max(C, 0.0) / 10.0
-            return [pace, -4.0 * (E1 - E0) / 1e-4 * pace + renewal * (start - C)]
-
-        path = solve_ivp(slopes, (0.0, 48.0), [0.0, start], t_eval=TIME_H, rtol=1e-8, atol=1e-8)
-        E = truth.extraction(path.y[0], ORE)
-        found.append(observed(f"{start:g}", E, seed=seed + i, noise=noise, reagent_g_per_L=start))
-    return found
-
-
-def balances(renewal: float = 0.0) -> dict[str, ReagentBalance]:
-    return {
-        f"{start:g}": ReagentBalance(
-            start, solids_kg_per_m3=500.0, per_metal_kg_per_kg=8.0, renewal_per_h=renewal
-        )
-        for start in (6.0, 20.0)
-    }
-
-
-REF = Reference(size_mm=1.0, reagent_g_per_L=10.0)
-
-
-def test_a_reagent_by_balance_gives_the_law_back():
-    """E counts on a head of 1 kg/t: 500 kg/m3 and 8 kg/kg take 4 g/L per unit of E."""
-    exact = fit_tests(
-        run_down(0, 0.0), "chemical", ultimate="one", reference=REF, balances=balances()
-    )
-    assert exact.parameter("tau_chemical").value == pytest.approx(12.0, rel=3e-3)
-    assert exact.parameter("ultimate").value == pytest.approx(0.88, abs=1e-3)
-    noisy = fit_tests(run_down(3), "chemical", ultimate="one", reference=REF, balances=balances())
-    near(noisy, "tau_chemical", 12.0)
-    held = fit_tests(run_down(3), "chemical", ultimate="one", reference=REF)
-    assert held.parameter("tau_chemical").value > 1.1 * 12.0
-
-
-def test_a_renewed_reagent_is_found():
-    fit = fit_tests(
-        run_down(1, 0.002, renewal=0.05),
-        "chemical",
-        ultimate="one",
-        reference=REF,
-        balances=balances(),
-        terms=("renewal",),
-    )
-    near(fit, "renewal", 0.05)
-    near(fit, "tau_chemical", 12.0)
 
 
 # --- refusals
