@@ -79,7 +79,9 @@ class MarchPath:
     ) -> Array:
         sizes = observed.sizes or SizeDistribution.single(layout.reference.size_mm)
         if balance is not None:
-            head = np.exp(flat[..., layout.position("head", observed.test)])
+            head = np.full(flat.shape[0], observed.head_kg_per_t)
+            if layout.has("head", observed.test):
+                head = np.exp(flat[..., layout.position("head", observed.test)])
             return _by_balance(layout, flat, law, sizes, observed, steps, balance, head)
         found = np.zeros((flat.shape[0], observed.time_h.size))
         depth = law.initial_depth(sizes)

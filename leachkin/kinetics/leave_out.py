@@ -14,6 +14,7 @@ from leachkin.kinetics.fit_design import FitDesign
 from leachkin.kinetics.fit_result import FitResult
 from leachkin.kinetics.fit_tests import fit_tests
 from leachkin.kinetics.other_laws import canonical_law
+from leachkin.kinetics.reagent_balance import ReagentBalance
 from leachkin.problems import argument_error
 from leachkin.result_table import Column, ResultTable
 from leachkin.testwork import Observed
@@ -52,12 +53,15 @@ class LeftOut:
         return max(self.by_test, key=lambda pair: pair[1])[0]
 
 
-def predicted_rows(fit: FitResult, observed: Observed) -> Array:
+def predicted_rows(
+    fit: FitResult, observed: Observed, balance: ReagentBalance | None = None
+) -> Array:
     """Return the expected value of every row of a test, with its assay head and its own history.
 
-    The test need not be among those that were fitted.
+    The test need not be among those that were fitted; its reagent may follow from a balance.
     """
-    design = FitDesign.of(fit.layout, (observed,))
+    balances = {} if balance is None else {observed.test: balance}
+    design = FitDesign.of(fit.layout, (observed,), balances)
     return observed.expected(design.extractions(fit.vector)[0])
 
 
@@ -111,7 +115,8 @@ def _squares(
     values = left.bound == 0
     if not fit.converged or not values.any():
         return None
-    expected = predicted_rows(fit, left)[values]
+    balance = same.get("balances", {}).get(left.test)
+    expected = predicted_rows(fit, left, balance)[values]
     head = left.head_sd_kg_per_t / left.head_kg_per_t * (expected - left.brought[values])
     sd = np.hypot(left.sd[values], head)
     return np.asarray(((left.value[values] - expected) / sd) ** 2)

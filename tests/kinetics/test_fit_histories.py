@@ -20,6 +20,7 @@ from leachkin.kinetics.fit_design import FitDesign
 from leachkin.kinetics.fit_grains import GrainSteps
 from leachkin.kinetics.fit_options import FitOptions
 from leachkin.kinetics.fit_setup import layout_of
+from leachkin.kinetics.leave_out import predicted_rows
 from leachkin.testwork import History, Observed
 from tests.kinetics.bench import NOISE, ORE, TIME_H, conditions, law, near, observed
 
@@ -195,6 +196,15 @@ def test_a_reagent_by_balance_gives_the_law_back():
     near(noisy, "tau_chemical", 12.0)
     held = fit_tests(run_down(3), "chemical", ultimate="one", reference=REF)
     assert held.parameter("tau_chemical").value > 1.1 * 12.0
+
+
+def test_a_test_left_out_is_predicted_with_its_own_balance():
+    tests = run_down(3, 0.0)
+    fit = fit_tests(tests[1:], "chemical", ultimate="one", reference=REF, balances=balances())
+    own = predicted_rows(fit, tests[0], balances()["6"])
+    assert_allclose(own, tests[0].value, atol=3e-3)
+    blind = predicted_rows(fit, tests[0])
+    assert np.abs(blind - tests[0].value).max() > 0.05
 
 
 def test_a_renewed_reagent_is_found():
