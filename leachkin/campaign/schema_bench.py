@@ -38,6 +38,7 @@ TABLES = TableSchema(
         Key("closeout", "text", "Products weighed and assayed at the end"),
         Key("sieves", "text", "Sieve tables by domain or test"),
         Key("bench", "texts", "Bench sheets as they are; a workbook without # is every one in it"),
+        Key("export", "texts", "Exports of a laboratory system: one row a sample and analyte"),
         Key("extraction", "text", "Extraction against time, where no bench sheet exists"),
     ),
 )

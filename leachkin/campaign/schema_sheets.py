@@ -7,6 +7,7 @@ from leachkin.tables import read_table
 from leachkin.testwork.answers import (
     CYANIDE_BASES,
     DATE_ORDERS,
+    DILUTIONS,
     LIME_BASES,
     MESH_SERIES,
     TONS,
@@ -46,6 +47,12 @@ SHEETS = TableSchema(
             "choice",
             "Each clock time without a date is the next one after the row above",
             choices=(WITHIN_A_DAY,),
+        ),
+        Key(
+            "dilution",
+            "choice",
+            "Whether the values of an export are multiplied by their dilution already",
+            choices=DILUTIONS,
         ),
         Key(
             "size_slope",

@@ -13,6 +13,7 @@ from leachkin.campaign.settings import Setting, Settings
 from leachkin.errors import InputProblems
 from leachkin.files import (
     WORKBOOK_ENDINGS,
+    Grid,
     Sheet,
     check_path_text,
     read_grid,
@@ -27,8 +28,11 @@ from leachkin.testwork import (
     Test,
     TestworkSettings,
     is_bench_sheet,
+    is_lab_export,
+    read_lab_export,
     read_tests,
     tables_of_bench_sheet,
+    test_names,
 )
 
 #: The sheets that hold bench tests; the extraction sheet is read on its own.
@@ -57,7 +61,46 @@ def read_sheets(
     for text in bench.value if bench is not None else ():
         with _told(problems, bench, file):
             _add_bench_sheets(text, folder, decimal_mark, sheets, problems)
+    export = settings.values.get("tables.export")
+    for text in export.value if export is not None else ():
+        with _told(problems, export, file):
+            grid = read_grid(text, folder, decimal_mark)
+            _add_export(grid, testwork_settings(settings), sheets, problems)
     return sheets, tuple(problems)
+
+
+def _add_export(
+    grid: Grid,
+    settings: TestworkSettings,
+    sheets: dict[str, list[Sheet]],
+    problems: list[Problem],
+) -> None:
+    """Put the assays of a laboratory export where their samples belong."""
+    problems.extend(grid.problems)
+    if not is_lab_export(grid):
+        raise InputProblems([no_lab_export(grid)])
+    tests = [name for sheet in sheets.get("tests", ()) for name in test_names(sheet)]
+    domains = [
+        c for s in sheets.get("tests", ()) if "domain" in s.header for c in s.column("domain")
+    ]
+    readings = sheets.get("readings", [])
+    found = read_lab_export(grid, tests, list(dict.fromkeys(domains)), readings, settings, problems)
+    sheets["readings"] = [found.replaced.get(sheet.file, sheet) for sheet in readings]
+    for name, sheet in found.tables.items():
+        sheets.setdefault(name, []).append(sheet)
+
+
+def no_lab_export(grid: Grid) -> Problem:
+    """Return the problem for a file that is named as an export and is none."""
+    return Problem(
+        grid.file,
+        grid.rows[0].number if grid.rows else None,
+        "",
+        "stop",
+        "this is no export with one row a sample and analyte",
+        "headings sample, analyte, value, unit; and if there are, qualifier, limit, dilution, type",
+        "a table with a column for each analyte goes under readings",
+    )
 
 
 @contextmanager
@@ -92,13 +135,9 @@ def _add_bench_sheets(
         raise InputProblems([no_bench_sheet(path)])
     for grid in bench:
         problems.extend(grid.problems)
-        taken = [c for sheet in sheets.get("tests", ()) for c in _names(sheet)]
+        taken = [c for sheet in sheets.get("tests", ()) for c in test_names(sheet)]
         for name, sheet in tables_of_bench_sheet(grid, problems, taken).items():
             sheets.setdefault(name, []).append(sheet)
-
-
-def _names(sheet: Sheet) -> list[str]:
-    return sheet.column("test") if "test" in sheet.header else []
 
 
 def no_bench_sheet(file: str) -> Problem:
@@ -174,6 +213,7 @@ def answers_of(settings: Settings) -> Answers:
         lime=settings.get("sheets.lime"),
         dates=settings.get("sheets.dates"),
         clock_times=settings.get("sheets.clock_times"),
+        dilution=settings.get("sheets.dilution"),
         size_slope=settings.get("sheets.size_slope"),
         stock_solutions=free("sheets.stock_solutions"),
     )

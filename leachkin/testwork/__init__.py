@@ -2,10 +2,18 @@
 
 from leachkin.testwork.answers import Answers
 from leachkin.testwork.balance import metal_balance
-from leachkin.testwork.bench_form import is_bench_sheet, tables_of_bench_sheet
+from leachkin.testwork.bench_form import is_bench_sheet, tables_of_bench_sheet, test_names
 from leachkin.testwork.explain import explain_balance
+from leachkin.testwork.lab_export import is_lab_export, read_lab_export
 from leachkin.testwork.names import EXAMPLE
 from leachkin.testwork.observe import observe, observed_from_extraction
+from leachkin.testwork.quality import (
+    DuplicatePair,
+    DuplicatePrecision,
+    QualityRecord,
+    pair_values,
+    precision_of_pairs,
+)
 from leachkin.testwork.read import domain_heads, read_tests
 from leachkin.testwork.reagent_use import ReagentUse, reagent_use
 from leachkin.testwork.records import (
@@ -29,12 +37,15 @@ __all__ = [
     "Answers",
     "Assays",
     "BalanceLimits",
+    "DuplicatePair",
+    "DuplicatePrecision",
     "Exclusion",
     "Head",
     "History",
     "MetalBalance",
     "Observed",
     "Product",
+    "QualityRecord",
     "ReagentUse",
     "SizeDistribution",
     "Test",
@@ -44,12 +55,17 @@ __all__ = [
     "explain_balance",
     "extraction_table",
     "is_bench_sheet",
+    "is_lab_export",
     "metal_balance",
     "observe",
     "observed_from_extraction",
+    "pair_values",
+    "precision_of_pairs",
+    "read_lab_export",
     "read_precision",
     "read_tests",
     "reagent_use",
     "tables_of_bench_sheet",
     "test_inventory",
+    "test_names",
 ]

@@ -14,6 +14,7 @@ MESH_SERIES = ("US", "Tyler", "BSS")
 CYANIDE_BASES = ("NaCN", "KCN", "CN")
 LIME_BASES = ("CaO", "Ca(OH)2")
 DATE_ORDERS = ("day first", "month first")
+DILUTIONS = ("applied", "to apply")
 WITHIN_A_DAY = "within a day"
 
 
@@ -48,6 +49,8 @@ class Answers:
         ``WITHIN_A_DAY``: a clock time is the next one after the row above.
     size_slope : float or None
         Slope of the distribution where only P80 is given.
+    dilution : "applied", "to apply" or None
+        Whether the values of a laboratory export are multiplied by their dilution already.
     stock_solutions : mapping of formula to float
         Strength of what was added by volume [g/L].
     """
@@ -65,4 +68,5 @@ class Answers:
     dates: str | None = None
     clock_times: str | None = None
     size_slope: float | None = None
+    dilution: str | None = None
     stock_solutions: Mapping[str, float] = field(default_factory=dict)

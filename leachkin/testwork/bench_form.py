@@ -57,6 +57,15 @@ class _Table:
         return Sheet(grid.file, header, header_row, rows, grid.decimal, (), grid.content, FORM)
 
 
+def test_names(sheet: Sheet) -> list[str]:
+    """Return the names of the tests in a sheet of tests."""
+    position = next((i for i, h in enumerate(sheet.header) if is_test_heading(h)), None)
+    return [] if position is None else [r.cells[position] for r in sheet.rows if r.cells[position]]
+
+
+test_names.__test__ = False  # type: ignore[attr-defined]  # not a test case for pytest
+
+
 def is_bench_sheet(grid: Grid) -> bool:
     """Return True where a sheet holds a table of readings that is read as a bench sheet."""
     return bool(find_blocks(grid))

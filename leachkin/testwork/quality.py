@@ -1,0 +1,208 @@
+"""Duplicates, standards and blanks of a laboratory, and the precision that duplicates show."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from scipy.optimize import minimize
+
+from leachkin.errors import UnitError
+from leachkin.files import parse_numeral
+from leachkin.files.numerals import DecimalMark
+from leachkin.problems import Problem
+from leachkin.testwork.records import Array
+from leachkin.units import convert
+
+_BLANK = re.compile(r"\b(?:blank|blk|method blank|reagent blank)\b", re.I)
+_STANDARD = re.compile(r"\b(?:standard|std|crm|reference material|control)\b", re.I)
+_DUPLICATE = re.compile(r"\b(?:dup|duplicate|repeat|rpt|replicate)\b", re.I)
+_FEWEST_PAIRS = 3  #: below which no precision is given
+_PAIRS_FOR_FLOOR = 8  #: below which the floor is not told from the part
+
+
+@dataclass(frozen=True)
+class QualityRecord:
+    """One assay of a blank, a standard or a duplicate, as it stands in the file.
+
+    Attributes
+    ----------
+    kind : str
+        "blank", "standard" or "duplicate".
+    sample, analyte, text, unit, expected : str
+        As written; ``expected`` is the certified value of a standard.
+    file : str
+    row : int
+    decimal : "." or ","
+    """
+
+    kind: str
+    sample: str
+    analyte: str
+    text: str
+    unit: str
+    expected: str
+    file: str
+    row: int
+    decimal: DecimalMark = "."
+
+    def value(self, target: str) -> float | None:
+        """Return the assay in a unit; None where it is no number or the unit does not fit."""
+        try:
+            return convert(parse_numeral(self.text, self.decimal), self.unit, target)
+        except (ValueError, UnitError):
+            return None
+
+
+@dataclass(frozen=True)
+class DuplicatePrecision:
+    """Standard deviation of one assay as floor + proportional * value, from pairs.
+
+    Attributes
+    ----------
+    floor, proportional : float
+        The floor in the unit of the pairs.
+    pairs : int
+    """
+
+    floor: float
+    proportional: float
+    pairs: int
+
+
+def kind_of_sample(kind: str, sample: str) -> str:
+    """Return "blank", "standard", "duplicate" or "" by the type given, else by the name.
+
+    Examples
+    --------
+    >>> kind_of_sample("CRM", "X1"), kind_of_sample("", "Reagent blank 2"), kind_of_sample("", "B1")
+    ('standard', 'blank', '')
+    """
+    for text in (kind, sample):
+        for name, pattern in (
+            ("blank", _BLANK),
+            ("standard", _STANDARD),
+            ("duplicate", _DUPLICATE),
+        ):
+            if text and pattern.search(text.replace("_", " ")):
+                return name
+    return ""
+
+
+def precision_of_pairs(first: Array, second: Array) -> DuplicatePrecision | None:
+    """Return the precision of one assay from pairs of duplicates, by maximum likelihood.
+
+    The difference of a pair is normal with variance 2 (floor + proportional * mean)^2. With few
+    pairs the floor is held at 0.
+
+    Parameters
+    ----------
+    first, second : ndarray, shape (n,)
+        Assays of the same samples, in one unit.
+
+    Returns
+    -------
+    DuplicatePrecision or None
+        None with fewer than three pairs above 0, or where no pair differs.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> found = precision_of_pairs(np.full(4, 1.0), np.full(4, 1.02))
+    >>> round(found.proportional, 4)
+    0.014
+    """
+    one, other = np.asarray(first, dtype=float), np.asarray(second, dtype=float)
+    good = np.isfinite(one + other) & (one + other > 0.0)
+    mean, difference = 0.5 * (one + other)[good], (one - other)[good]
+    if mean.size < _FEWEST_PAIRS or not np.any(difference):
+        return None
+    relative = float(np.sqrt(np.mean((difference / mean) ** 2) / 2.0))
+    if mean.size < _PAIRS_FOR_FLOOR:
+        return DuplicatePrecision(0.0, relative, int(mean.size))
+    floor, part = _most_likely(mean, difference, relative)
+    return DuplicatePrecision(floor, part, int(mean.size))
+
+
+def _most_likely(mean: Array, difference: Array, relative: float) -> tuple[float, float]:
+    """Floor and part of the greatest likelihood, both from 0 up."""
+    scale = float(np.median(mean))
+
+    def cost(parameters: Array) -> float:
+        sd = np.abs(parameters[0]) * scale + np.abs(parameters[1]) * mean
+        sd = np.maximum(sd, 1e-12 * scale)
+        return float(np.sum(np.log(sd) + difference**2 / (4.0 * sd**2)))
+
+    starts = ([0.1 * relative, relative], [relative, 0.1 * relative], [0.0, relative])
+    fits = [minimize(cost, start, method="Nelder-Mead") for start in starts]
+    best = np.abs(min(fits, key=lambda fit: float(fit.fun)).x)
+    return float(best[0]) * scale, float(best[1])
+
+
+@dataclass(frozen=True)
+class DuplicatePair:
+    """Two assays of one sample; ``kind`` is "solution", "head" or "tail" as in the precision."""
+
+    kind: str
+    first: QualityRecord
+    second: QualityRecord
+
+
+_UNITS = {"solution": "g/L", "head": "kg/t", "tail": "kg/t"}
+
+
+def pair_values(pairs: Sequence[DuplicatePair], kind: str) -> tuple[Array, Array]:
+    """Return the assays of the pairs of a kind [g/L or kg/t], those left out that are no numbers.
+
+    Returns
+    -------
+    first, second : ndarray, shape (n,)
+    """
+    unit = _UNITS[kind]
+    both = [(p.first.value(unit), p.second.value(unit)) for p in pairs if p.kind == kind]
+    known = [pair for pair in both if None not in pair]
+    array = np.array(known, dtype=float).reshape(len(known), 2)
+    return array[:, 0], array[:, 1]
+
+
+def quality_notes(
+    records: Sequence[QualityRecord], pairs: Sequence[DuplicatePair], file: str
+) -> list[Problem]:
+    """Return what blanks, standards and duplicates say, with the precision to paste."""
+    found = []
+    for kind, unit in _UNITS.items():
+        precision = precision_of_pairs(*pair_values(pairs, kind))
+        if precision is not None:
+            text = f"{100.0 * precision.proportional:.2g} %"
+            if precision.floor > 0.0:
+                text += f" + {precision.floor:.2g} {unit}"
+            words = f"{precision.pairs} pairs of {kind} assays agree with one standard deviation"
+            line = f'precision.{kind} = "{text}"'
+            try_this = f'write {kind} = "{text}" under [precision] in the settings'
+            found.append(Problem(file, None, "", "note", f"{words} of {text}", "", try_this, line))
+    if standards := [r for r in records if r.kind == "standard"]:
+        found.append(Problem(file, standards[0].row, "", "note", _of_standards(standards)))
+    if blanks := [r for r in records if r.kind == "blank"]:
+        words = ", ".join(f"{r.sample} {r.analyte} {r.text} {r.unit}" for r in blanks[:6])
+        found.append(Problem(file, blanks[0].row, "", "note", f"{len(blanks)} blanks: {words}"))
+    return found
+
+
+def _of_standards(standards: Sequence[QualityRecord]) -> str:
+    words = []
+    for record in standards:
+        value, expected = record.value(record.unit), _number(record.expected, record.decimal)
+        if value is not None and expected:
+            off = 100.0 * (value / expected - 1.0)
+            words.append(f"{record.sample} {record.analyte} {off:+.1f} %")
+    told = f", off the certified value by: {', '.join(words[:8])}" if words else ""
+    return f"{len(standards)} assays of standards{told}"
+
+
+def _number(text: str, decimal: DecimalMark) -> float | None:
+    try:
+        return parse_numeral(text, decimal)
+    except ValueError:
+        return None
