@@ -201,17 +201,25 @@ class _Resolver:
             self.problems.append(self._twice(heading, self.uses[key].heading))
 
     def _meaning_of(self, heading: str) -> tuple[_Meaning, str | None, Question | None] | None:
+        without_unit: tuple[_Meaning, str | None, Question | None] | None = None
         for name, spelling in heading_candidates(heading):
-            if meaning := self._field(name, spelling):
-                return meaning, spelling, None
-            if meaning := self._family(name):
-                return meaning, spelling, None
-            if self.settings is None:
+            found = self._named(name, spelling)
+            if found is None:
                 continue
-            trade, question = as_trade_name(name, self.settings, self.kind)
-            if trade != name and (meaning := self._family(trade)):
-                return meaning, spelling, question
-        return None
+            if spelling or not found[0].units or found[0].units == ("",):
+                return found[0], spelling, found[1]
+            without_unit = without_unit or (found[0], spelling, found[1])
+        return without_unit
+
+    def _named(self, name: str, spelling: str | None) -> tuple[_Meaning, Question | None] | None:
+        meaning = self._field(name, spelling) or self._family(name)
+        if meaning is not None:
+            return meaning, None
+        if self.settings is None:
+            return None
+        trade, question = as_trade_name(name, self.settings, self.kind)
+        meaning = self._family(trade) if trade != name else None
+        return None if meaning is None else (meaning, question)
 
     def _field(self, name: str, spelling: str | None) -> _Meaning | None:
         """The field of that name; of several, the one that the unit fits."""
@@ -379,6 +387,8 @@ def heading_candidates(heading: str) -> list[tuple[str, str | None]]:
     text = plain_text(heading)
     name, spelling = split_heading(text)
     found: list[tuple[str, str | None]] = [(name, spelling)]
+    if spelling is None and name.casefold().endswith("mesh"):
+        found.append((name, "mesh"))
     extra = ""
     if spelling is not None and not is_spelling(spelling.partition(" ")[0]):
         extra = spelling

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
@@ -19,10 +20,32 @@ from leachkin.testwork.sizes import SizeDistribution
 
 FIELDS = (
     Field("test", "test", names=TEST_NAMES),
-    Field("domain", "domain", names=("ore", "ore type", "domain or test")),
-    Field("aperture", "aperture (mm)", ("mm",), ("sieve", "size"), needed=True),
-    Field("retained", "retained (g)", ("g",), ("mass retained",), needed=True),
+    Field("domain", "domain", names=("ore", "ore type", "domain or test", "sample")),
+    Field(
+        "aperture",
+        "aperture (mm)",
+        ("mm",),
+        ("sieve", "size", "mesh", "screen", "sieve size", "opening"),
+        True,
+    ),
+    Field("retained", "retained (g)", ("g",), ("mass retained", "mass", "weight", "wt", "ret")),
+    Field("share", "retained (%)", ("1",), ("ret", "mass", "weight", "wt")),
+    Field(
+        "passing",
+        "passing (%)",
+        ("1",),
+        ("pass", "cum passing", "cumulative passing", "cum pass", "undersize"),
+    ),
+    Field(
+        "cumulative",
+        "cumulative retained (%)",
+        ("1",),
+        ("cum retained", "cum ret", "oversize"),
+    ),
 )
+_AMOUNTS = ("retained", "share", "passing", "cumulative")
+_TOTAL = re.compile(r"(?:grand )?(?:total|sum|calc(?:ulated)?\.? head|head)\b.*", re.I)
+_SUM_OFF = 0.02  #: how far shares may be from 100 % before they are asked about
 FAMILIES = (Family("assay", "{} (%)", ASSAYED, ("kg/t",), ("Cu", "Zn", "Au", "Ag")),)
 
 
@@ -53,37 +76,157 @@ def read_sieves_sheet(
         "" for a table that names neither.
     """
     uses = resolve_columns(sheet, FIELDS, FAMILIES, problems, settings, "sieves")
-    if not {"aperture", "retained"} <= set(uses):
+    if "aperture" not in uses or not set(_AMOUNTS) & set(uses):
+        if "aperture" in uses:
+            problems.append(_no_amount(sheet))
         return {}
-    reader = CellReader(
-        _pan_as_zero(sheet, uses["aperture"].position), uses, problems, settings.answers
-    )
-    aperture, retained = reader.numbers("aperture"), reader.numbers("retained")
+    plain = _without_totals(sheet, uses["aperture"].position, problems)
+    pans = _pan_as_zero(plain, uses["aperture"].position)
+    reader = CellReader(pans, uses, problems, settings.answers)
+    aperture = reader.numbers("aperture")
+    amounts = {k: v for k in _AMOUNTS if (v := reader.numbers(k)) is not None}
     assays = {
         name: found[0]
         for name in of_family(uses, "assay")
         if (found := reader.assays(f"assay:{name}")) is not None
     }
     reader.finish()
-    if aperture is None or retained is None:
+    if aperture is None:
         return {}
     tables = {}
     for name, rows in _groups(reader).items():
-        table = _table(rows, aperture, retained, assays, settings, reader)
+        retained = _retained(rows, aperture, amounts, reader)
+        table = None
+        if retained is not None:
+            table = _table(rows, aperture, retained, assays, settings, reader)
         if table is not None:
             tables[name] = table
     return tables
 
 
+def _no_amount(sheet: Sheet) -> Problem:
+    return Problem(
+        sheet.file,
+        sheet.header_row,
+        "",
+        "stop",
+        "there is no column of what stays on each sieve or passes it",
+        "retained (g), retained (%), cumulative retained (%) or passing (%)",
+        'add a column "retained (g)"',
+    )
+
+
+def _without_totals(sheet: Sheet, position: int, problems: list[Problem]) -> Sheet:
+    """The sheet without a row of totals, which is said."""
+    totals = [row for row in sheet.rows if _TOTAL.fullmatch(row.cells[position])]
+    if not totals:
+        return sheet
+    listed = ", ".join(f"{row.number} ({row.cells[position]!r})" for row in totals)
+    found = f"rows {listed} are left out, as totals"
+    problems.append(Problem(sheet.file, totals[0].number, "", "note", found))
+    return replace(sheet, rows=tuple(row for row in sheet.rows if row not in totals))
+
+
 def _pan_as_zero(sheet: Sheet, position: int) -> Sheet:
-    """The same sheet with the aperture of the pan written as 0."""
+    """The same sheet with the aperture of the pan written as 0; a last -75 is the pan too."""
     rows = []
     for row in sheet.rows:
-        if row.cells[position].casefold() in ("pan", "bottom"):
+        cell = row.cells[position].casefold()
+        below = re.fullmatch(r"[-<\u2212]\s*[0-9.,]+.*", cell) is not None
+        if cell in ("pan", "bottom", "fines", "undersize") or below:
             cells = (*row.cells[:position], "0", *row.cells[position + 1 :])
             row = replace(row, cells=cells)
         rows.append(row)
     return replace(sheet, rows=tuple(rows))
+
+
+def _retained(
+    rows: list[int], aperture: Array, amounts: Mapping[str, Array], reader: CellReader
+) -> Array | None:
+    """What stays on each sieve, from whichever column says it; None where it cannot be had."""
+    if "retained" in amounts and not np.isnan(amounts["retained"][rows]).all():
+        return amounts["retained"]
+    if "share" in amounts and not np.isnan(amounts["share"][rows]).all():
+        _ask_sum(rows, amounts["share"], reader)
+        return 100.0 * amounts["share"]
+    for key in ("passing", "cumulative"):
+        if key in amounts and not np.isnan(amounts[key][rows]).all():
+            return _from_cumulative(rows, aperture, amounts[key], key, reader)
+    return amounts.get("retained", amounts.get("share"))
+
+
+def _ask_sum(rows: list[int], share: Array, reader: CellReader) -> None:
+    total = float(np.nansum(share[rows]))
+    if abs(total - 1.0) > _SUM_OFF:
+        reader.problems.append(
+            Problem(
+                reader.sheet.file,
+                reader.sheet.rows[rows[0]].number,
+                reader.uses["share"].heading,
+                "ask",
+                f"the table sums to {100.0 * total:.1f} %: is the pan missing? Taken as the whole "
+                "meanwhile",
+                "98 to 102 % in all",
+                "add the pan, or correct the shares",
+            )
+        )
+
+
+def _from_cumulative(
+    rows: list[int], aperture: Array, values: Array, key: str, reader: CellReader
+) -> Array | None:
+    """What stays on each sieve, from cumulative passing or retained."""
+    size, share = aperture[rows], values[rows].copy()
+    order = np.argsort(size)[::-1]
+    pan = size == 0.0
+    share[pan & np.isnan(share)] = 0.0 if key == "passing" else 1.0
+    if np.isnan(size + share).any():
+        return values
+    steps = np.diff(share[order]) * (-1.0 if key == "passing" else 1.0)
+    is_passing = key == "passing"
+    if np.all(steps <= 0.0) and np.any(steps < 0.0):
+        reader.problems.append(_wrong_way(rows, key, reader))
+        is_passing = not is_passing
+    elif np.any(steps < -1e-9):
+        reader.problems.append(_not_monotone(rows[int(order[_first(steps)])], key, reader))
+        return None
+    passing = share[order] if is_passing else 1.0 - share[order]
+    passing[size[order] == 0.0] = 0.0
+    steps = np.diff(np.concatenate([[1.0], passing]))
+    retained = values.copy()
+    retained[np.asarray(rows)[order]] = np.maximum(-steps, 0.0) * 100.0
+    return retained
+
+
+def _wrong_way(rows: list[int], key: str, reader: CellReader) -> Problem:
+    what, other = ("passing", "retained") if key == "passing" else ("retained", "passing")
+    return Problem(
+        reader.sheet.file,
+        reader.sheet.rows[rows[0]].number,
+        reader.uses[key].heading,
+        "ask",
+        f"cumulative {what} rises with {'falling' if key == 'passing' else 'rising'} size: read as "
+        f"cumulative {other} meanwhile",
+        f"cumulative {what} that {'falls' if key == 'passing' else 'rises'} with falling size",
+        f'write the heading as "{"cumulative retained" if key == "passing" else "passing"} (%)"',
+    )
+
+
+def _first(steps: Array) -> int:
+    """Place after the first step that goes the wrong way."""
+    return int(np.flatnonzero(steps < -1e-9)[0]) + 1
+
+
+def _not_monotone(at: int, key: str, reader: CellReader) -> Problem:
+    return Problem(
+        reader.sheet.file,
+        reader.sheet.rows[at].number,
+        reader.uses[key].heading,
+        "stop",
+        "the cumulative column goes up and down",
+        "one direction from the coarsest sieve to the pan, between 0 and 100 %",
+        "look for a mistyped number, or give retained (g)",
+    )
 
 
 def _groups(reader: CellReader) -> dict[str, list[int]]:
@@ -130,7 +273,7 @@ def _incomplete(reader: CellReader, rows: list[int], total: Array) -> Problem:
     return Problem(
         reader.sheet.file,
         reader.sheet.rows[i].number,
-        reader.uses["retained"].heading,
+        next(reader.uses[key].heading for key in _AMOUNTS if key in reader.uses),
         "stop",
         "an aperture or a mass is missing, so the table has no shares",
         "a number in both cells of each row",

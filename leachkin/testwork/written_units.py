@@ -300,5 +300,5 @@ def known_meshes(series: str) -> list[str]:
 
 
 def apertures_of(series: str, meshes: Array) -> Array:
-    """Return apertures [mm] for mesh numbers, NaN for those that the series has not."""
-    return np.array([mesh_aperture_mm(series, f"{mesh:g}") for mesh in meshes])
+    """Return apertures [mm] for mesh numbers, 0 for 0 (the pan), NaN where the series has none."""
+    return np.array([mesh_aperture_mm(series, f"{m:g}") if m else 0.0 for m in meshes])
