@@ -57,7 +57,7 @@ from leachkin.kinetics.rank import (
     rank_laws,
     rank_tests,
 )
-from leachkin.kinetics.rank_spread import log_normal_of_p80, rank_tests_by_p80
+from leachkin.kinetics.rank_spread import rank_tests_by_p80
 from leachkin.kinetics.rate_law import RateLaw, knot_weights
 from leachkin.kinetics.reagent_balance import ReagentBalance
 from leachkin.kinetics.residual_checks import (
@@ -124,7 +124,6 @@ __all__ = [
     "need_table",
     "tests_of_need",
     "nested_test",
-    "log_normal_of_p80",
     "rank_tests_by_p80",
     "RankedLaw",
     "Ranking",

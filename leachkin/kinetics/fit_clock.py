@@ -128,7 +128,7 @@ class ClockPath:
         if ("time", which) in wanted:
             slopes[("time", which)] = -by_log if which.endswith("clock") else by_log
         if layout.has("spread", "sizes"):
-            sigma, by_spread = _ln_deviation(layout, full)
+            sigma, by_spread = (part[..., None] for part in layout.size_scale(full))
             covariates["size_exponent"] = el.ln_size + sigma * el.deviate
             exponent = full[..., layout.position("size_exponent", which), None]
             slopes[("spread", "sizes")] = by_log * exponent * by_spread * el.deviate
@@ -168,19 +168,12 @@ def ln_times(layout: Layout, elements: Elements, full: Array, which: str) -> Arr
     exponent = full[..., layout.position("size_exponent", which), None]
     found = ln_time + energy * elements.thermal + exponent * elements.ln_size
     if layout.has("spread", "sizes"):
-        found = found + exponent * _ln_deviation(layout, full)[0] * elements.deviate
+        found = found + exponent * layout.size_scale(full)[0][..., None] * elements.deviate
     if layout.has("stirring", which):
         found = found - full[..., layout.position("stirring", which), None] * elements.ln_stirring
     if layout.has("order", which):
         found = found - full[..., layout.position("order", which), None] * elements.ln_strength
     return np.asarray(found)
-
-
-def _ln_deviation(layout: Layout, full: Array) -> tuple[Array, Array]:
-    """Return the standard deviation of ln d and its derivative by the spread, each B + (1,)."""
-    spread = layout.natural(full, layout.position("spread", "sizes"))[..., None]
-    sigma = np.sqrt(np.log1p(spread * spread))
-    return sigma, spread / ((1.0 + spread * spread) * sigma)
 
 
 def drive_at_nodes(

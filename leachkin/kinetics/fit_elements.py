@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, fields
 
 import numpy as np
@@ -20,7 +20,7 @@ Array = NDArray[np.float64]
 GAUSS_NODES = 3
 #: A logged temperature that strays less than this from the test's own is that temperature [K].
 TEMPERATURE_SLACK_K = 0.5
-#: Equal masses that stand for a log-normal distribution whose spread is fitted.
+#: Classes that stand for a distribution whose spread is fitted.
 SPREAD_CLASSES = 41
 
 
@@ -52,7 +52,7 @@ class Elements:
     thermal, ln_size, ln_stirring, ln_strength : ndarray, shape (L,)
         Covariates of the times: the test's own temperature, size, stirring speed, strength.
     deviate : ndarray, shape (L,)
-        Of a fitted spread about the size that 80 % passes, in its standard deviations of ln d.
+        Of a fitted spread: ln(d/d80) for a spread of 1 in ln d.
     share : ndarray, shape (L,)
         Metal share of the class.
     weights : ndarray, shape (L, k)
@@ -98,8 +98,8 @@ def _flatten(observed: Observed, layout: Layout) -> dict[str, Array]:
         size, share = observed.sizes.size_mm, observed.sizes.metal_share
     deviate = np.zeros(size.size)
     if size.size == 1 and layout.has("spread", "sizes"):
-        deviate = spread_deviates()
-        size, share = np.repeat(size, deviate.size), np.full(deviate.size, 1.0 / deviate.size)
+        deviate, share = spread_classes(layout.size_family)
+        size = np.repeat(size, deviate.size)
     c = size.size
     if layout.knot_temperature_K is None:
         weights = knot_weights(size, layout.knot_size_mm)
@@ -122,12 +122,26 @@ def _flatten(observed: Observed, layout: Layout) -> dict[str, Array]:
     }
 
 
-def spread_deviates() -> Array:
-    """Return the deviates of equal masses of a log-normal distribution, less that of 80 %."""
+def spread_classes(family: str) -> tuple[Array, Array]:
+    """Return ln(d/d80) of classes for a spread of 1 in ln d, and their shares, by family.
+
+    ``ln d = ln d80 + sigma (q(F) - q(0.8))`` with F the share that passes: q is the normal
+    deviate of a log-normal distribution, ln F of Gates-Gaudin-Schuhmann (sigma 1/slope) and
+    ln(-ln(1-F)) of Rosin-Rammler (sigma 1/slope). Classes are finer at both ends:
+    F = u^2 (3 - 2u) at even u, whose shares make the midpoint rule exact to high order.
+    """
     from scipy.special import ndtri
 
-    middle = (np.arange(SPREAD_CLASSES) + 0.5) / SPREAD_CLASSES
-    return np.asarray(ndtri(middle) - ndtri(0.8))
+    quantile: dict[str, Callable[[Array], Array]] = {
+        "log_normal": ndtri,
+        "gates_gaudin_schuhmann": np.log,
+        "rosin_rammler": lambda passing: np.log(-np.log1p(-passing)),
+    }
+    u = (np.arange(SPREAD_CLASSES) + 0.5) / SPREAD_CLASSES
+    passing = u * u * (3.0 - 2.0 * u)
+    share = 6.0 * u * (1.0 - u)
+    deviate = quantile[family](passing) - quantile[family](np.asarray(0.8))
+    return np.asarray(deviate), share / share.sum()
 
 
 def _ln_ratio(value: float | None, reference: float | None) -> float:

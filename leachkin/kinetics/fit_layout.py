@@ -92,6 +92,7 @@ class Layout:
     drive_form: DriveForm = field(default_factory=DriveForm)
     drive_reference: Mapping[str, float] = field(default_factory=dict)
     knot_temperature_K: Array | None = None
+    size_family: str = "log_normal"
 
     @cached_property
     def free_index(self) -> NDArray[np.intp]:
@@ -169,6 +170,14 @@ class Layout:
     def drive_key(name: str) -> Key:
         """Return the role of a parameter of the drive, and of what."""
         return ("order", "reagent") if name == "reagent_order" else ("drive", name)
+
+    def size_scale(self, full: Array) -> tuple[Array, Array]:
+        """Return the spread in ln d and its derivative by the fitted spread or slope, shape B."""
+        value = self.natural(full, self.position("spread", "sizes"))
+        if self.size_family == "log_normal":
+            sigma = np.sqrt(np.log1p(value * value))
+            return sigma, value / ((1.0 + value * value) * sigma)
+        return 1.0 / value, -1.0 / (value * value)
 
     def warmed_kind(self, part: str) -> str | None:
         """Return the one resistance of a fraction, whose clock can follow a temperature."""

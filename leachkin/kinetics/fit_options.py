@@ -45,6 +45,7 @@ class FitOptions:
     terms: Collection[str] = ()
     slow_law: str | None = None
     spread: float | Literal["free"] | None = None
+    size_family: str = "log_normal"
     balances: Mapping[str, ReagentBalance] = field(default_factory=dict)
     level: float = 0.95
     time_unit: str = "h"

@@ -75,6 +75,7 @@ def layout_of(options: FitOptions, tests: Sequence[Observed]) -> tuple[Layout, t
         box=box_of(tests, spread, reference),
         drive_form=options.drive,
         knot_temperature_K=kelvin,
+        size_family=options.size_family,
     )
     bare = replace(bare, drive_reference=drive_reference_of(options.drive, tests, bare))
     quantities = [
@@ -86,7 +87,7 @@ def layout_of(options: FitOptions, tests: Sequence[Observed]) -> tuple[Layout, t
         *_heads(tests),
     ]
     if options.spread is not None:
-        quantities.append(spread_quantity(options.spread))
+        quantities.append(spread_quantity(options.spread, options.size_family))
     if options.slow_law is not None:
         slow = canonical_law(options.slow_law)
         terms = law_terms(slow)

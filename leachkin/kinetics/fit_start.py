@@ -32,6 +32,11 @@ SHAPE_STARTS: dict[str, tuple[float, ...]] = {
     "ratio": (8.0, 60.0),
     "slope": (0.05, 0.2),
 }
+SPREAD_STARTS: dict[str, tuple[float, ...]] = {
+    "log_normal": (0.35, 0.6, 1.0),
+    "gates_gaudin_schuhmann": (0.6, 1.0, 2.0),
+    "rosin_rammler": (0.8, 1.4, 2.5),
+}
 
 
 def rough_extraction(observed: Observed) -> Array:
@@ -125,6 +130,7 @@ def _grid(
     totals = np.linspace(*reach, time_points)
     energies = ENERGY_STARTS_kJ_per_mol if _free(layout, "activation_energy") else (0.0,)
     shapes = [SHAPE_STARTS[name.removeprefix(f"{SLOW} ")] for name in _free(layout, "shape")]
+    shapes += [SPREAD_STARTS[layout.size_family] for _ in _free(layout, "spread")]
     combinations = list(product(totals, energies, *shapes))
     starts = layout.starts[layout.free_index]
     vectors = np.tile(starts, (len(combinations), 1))
@@ -138,7 +144,7 @@ def _grid(
             vectors[:, j] = sign * (table[:, 0] + share[quantity.which])
         elif quantity.role == "activation_energy":
             vectors[:, j] = table[:, 1]
-        elif quantity.role == "shape":
+        elif quantity.role in ("shape", "spread"):
             vectors[:, j] = from_natural(quantity.scale, table[:, shape_column])
             shape_column += 1
     low = np.array([q.low for q in layout.free])

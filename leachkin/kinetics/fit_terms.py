@@ -34,7 +34,12 @@ _DRIVE_STARTS: dict[str, tuple[Scale, float, float, float]] = {
     "preference": ("log", 1.0, 1e-4, 1e4),
     "saturation": ("log", 1.0, 1e-4, 1e4),
 }
-SPREAD_BOUNDS = (0.02, 3.0)
+#: Distributions about P80: name of the fitted quantity, start, low and high.
+SIZE_FAMILIES: dict[str, tuple[str, float, float, float]] = {
+    "log_normal": ("spread", 0.6, 0.02, 3.0),
+    "gates_gaudin_schuhmann": ("size_slope", 0.8, 0.2, 20.0),
+    "rosin_rammler": ("size_slope", 1.1, 0.25, 20.0),
+}
 STIRRING_START, STIRRING_BOUNDS = 0.5, (-1.0, 3.0)
 
 
@@ -207,13 +212,17 @@ def term_quantities(terms: Collection[str], tests: Sequence[Observed], unit: str
     return found
 
 
-def spread_quantity(asked: float | str) -> Quantity:
-    """Return the spread of sizes within a test: standard deviation over mean, log-normal."""
+def spread_quantity(asked: float | str, family: str) -> Quantity:
+    """Return the spread of sizes within a test: standard deviation over mean, or the slope."""
+    if family not in SIZE_FAMILIES:
+        problem = unknown_name("family", family, SIZE_FAMILIES, column="size_family")
+        raise InputProblems([problem])
+    name, start, low, high = SIZE_FAMILIES[family]
     free = asked == "free"
-    value = 0.6 if isinstance(asked, str) else float(asked)
-    if not (free or SPREAD_BOUNDS[0] <= value <= SPREAD_BOUNDS[1]):
-        raise argument_error("spread", f"{asked}", f"{SPREAD_BOUNDS[0]:g} to {SPREAD_BOUNDS[1]:g}")
-    return quantity("spread", "spread", "sizes", "log", value, SPREAD_BOUNDS, free=free)
+    value = start if isinstance(asked, str) else float(asked)
+    if not (free or low <= value <= high):
+        raise argument_error("spread", f"{asked}", f"{low:g} to {high:g}")
+    return quantity(name, "spread", "sizes", "log", value, (low, high), free=free)
 
 
 def share_quantity() -> Quantity:

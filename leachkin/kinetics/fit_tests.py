@@ -55,6 +55,7 @@ def fit_tests(
     terms: Collection[str] = (),
     slow_law: str | None = None,
     spread: float | Literal["free"] | None = None,
+    size_family: str = "log_normal",
     balances: Mapping[str, ReagentBalance] | None = None,
     level: float = 0.95,
 ) -> FitResult:
@@ -93,8 +94,10 @@ def fit_tests(
     slow_law : str, optional
         Law of a second, slower fraction of the leachable metal.
     spread : float or "free", optional
-        Of tests with one size each, taken as the one that 80 % of the mass passes: log-normal
-        by mass about it, standard deviation over mean. Left out, that size is all there is.
+        Of tests with one size each, taken as the one that 80 % of the mass passes: standard
+        deviation over mean of a log-normal distribution, or the slope of another family. Left
+        out, that size is all there is.
+    size_family : "log_normal", "gates_gaudin_schuhmann" or "rosin_rammler"
     balances : mapping of test to ReagentBalance, optional
         Where the strength was not titrated: it follows from the extraction itself.
     level : float
@@ -131,6 +134,7 @@ def fit_tests(
         terms=tuple(terms),
         slow_law=slow_law,
         spread=spread,
+        size_family=size_family,
         balances=dict(balances or {}),
         level=level,
     )

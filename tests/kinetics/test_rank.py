@@ -12,12 +12,12 @@ from leachkin.kinetics import (
     Resistance,
     contains,
     in_words,
-    log_normal_of_p80,
     rank_laws,
     rank_tests,
     rank_tests_by_p80,
     simulate_observed,
 )
+from leachkin.kinetics.fit_elements import spread_classes
 from leachkin.testwork import SizeDistribution
 
 HOURS = np.array([1, 2, 4, 8, 12, 18, 24, 36, 48, 72.0])
@@ -110,19 +110,35 @@ def test_every_mechanism_has_words():
 def spread_bottles(spread):
     made = []
     for p80_mm in (1.5, 6.0):
-        sizes = log_normal_of_p80(p80_mm, spread)
+        median = p80_mm * np.exp(-0.841621 * np.sqrt(np.log1p(spread**2)))
+        sizes = SizeDistribution.log_normal(float(median), spread, 31)
         made += [Bottle(f"{p80_mm}_{c}", sizes, 273.15 + c, 2 * HOURS, 20.0) for c in (25, 55)]
     return made
 
 
-def test_log_normal_sizes_have_the_p80_asked_for():
+def test_classes_of_a_fitted_spread_have_the_p80_and_the_mean_asked_for():
     # 80 % below the 0.8 quantile of the normal distribution, 0.841621 (any printed table)
-    sizes = log_normal_of_p80(3.0, 0.7)
+    deviate, share = spread_classes("log_normal")
     width = np.sqrt(np.log1p(0.49))
-    middle = np.log(3.0) - 0.841621 * width
-    assert_allclose(sizes.mass_share @ np.log(sizes.size_mm), middle, atol=0.005)
-    mean = np.exp(middle + 0.5 * width**2)
-    assert_allclose(sizes.mass_mean_mm, mean, rtol=1e-6)
+    assert_allclose(share @ deviate, -0.841621, atol=1e-5)
+    mean = np.exp(-0.841621 * width + 0.5 * width**2)
+    assert_allclose(share @ np.exp(width * deviate), mean, rtol=2e-3)
+
+
+@pytest.mark.parametrize("slope", [0.65, 1.3])
+def test_families_by_slope_against_their_printed_forms(slope):
+    """Passing (d/top)^m of Gates-Gaudin-Schuhmann; 1 - exp(-(d/d')^n) of Rosin-Rammler.
+
+    Means by their closed forms: m/(m+1) of the top size, and d' Gamma(1 + 1/n).
+    """
+    from scipy.special import gamma
+
+    deviate, share = spread_classes("gates_gaudin_schuhmann")
+    top = 0.8 ** (-1.0 / slope)  # in units of the 80 % size
+    assert_allclose(share @ np.exp(deviate / slope), top * slope / (slope + 1.0), rtol=1e-3)
+    deviate, share = spread_classes("rosin_rammler")
+    scale = (-np.log(0.2)) ** (-1.0 / slope)
+    assert_allclose(share @ np.exp(deviate / slope), scale * gamma(1 + 1 / slope), rtol=3e-3)
 
 
 def test_a_spread_that_is_not_known_is_fitted_and_counted():
@@ -132,10 +148,13 @@ def test_a_spread_that_is_not_known_is_fitted_and_counted():
     )
     tests = simulate_observed(truth, spread_bottles(0.8), head_kg_per_t=6.8, seed=1)
     p80_mm = [1.5, 1.5, 6.0, 6.0]
-    ranking = rank_tests_by_p80(tests, p80_mm, ["chemical", "ash_layer"], ultimate="one")
+    laws = ["chemical", "ash_layer"]
+    assert rank_tests_by_p80(tests, p80_mm, laws, ultimate="one").mechanisms == ("chemical",)
+    ranking = rank_tests_by_p80(tests, p80_mm, laws, families=["log_normal"], ultimate="one")
     assert ranking.mechanisms == ("chemical",)
-    said = next(w for w in ranking.best.warnings if w.startswith("spread of sizes"))
-    assert abs(float(said.split()[-1]) - 0.8) < 0.12
+    spread = ranking.best.parameter("spread")
+    assert abs(spread.value - 0.8) < 3.5 * spread.standard_error
+    assert f"log normal, spread {spread.value:.2g}" in ranking.best.warnings[-1]
     known = rank_tests(tests, ["chemical"], ultimate="one").best
     assert ranking.best.degrees_of_freedom == known.degrees_of_freedom - 1
     assert ranking.best.aicc - known.aicc < 4.0  # one quantity more, a little better fit
