@@ -154,9 +154,10 @@ class Estimate:
         column = inward * self.jacobian[:, j] / slope
         allowance = self.multiplier(level, sides=1) ** 2 * self.scatter_variance
         reach = one_sided_reach(self.residuals, self.jacobian[:, free], column, allowance)
-        if not np.isfinite(reach):
+        end = value + inward * reach
+        if not _possible(self.scales[j], end):
             return None, None
-        return (None, value + reach) if inward > 0 else (value - reach, None)
+        return (None, end) if inward > 0 else (end, None)
 
     def _reason(self, j: int) -> str:
         if not self.converged:
@@ -166,3 +167,10 @@ class Estimate:
         if self.degrees_of_freedom < 1:
             return "as many quantities as points: no scatter to judge by"
         return "the data say no more than its order of magnitude"
+
+
+def _possible(scale: Scale, value: float) -> bool:
+    """Return whether a natural value can stand on a scale: a share lies between 0 and 1."""
+    if scale == "linear":
+        return bool(np.isfinite(value))
+    return bool(np.isfinite(value)) and value > 0.0 and (scale == "log" or value < 1.0)

@@ -22,7 +22,12 @@ from leachkin.kinetics.fit_result import FitResult, Parameter, Residual
 from leachkin.kinetics.fit_tests import fit_tests
 from leachkin.kinetics.gangue import GangueFit, GangueLaw, GangueReadings, fit_gangue
 from leachkin.kinetics.grain_path import extraction_along
-from leachkin.kinetics.intervals import bootstrap_tests, fit_problem, profile_intervals
+from leachkin.kinetics.interval_methods import (
+    INTERVAL_METHODS,
+    fit_with_intervals,
+    intervals_differ,
+)
+from leachkin.kinetics.intervals import fit_problem, profile_intervals
 from leachkin.kinetics.leave_out import LeftOut, leave_one_out, left_out_table
 from leachkin.kinetics.need import TERM_OPTIONS, TermTest, need_table, tests_of_need
 from leachkin.kinetics.nested import NestedTest, nested_test
@@ -48,6 +53,7 @@ from leachkin.kinetics.particle_law import (
     conversion_and_log_sensitivities,
     particle_conversion,
 )
+from leachkin.kinetics.posterior import FitPosterior, posterior_tests
 from leachkin.kinetics.rank import (
     DEFAULT_LAWS,
     RankedLaw,
@@ -60,6 +66,7 @@ from leachkin.kinetics.rank import (
 from leachkin.kinetics.rank_spread import rank_tests_by_p80
 from leachkin.kinetics.rate_law import RateLaw, knot_weights
 from leachkin.kinetics.reagent_balance import ReagentBalance
+from leachkin.kinetics.resampled import bootstrap_fit, bootstrap_parameter, bootstrap_tests
 from leachkin.kinetics.residual_checks import (
     ResidualChecks,
     RunsTest,
@@ -90,12 +97,19 @@ __all__ = [
     "straightened_time",
     "Layout",
     "Quantity",
+    "FitPosterior",
     "FitResult",
     "Parameter",
     "Residual",
     "fit_tests",
+    "INTERVAL_METHODS",
+    "fit_with_intervals",
+    "intervals_differ",
+    "bootstrap_fit",
+    "bootstrap_parameter",
     "bootstrap_tests",
     "fit_problem",
+    "posterior_tests",
     "profile_intervals",
     "GangueFit",
     "GangueLaw",

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from leachkin.errors import InputProblems
-from leachkin.inference import Estimate, draw_vectors
+from leachkin.inference import Estimate, Posterior, draw_vectors
 from leachkin.kinetics.fit_design import FitDesign
 from leachkin.kinetics.fit_layout import Layout
 from leachkin.kinetics.rate_law import RateLaw
@@ -34,6 +34,8 @@ class Parameter:
         Of the interval.
     method : str
         How the interval was made; "held" for a value that was not fitted.
+    remark : str
+        Where another method tells something else.
     """
 
     name: str
@@ -45,6 +47,7 @@ class Parameter:
     level: float
     method: str
     why_no_interval: str = ""
+    remark: str = ""
 
 
 @dataclass(frozen=True)
@@ -98,6 +101,8 @@ class FitResult:
         The least-squares estimate behind it.
     design : FitDesign or None
         The residual function of the fit, for intervals that fit again.
+    sampled : Posterior or None
+        Draws of the posterior, where that was asked for.
     """
 
     law: RateLaw
@@ -121,6 +126,7 @@ class FitResult:
     layout: Layout
     estimate: Estimate
     design: FitDesign | None = None
+    sampled: Posterior | None = None
 
     @property
     def law_name(self) -> str:
@@ -149,8 +155,11 @@ class FitResult:
         """Return n draws of the fitted vector, shape (n, p), seeded.
 
         Normal with the covariance where the precision was stated, Student's t where the scatter
-        was estimated; a quantity at its bound or not held stays at its value.
+        was estimated; a quantity at its bound or not held stays at its value. Where the posterior
+        was sampled the draws are those.
         """
+        if self.sampled is not None:
+            return self.sampled.draw_vectors(n, seed)
         low = np.array([q.low for q in self.layout.free])
         high = np.array([q.high for q in self.layout.free])
         freedom = self.estimate.student_degrees
@@ -204,7 +213,11 @@ class FitResult:
             Column("method", "Interval"),
             Column("why_no_interval", "Remark"),
         )
-        records = [{"parameter": p.name, **vars(p)} for p in self.parameters if not _is_filler(p)]
+        records = [
+            {"parameter": p.name, **vars(p), "why_no_interval": _remark(p)}
+            for p in self.parameters
+            if not _is_filler(p)
+        ]
         return ResultTable.from_records("parameters", columns, records)
 
     def residual_table(self) -> ResultTable:
@@ -226,6 +239,11 @@ class FitResult:
         """Unit of time of the fit; "" for a curve in a unit of its own."""
         units = {q.unit for q in self.layout.quantities if q.role == "time"}
         return units.pop().removeprefix("1/") if units else ""
+
+
+def _remark(parameter: Parameter) -> str:
+    said = (parameter.why_no_interval, parameter.remark)
+    return "; ".join(text for text in said if text)
 
 
 def _is_filler(parameter: Parameter) -> bool:

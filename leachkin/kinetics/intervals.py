@@ -1,25 +1,29 @@
-"""Intervals of a fit that do not rest on a straightened model: by profile, and by bottle."""
+"""Intervals of a fit by profile likelihood: they do not rest on a straightened model."""
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from dataclasses import replace
-from typing import Any
+from collections.abc import Sequence
 
 import numpy as np
 
-from leachkin.errors import InputProblems
-from leachkin.inference import (
-    Bootstrap,
-    Interval,
-    LeastSquaresProblem,
-    bootstrap_intervals,
-    profile_interval,
-)
+from leachkin.inference import LeastSquaresProblem, profile_interval
+from leachkin.kinetics.fit_design import FitDesign
 from leachkin.kinetics.fit_result import FitResult, Parameter
-from leachkin.kinetics.fit_tests import fit_tests
+from leachkin.kinetics.fit_values import quantity_names, with_interval
 from leachkin.problems import argument_error
-from leachkin.testwork import Observed
+
+
+def design_of(fit: FitResult) -> FitDesign:
+    """Return the residual function of a fit.
+
+    Raises
+    ------
+    InputProblems
+        For a fit that does not carry it.
+    """
+    if fit.design is None:
+        raise argument_error("fit", "a fit without its design", "a result of fit_tests")
+    return fit.design
 
 
 def fit_problem(fit: FitResult) -> LeastSquaresProblem:
@@ -30,15 +34,14 @@ def fit_problem(fit: FitResult) -> LeastSquaresProblem:
     InputProblems
         For a fit that does not carry its design.
     """
-    if fit.design is None:
-        raise argument_error("fit", "a fit without its design", "a result of fit_tests")
+    design = design_of(fit)
     free = fit.layout.free
     return LeastSquaresProblem(
         names=tuple(q.name for q in free),
         start=fit.vector,
         low=np.array([q.low for q in free]),
         high=np.array([q.high for q in free]),
-        residuals_and_jacobian=fit.design.residuals_and_jacobian,
+        residuals_and_jacobian=design.residuals_and_jacobian,
         scales=tuple(q.scale for q in free),
         stated=fit.estimate.stated,
     )
@@ -71,82 +74,13 @@ def profile_intervals(
     asked = fit.level if level is None else level
     free = {q.name: j for j, q in enumerate(fit.layout.free)}
     if names is None:
-        names = [q.name for q in fit.layout.free if q.role != "head"]
+        names = list(quantity_names(fit.layout))
     problem = fit_problem(fit)
     found = []
     for name in names:
         parameter = fit.parameter(name)
         if name in free:
             interval = profile_interval(problem, fit.estimate, free[name], asked)
-            parameter = _with_interval(parameter, interval)
+            parameter = with_interval(parameter, interval, error=False)
         found.append(parameter)
     return tuple(found)
-
-
-def _with_interval(parameter: Parameter, interval: Interval) -> Parameter:
-    return replace(
-        parameter,
-        standard_error=parameter.standard_error,
-        low=interval.low,
-        high=interval.high,
-        level=interval.level,
-        method=interval.method,
-        why_no_interval=interval.why_not,
-    )
-
-
-def bootstrap_tests(
-    observed: Sequence[Observed], law: str, *, n: int, seed: int, **options: Any
-) -> Bootstrap:
-    """Return fits of tests drawn again with replacement, all at the reference of the first fit.
-
-    Parameters
-    ----------
-    observed : sequence of Observed
-        Tests (bottles) of one ore and one metal.
-    law : str
-    n, seed : int
-        Resamples, and their seed.
-    **options
-        As in ``fit_tests``.
-
-    Returns
-    -------
-    Bootstrap
-        Of all fitted parameters but the heads; ``.interval(name)`` gives the percentile interval.
-        A resample that lacks a size or a temperature does not give the parameters that need it.
-
-    Raises
-    ------
-    InputProblems
-        As ``fit_tests``, or where the tests as they are do not converge.
-    """
-    tests = tuple(observed)
-    first = fit_tests(tests, law, **options)
-    options = {**options, "reference": first.layout.reference}
-    whole = _fitted_values(first)
-
-    def refit(picked: tuple[int, ...]) -> Mapping[str, float] | None:
-        if picked == tuple(range(len(tests))):
-            return whole
-        try:
-            return _fitted_values(fit_tests(_renamed(tests, picked), law, **options))
-        except InputProblems:  # too few readings left, or a fixed= name that is not there
-            return None
-
-    return bootstrap_intervals(refit, len(tests), n, seed)
-
-
-def _renamed(tests: tuple[Observed, ...], picked: tuple[int, ...]) -> tuple[Observed, ...]:
-    """Return the tests drawn, repeats under names of their own: each keeps its own head."""
-    return tuple(
-        replace(tests[i], test=f"{tests[i].test} (draw {k + 1})") for k, i in enumerate(picked)
-    )
-
-
-def _fitted_values(fit: FitResult) -> Mapping[str, float] | None:
-    """Return fitted parameters but the heads by name; None where the fit did not converge."""
-    if not fit.converged:
-        return None
-    fitted = (q.name for q in fit.layout.free if q.role != "head")
-    return {name: fit.parameter(name).value for name in fitted}
