@@ -57,10 +57,9 @@ class Problem:
 
     def __str__(self) -> str:
         text = f"{self.where}: {self.found}" if self.where else self.found
-        if self.allowed:
-            text += f". Allowed: {self.allowed}"
-        if self.try_this:
-            text += f". Try: {self.try_this}"
+        for word, part in (("Allowed", self.allowed), ("Try", self.try_this)):
+            if part:
+                text += f"{'' if text.endswith('?') else '.'} {word}: {part}"
         return text.replace("..", ".") if text.count("..") == 1 else text
 
     def at(self, *, file: str = "", row: int | None = None, column: str = "") -> Problem:

@@ -31,7 +31,7 @@ from leachkin.files import (
 )
 from leachkin.problems import Problem, stop_if_any
 from leachkin.run_record import sha256_of
-from leachkin.testwork import Observed, Test, is_bench_sheet, is_lab_export
+from leachkin.testwork import Observed, Test, is_bench_sheet, is_column_log, is_lab_export
 
 
 @dataclass(frozen=True)
@@ -141,6 +141,9 @@ def _of_workbook(place: Path, overrides: dict[str, str]) -> Campaign:
     bench = [f"{place.name}#{grid.tab}" for grid in rest if is_bench_sheet(grid)]
     if bench and "bench" not in tables and "tests" not in tables:
         document.data.setdefault("tables", tables)["bench"] = bench
+    logs = [f"{place.name}#{grid.tab}" for grid in rest if is_column_log(grid)]
+    if logs:
+        document.data.setdefault("tables", tables).setdefault("column_log", logs)
     exports = [f"{place.name}#{grid.tab}" for grid in rest if is_lab_export(grid)]
     if exports:
         document.data.setdefault("tables", tables).setdefault("export", exports)

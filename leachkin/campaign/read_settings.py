@@ -364,8 +364,8 @@ def _example(key: Key) -> str:
 def _default_tables(walk: _Walk) -> Iterator[str]:
     """The tables whose defaults act: those in the file, and precision and fit with tests."""
     yield from walk.tables
-    tested = {"tables.tests", "tables.bench", "tables.extraction"} & set(walk.values)
-    if tested:
+    measured = ("tests", "bench", "column_log", "extraction")
+    if {f"tables.{name}" for name in measured} & set(walk.values):
         yield from ({"precision", "fit"} - walk.tables)
 
 

@@ -39,6 +39,7 @@ TABLES = TableSchema(
         Key("sieves", "text", "Sieve tables by domain or test"),
         Key("bench", "texts", "Bench sheets as they are; a workbook without # is every one in it"),
         Key("export", "texts", "Exports of a laboratory system: one row a sample and analyte"),
+        Key("column_log", "texts", "Daily logs of columns: day, feed, PLS and its assay"),
         Key("extraction", "text", "Extraction against time, where no bench sheet exists"),
     ),
 )

@@ -27,7 +27,9 @@ from leachkin.testwork import (
     Observed,
     Test,
     TestworkSettings,
+    extraction_of_column_log,
     is_bench_sheet,
+    is_column_log,
     is_lab_export,
     read_lab_export,
     read_tests,
@@ -66,6 +68,15 @@ def read_sheets(
         with _told(problems, export, file):
             grid = read_grid(text, folder, decimal_mark)
             _add_export(grid, testwork_settings(settings), sheets, problems)
+    logs = settings.values.get("tables.column_log")
+    for text in logs.value if logs is not None else ():
+        with _told(problems, logs, file):
+            grid = read_grid(text, folder, decimal_mark)
+            problems.extend(grid.problems)
+            if not is_column_log(grid):
+                raise InputProblems([no_column_log(grid)])
+            made = extraction_of_column_log(grid, problems)
+            sheets.setdefault("extraction", []).extend([] if made is None else [made])
     return sheets, tuple(problems)
 
 
@@ -150,6 +161,19 @@ def no_bench_sheet(file: str) -> Problem:
         "no table of readings was found",
         "a row of headings with a time and at least two more, and readings under it",
         'write the headings in one row, as "Time h", "pH", "Cu mg/L"',
+    )
+
+
+def no_column_log(grid: Grid) -> Problem:
+    """Return the problem for a file that is named as a column log and is none."""
+    return Problem(
+        grid.file,
+        grid.rows[0].number if grid.rows else None,
+        "",
+        "stop",
+        "this is no daily log of a column",
+        "a row of headings with Day and PLS L",
+        'write the headings in one row, as "Day", "Feed L", "PLS L", "PLS Cu g/L"',
     )
 
 

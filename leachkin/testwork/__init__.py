@@ -3,6 +3,7 @@
 from leachkin.testwork.answers import Answers
 from leachkin.testwork.balance import metal_balance
 from leachkin.testwork.bench_form import is_bench_sheet, tables_of_bench_sheet, test_names
+from leachkin.testwork.column_log import extraction_of_column_log, is_column_log
 from leachkin.testwork.explain import explain_balance
 from leachkin.testwork.lab_export import is_lab_export, read_lab_export
 from leachkin.testwork.names import EXAMPLE
@@ -53,8 +54,10 @@ __all__ = [
     "balance_table",
     "domain_heads",
     "explain_balance",
+    "extraction_of_column_log",
     "extraction_table",
     "is_bench_sheet",
+    "is_column_log",
     "is_lab_export",
     "metal_balance",
     "observe",

@@ -178,7 +178,7 @@ def _fill(block: Block, rows: Sequence[SheetRow], start: int, end: int) -> int:
             block.rows.append(row)
             last_read = place
             continue
-        pairs = _pairs_of_row(row, block.first, block.last)
+        pairs = pairs_of_row(row, block.first, block.last)
         if pairs and is_footer(pairs):
             in_table = False
             block.pairs += pairs
@@ -209,10 +209,11 @@ def is_footer(pairs: Sequence[Pair]) -> bool:
 def _pairs(rows: Sequence[SheetRow], block: Block, side_by_side: bool) -> list[Pair]:
     last = block.last if side_by_side else max((len(r.cells) for r in rows), default=0)
     first = block.first if side_by_side else 0
-    return [pair for row in rows for pair in _pairs_of_row(row, first, last)]
+    return [pair for row in rows for pair in pairs_of_row(row, first, last)]
 
 
-def _pairs_of_row(row: SheetRow, first: int, last: int) -> list[Pair]:
+def pairs_of_row(row: SheetRow, first: int, last: int) -> list[Pair]:
+    """Return the labels of a row that have a value beside them, in some columns."""
     cells = [row.cells[i] if i < len(row.cells) else "" for i in range(first, last)]
     pairs: list[Pair] = []
     i = 0

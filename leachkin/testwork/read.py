@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
@@ -19,6 +20,7 @@ from leachkin.testwork.records import Array, Exclusion, Head, History, Product, 
 from leachkin.testwork.recursion import solution_ledger
 from leachkin.testwork.settings import TestworkSettings
 from leachkin.testwork.sieves_sheet import SieveTable, read_sieves_sheet
+from leachkin.testwork.suspicious import suspicions
 from leachkin.testwork.tests_sheet import ROOM_TEMPERATURE_K, TestRow, read_tests_sheet
 from leachkin.testwork.written_sizes import sizes_of_row
 
@@ -96,22 +98,29 @@ def read_tests(
         rows |= read_tests_sheet(sheet, settings, problems, rows)
     parts = _read_parts(tables, settings, rows, problems)
     tests = [_test(row, parts, settings, problems) for row in rows.values()]
+    problems.extend(suspicions(tests))
     problems.extend(_exclusion_problems(settings, tests))
     return tuple(_with_their_problems(tests, problems)), tuple(problems)
 
 
+_SUMMARY = re.compile(r"(?:avg|average|mean|(?:grand )?total|sum|st\.? ?dev|min|max)\b.*", re.I)
+
+
 def _without_examples(sheet: Sheet, problems: list[Problem]) -> Sheet:
-    """The sheet without the rows that show how to fill it in."""
+    """The sheet without the rows that show how to fill it in, and those of averages and sums."""
     named = [i for i, h in enumerate(sheet.header) if is_test_heading(h) or h == "domain"]
-    shown = [
-        row for row in sheet.rows if any(row.cells[i].upper().startswith(EXAMPLE) for i in named)
-    ]
-    if not shown:
+    left: set[int] = set()
+    for words, matches in (
+        ("as an example", lambda cell: cell.upper().startswith(EXAMPLE)),
+        ("as averages and sums", lambda cell: _SUMMARY.fullmatch(cell) is not None),
+    ):
+        rows = [r.number for r in sheet.rows if any(matches(r.cells[i]) for i in named)]
+        if rows:
+            found = f"rows {', '.join(map(str, rows))} are left out {words}"
+            problems.append(Problem(sheet.file, rows[0], "", "note", found))
+            left.update(rows)
+    if not left:
         return sheet
-    numbers = ", ".join(str(row.number) for row in shown)
-    found = f"row {numbers} is an example and left out"
-    problems.append(Problem(sheet.file, shown[0].number, "", "note", found))
-    left = {row.number for row in shown}
     return replace(sheet, rows=tuple(row for row in sheet.rows if row.number not in left))
 
 

@@ -83,7 +83,7 @@ def as_trade_name(
     >>> as_trade_name("Free acid", settings)[0], as_trade_name("Fe(III)", settings)[0]
     ('free H2SO4', 'Fe3+')
     """
-    text = plain_text(name)
+    text = re.sub(r" (?:strength|concentration|conc\.?)$", "", plain_text(name), flags=re.I)
     if match := _ADDED.fullmatch(text):
         what, question = _substance((match["a"] or match["b"]).strip(), settings)
         return f"{what} added", question
