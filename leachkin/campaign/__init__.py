@@ -4,6 +4,13 @@ from leachkin.campaign.bands import Band, Quantity
 from leachkin.campaign.campaign import Campaign, read_campaign, read_leniently
 from leachkin.campaign.check import CheckOutcome, check_campaign
 from leachkin.campaign.file_page import campaign_file_page
+from leachkin.campaign.next_tests import (
+    AIMS,
+    CampaignNextTests,
+    campaign_next_tests,
+    stage_behind,
+)
+from leachkin.campaign.next_tests_given import candidate_problems
 from leachkin.campaign.result import SCHEMA_VERSION, CampaignResult
 from leachkin.campaign.run import DEFAULT_DRAWS, DEFAULT_LEVEL, STAGES, run_campaign
 from leachkin.campaign.settings import Assumption, Settings, register_table
@@ -20,6 +27,7 @@ from leachkin.campaign.templates import TEMPLATE_KINDS, write_template_workbook
 from leachkin.campaign.what_if import key_figures, what_if
 
 __all__ = [
+    "AIMS",
     "DEFAULT_DRAWS",
     "DEFAULT_LEVEL",
     "SCHEMA_VERSION",
@@ -28,6 +36,7 @@ __all__ = [
     "Band",
     "BudgetStage",
     "Campaign",
+    "CampaignNextTests",
     "CampaignResult",
     "CementationStage",
     "CheckOutcome",
@@ -40,12 +49,15 @@ __all__ = [
     "TEMPLATE_KINDS",
     "TankStage",
     "campaign_file_page",
+    "campaign_next_tests",
+    "candidate_problems",
     "check_campaign",
     "key_figures",
     "read_campaign",
     "read_leniently",
     "register_table",
     "run_campaign",
+    "stage_behind",
     "what_if",
     "write_template_workbook",
 ]

@@ -31,6 +31,24 @@ def assumed_in_fit(settings: Settings) -> dict[str, float]:
     return found
 
 
+def assumed_deviations(settings: Settings) -> dict[str, tuple[float, float]]:
+    """Return value and standard deviation of the assumed parameters that have a range.
+
+    The range is a triangle with its peak at the value, as the draws take it; units as in
+    :func:`assumed_in_fit`.
+    """
+    found = {}
+    for group in settings.repeated.get("assumed", ()):
+        name = _name(group)
+        if name is None or not _acts(name) or not {"low", "value", "high"} <= set(group):
+            continue
+        low, value, high = (_in_unit(name, group[end]) for end in ("low", "value", "high"))
+        if high > low:
+            squares = low**2 + value**2 + high**2 - low * value - low * high - value * high
+            found[name] = (value, (squares / 18.0) ** 0.5)
+    return found
+
+
 def assumed_problems(settings: Settings, file: str) -> tuple[Problem, ...]:
     """Return what is wrong, or should be known, with the rows of ``[[assumed]]``."""
     problems = []

@@ -7,6 +7,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 
 from leachkin.campaign.campaign import Campaign, read_leniently
+from leachkin.campaign.next_tests_given import candidate_problems
 from leachkin.campaign.read_settings import quoted, split_dotted
 from leachkin.campaign.result_tables import problems_table
 from leachkin.campaign.run import STAGES
@@ -121,7 +122,7 @@ def check_campaign(path: str | Path, overrides: Mapping[str, str] | None = None)
     except InputProblems as error:
         problems = tuple(p for p in error.problems if isinstance(p, Problem))
         return CheckOutcome(problems, paste=tuple(_lines(problems)), settings=_settings(problems))
-    problems = _sorted(campaign.problems)
+    problems = _sorted((*campaign.problems, *candidate_problems(campaign)))
     states = [test.state for test in campaign.tests]
     return CheckOutcome(
         problems,

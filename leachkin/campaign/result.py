@@ -54,6 +54,8 @@ class CampaignResult:
         What should be known about the figures.
     level : float
         Level of the bands.
+    next_test : tuple of str
+        What further tests would tell, in sentences; empty where only some stages were run.
     """
 
     title: str
@@ -73,6 +75,7 @@ class CampaignResult:
     problems: tuple[Problem, ...] = ()
     notes: tuple[str, ...] = ()
     level: float = 0.95
+    next_test: tuple[str, ...] = ()
 
     def headline(self) -> tuple[str, ...]:
         """Return the first page in sentences: the answer, what rules, reagents, what is assumed."""

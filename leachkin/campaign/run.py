@@ -9,10 +9,11 @@ the stages that do not need it still run.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 from leachkin.campaign.campaign import Campaign
+from leachkin.campaign.next_tests import next_test_lines
 from leachkin.campaign.plant_ore import plant_ore
 from leachkin.campaign.result import CampaignResult
 from leachkin.campaign.stage_balance import balance_stage
@@ -129,7 +130,8 @@ def run_campaign(
         _DO[stage](run, reuse)
         if progress is not None:
             progress(position + 1, len(todo))
-    return _result(run, upto)
+    result = _result(run, upto)
+    return result if upto else replace(result, next_test=next_test_lines(campaign, result))
 
 
 def _check(campaign: Campaign, upto: str | None, seed: int, draws: int, level: float) -> None:

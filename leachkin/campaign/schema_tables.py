@@ -17,6 +17,7 @@ from leachkin.campaign.schema_bench import (
     REAGENT_PER_METAL,
     TABLES,
 )
+from leachkin.campaign.schema_candidates import CANDIDATES
 from leachkin.campaign.schema_money import (
     BUDGET,
     BUDGET_CONSUMPTION,
@@ -39,6 +40,7 @@ SCHEMA = Schema(
         FIT,
         EXCLUDE,
         ASSUMED,
+        CANDIDATES,
         GANGUE,
         RATE_LAW,
         RATE_LAW_ULTIMATE,

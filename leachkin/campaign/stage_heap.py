@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -137,6 +137,32 @@ def heap_stage(
     )
     drawn = _drawn(bed, ore, days, draws, seed) if draws else None
     return _stage(bed, ore, kinetics, stated, days, result, drawn, level)
+
+
+def heap_end(
+    campaign: Campaign, ore: PlantOre, gangue: GangueStage | None
+) -> Callable[[RateLaw], Array]:
+    """Return the extraction at the end of the cycle as a function of a law, or a batch of them.
+
+    Raises
+    ------
+    InputProblems
+        As :func:`heap_stage`.
+    """
+    settings = campaign.settings
+    sizes = plant_sizes(settings, "heap")
+    if sizes is None:
+        raise InputProblems([_no_sizes("heap")])
+    bed = _Bed(settings, sizes, gangue, settings.number("heap.lift_height"))
+    stated = {name: settings.number(f"heap.{name}") for name in _CONDITIONS}
+    metal = (ore.per_metal_kg_per_kg, ore.head_kg_per_t)
+    days = np.array([settings.number("heap.cycle")])
+
+    def end(law: RateLaw) -> Array:
+        result = bed.run(law, metal, stated, bed.stated_gangue, days, (0, 0))
+        return np.asarray(result.extracted)[..., -1]
+
+    return end
 
 
 def _no_sizes(stage: str) -> Problem:

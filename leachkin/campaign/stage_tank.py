@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
@@ -89,6 +89,16 @@ def tank_stage(
     InputProblems
         If residence times cannot be worked out, or a reagent balance lacks the solids.
     """
+    train, stated_ore, stated = _stated_train(campaign, ore, gangue, draws, seed)
+    result = train.run(ore.law, stated_ore, stated, train.stated_gangue, (0, seed))
+    drawn = _drawn(train, ore) if draws else None
+    return _stage(train, ore, stated_ore, stated, result, drawn, level)
+
+
+def _stated_train(
+    campaign: Campaign, ore: PlantOre, gangue: GangueStage | None, draws: int, seed: int
+) -> tuple[_Train, tuple[Any, Any], dict[str, Any]]:
+    """Return the train, reagent per metal and head, and its conditions at the stated values."""
     settings = campaign.settings
     times = residence_times(settings)
     sizes = plant_sizes(settings, "tank") or SizeDistribution.single(ore.law.reference.size_mm)
@@ -106,9 +116,26 @@ def tank_stage(
     stated = {
         name: settings.get(f"tank.{name}") for name in ("temperature", "feed_reagent", "solids")
     }
-    result = train.run(ore.law, stated_ore, stated, train.stated_gangue, (0, seed))
-    drawn = _drawn(train, ore) if draws else None
-    return _stage(train, ore, stated_ore, stated, result, drawn, level)
+    return train, stated_ore, stated
+
+
+def tank_end(
+    campaign: Campaign, ore: PlantOre, gangue: GangueStage | None
+) -> Callable[[RateLaw], Array]:
+    """Return the extraction at the last tank as a function of a law, or a batch of them.
+
+    Raises
+    ------
+    InputProblems
+        As :func:`tank_stage`.
+    """
+    train, stated_ore, stated = _stated_train(campaign, ore, gangue, 0, 0)
+
+    def end(law: RateLaw) -> Array:
+        result = train.run(law, stated_ore, stated, train.stated_gangue, (0, 0))
+        return np.asarray(result.extraction)[..., -1]
+
+    return end
 
 
 def residence_times(settings: Settings) -> tuple[float, ...]:

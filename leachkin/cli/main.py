@@ -26,6 +26,7 @@ _COMMANDS = {
     "heap": ("leachkin.cli.stages", "Heap extraction by day, supply against demand."),
     "cementation": ("leachkin.cli.stages", "Scrap iron or zinc dust by sink."),
     "budget": ("leachkin.cli.stages", "Reagents by use, tonnes a month and cost."),
+    "next-tests": ("leachkin.cli.next_tests", "Which further tests would tell most."),
     "arrhenius": ("leachkin.cli.arrhenius", "Activation energy from rate constants."),
     "verify": ("leachkin.cli.verify", "Recompute published values beside the print."),
 }
@@ -59,7 +60,7 @@ class LazyCommands(click.Group):
         if cmd_name not in _COMMANDS:
             return None
         module = importlib.import_module(_COMMANDS[cmd_name][0])
-        command: click.Command = getattr(module, cmd_name)
+        command: click.Command = getattr(module, cmd_name.replace("-", "_"))
         return command
 
     def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:

@@ -120,13 +120,13 @@ def next_tests(
     known = known_of(fit, observed, candidates, held, ask.assumed, ultimate, stirring)
     _check_assumed(known, rivals, ask.assumed)
     targets = quantity_targets(known, [q.name for q in chosen], stirring)
-    said: list[str] = []
+    left_out: list[str] = []
     if prediction is not None:
-        more, said = prediction_targets(known, prediction, prediction_names, prediction_unit)
+        more, left_out = prediction_targets(known, prediction, prediction_names, prediction_unit)
         targets += more
     if not targets and not rivals:
         raise argument_error("of", "quantities that this fit holds", "a quantity that is fitted")
-    return _answer(ask, known, targets, rivals, said)
+    return _answer(ask, known, targets, rivals, left_out)
 
 
 @dataclass(frozen=True)
@@ -175,7 +175,7 @@ def _answer(
     known: Known,
     targets: Sequence[Target],
     rivals: Sequence[FitResult],
-    said: Sequence[str],
+    left_out: Sequence[str],
 ) -> NextTests:
     judge = _Judge(known, tuple(targets), ask.level)
     shared = {c.name: known.rows_of(c).shared for c in ask.candidates}
@@ -196,8 +196,9 @@ def _answer(
         rows=ranked,
         steps=_steps(judge, ask, shared, priced) if ask.count and targets else (),
         laws=tuple(one.fit.law_name for one in laws),
+        left_out=tuple(left_out),
     )
-    return replace(found, remarks=(*said, *remarks_of(found, known)))
+    return replace(found, remarks=remarks_of(found, known))
 
 
 def _rival(fit: FitResult, ask: _Question) -> Known:
@@ -252,8 +253,21 @@ class _Judge:
             before, after = min(now, target.widest), min(half, target.widest)
             opened = low is not None and target.ends(float(now))[0] is None
             shrink = 1.0 if opened else max(0.0, 1.0 - float(after / before)) if before else 0.0
-            found.append(Outlook(target.name, target.unit, target.value, low, high, shrink, opened))
+            untold = self._untold(target) if low is None else ()
+            found.append(
+                Outlook(target.name, target.unit, target.value, low, high, shrink, opened, untold)
+            )
         return tuple(found)
+
+    def _untold(self, target: Target) -> tuple[str, ...]:
+        """Return the quantities of a target that the present tests do not tell."""
+        known = self.known
+        sd = known.root_variances(known.rows, np.eye(len(known.columns)))
+        return tuple(
+            q.name
+            for q, own, slope in zip(known.columns, sd, target.gradient, strict=True)
+            if not np.isfinite(own) and slope != 0.0
+        )
 
     def information(self, halves: Array, before: Array) -> float:
         """Return the mean logarithm of the ratios of the widths, 0 or more."""

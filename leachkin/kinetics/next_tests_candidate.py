@@ -54,7 +54,7 @@ class Candidate:
         if time_h[0] <= 0.0 or (np.diff(time_h) <= 0.0).any():
             found = f"times {', '.join(f'{t:g}' for t in time_h)} h"
             raise argument_error(where, found, "above 0 and rising", "put them in order")
-        for name in ("temperature_K", "reagent_g_per_L", "solids_g", "solution_mL", "aliquot_mL"):
+        for name in ("temperature_K", "reagent_g_per_L", "solids_g", "solution_mL"):
             value = getattr(self.bottle, name)
             if not (np.isfinite(value) and value > 0.0):
                 raise argument_error(where, f"{name} {value:g}", "above 0")

@@ -28,6 +28,8 @@ class Outlook:
         Share of the present interval that goes; 1 where there is none at present.
     opened : bool
         True where this is the first interval of the target.
+    untold : tuple of str
+        Quantities that the target depends on and no test tells.
     """
 
     target: str
@@ -37,6 +39,7 @@ class Outlook:
     high: float | None
     shrink: float = 0.0
     opened: bool = False
+    untold: tuple[str, ...] = ()
 
     @property
     def half_width(self) -> float | None:
@@ -137,6 +140,8 @@ class NextTests:
         A set of tests, chosen one after the other.
     laws : tuple of str
         Laws that cannot be told apart, where asked for.
+    left_out : tuple of str
+        Assumed quantities that the prediction takes no other value of: not in its interval.
     remarks : tuple of str
     """
 
@@ -146,6 +151,7 @@ class NextTests:
     rows: tuple[CandidateGain, ...]
     steps: tuple[Step, ...] = ()
     laws: tuple[str, ...] = ()
+    left_out: tuple[str, ...] = ()
     remarks: tuple[str, ...] = ()
 
     @property
@@ -192,8 +198,10 @@ class NextTests:
         records = []
         for row in self.rows:
             record = _conditions(row.candidate)
-            record |= {"shrink": 100.0 * row.shrink, "why": row.candidate.why}
-            record |= {f"shrink_{n}": 100.0 * value for n, value in row.by_multiple.items()}
+            record["why"] = row.candidate.why
+            if not all(outlook.opened for outlook in row.outlooks):
+                record["shrink"] = 100.0 * row.shrink
+                record |= {f"shrink_{n}": 100.0 * value for n, value in row.by_multiple.items()}
             if row.per_cost is not None:
                 record |= {
                     "cost": row.candidate.total_cost,
@@ -204,8 +212,8 @@ class NextTests:
         caption = f"Mean over {targets}; law {self.law}"
         return ResultTable.from_records("next_tests", columns, records, caption)
 
-    def interval_table(self) -> ResultTable:
-        """Return every target, now and as each candidate would leave it."""
+    def interval_table(self, best: int | None = None) -> ResultTable:
+        """Return every target, now and as each candidate, or the best of them, would leave it."""
         columns = (
             Column("candidate", "With"),
             Column("target", "Of"),
@@ -217,7 +225,7 @@ class NextTests:
             Column("remark", "Remark"),
         )
         records = [_interval("the present tests", outlook) for outlook in self.present]
-        for row in self.rows:
+        for row in self.rows[:best]:
             records += [_interval(row.name, outlook) for outlook in row.outlooks]
         caption = "Expected intervals, drawn about the present values"
         return ResultTable.from_records("next_test_intervals", columns, records, caption)
@@ -251,6 +259,12 @@ class NextTests:
             Column("bottles", "Bottles"),
             Column("shrink", "Interval has shrunk by", "%", digits=2),
         ]
+        if len(self.present) == 1:
+            unit = self.present[0].unit
+            columns += [
+                Column(end, f"{end.capitalize()}, {100 * self.level:g} %", unit)
+                for end in ("low", "high")
+            ]
         if any(step.cost is not None for step in self.steps):
             columns.append(Column("cost", "Cost so far"))
         records = [
@@ -258,7 +272,9 @@ class NextTests:
                 "step": number,
                 "candidate": step.name,
                 "bottles": step.bottles,
-                "shrink": 100.0 * step.shrink,
+                "shrink": None if step.outlooks[0].opened else 100.0 * step.shrink,
+                "low": step.outlooks[0].low,
+                "high": step.outlooks[0].high,
                 "cost": step.cost,
             }
             for number, step in enumerate(self.steps, start=1)

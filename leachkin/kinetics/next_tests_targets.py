@@ -120,7 +120,7 @@ def quantity_targets(known: Known, names: Sequence[str], stirring: bool) -> list
 def prediction_targets(
     known: Known, prediction: Prediction, names: Sequence[str], unit: str
 ) -> tuple[list[Target], list[str]]:
-    """Return the targets of a prediction, and what it does not take, in words.
+    """Return the targets of a prediction, and the quantities that it takes no other value of.
 
     The derivative is by central differences of the laws of shifted vectors, all in one batch where
     the prediction takes a batch.
@@ -148,10 +148,7 @@ def prediction_targets(
         Target(label, unit, "linear", float(v), g, max(1.0, abs(float(v))))
         for label, v, g in zip(labels, values, gradient, strict=True)
     ]
-    left_out = sorted({known.columns[int(moving[i % moving.size])].name for i in refused})
-    return targets, [
-        f"the prediction takes no other {name}: not in its interval" for name in left_out
-    ]
+    return targets, sorted({known.columns[int(moving[i % moving.size])].name for i in refused})
 
 
 def _steps(known: Known) -> Array:

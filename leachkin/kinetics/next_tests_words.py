@@ -24,8 +24,10 @@ def _first_intervals(found: NextTests) -> Iterator[str]:
     for outlook in found.present:
         if outlook.low is None:
             unit = f" {outlook.unit}" if outlook.unit else ""
+            others = [name for name in outlook.untold if name != outlook.target]
+            by = f" (it rests on {', '.join(others)})" if others else ""
             yield (
-                f"{outlook.target}: no test tells it now; candidates are judged at "
+                f"{outlook.target}: no test tells it now{by}; candidates are judged at "
                 f"{outlook.value:.4g}{unit}"
             )
 
@@ -59,6 +61,8 @@ def _laws(found: NextTests) -> Iterator[str]:
 
 
 def _limits(found: NextTests, known: Known) -> Iterator[str]:
+    for name in found.left_out:
+        yield f"the prediction takes no other {name}: not in its interval"
     at_bound = [q.name for q, active in zip(known.columns, known.active, strict=True) if not active]
     if at_bound:
         yield f"{', '.join(at_bound)}: at the end of its range, held there"

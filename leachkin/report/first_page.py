@@ -267,6 +267,9 @@ def _undecided(result: CampaignResult) -> Iterator[str]:
 
 
 def _next_test(result: CampaignResult) -> Iterator[str]:
+    if result.next_test:
+        yield from result.next_test
+        return
     heap = result.heap
     if heap is not None and heap.grade != "COLUMN":
         yield (
