@@ -82,4 +82,22 @@ SHEETS_STOCK = TableSchema(
     free=Key("formula", "quantity", "100 % reagent in what was added", "g/L", above=0.0),
 )
 
-ALL = (SHEETS, SHEETS_CODES, SHEETS_LIMITS, SHEETS_STOCK)
+#: Tables whose headings may be another's.
+MAPPED = ("tests", "readings", "heads", "closeout", "sieves", "bench")
+
+MAPPINGS = tuple(
+    TableSchema(
+        f"mapping.{name}",
+        f"Your headings of {name} and the columns of this program they stand for, as "
+        '`"Cu_ICP_ppm" = "Cu (mg/L)"`; "ignore" leaves one out.',
+        free=Key("heading", "text", "a heading of this program, with its unit"),
+    )
+    for name in MAPPED
+)
+MAPPING = TableSchema(
+    "mapping",
+    "Headings of your own, by table; a file of them is reused by any campaign.",
+    (Key("file", "text", "A TOML file with the tables tests, readings, ... of headings"),),
+)
+
+ALL = (SHEETS, SHEETS_CODES, SHEETS_LIMITS, SHEETS_STOCK, MAPPING, *MAPPINGS)

@@ -9,6 +9,7 @@ from pathlib import Path
 from typing import Any
 
 from leachkin.campaign.extraction_sheet import read_extraction_sheet
+from leachkin.campaign.mapping import read_mappings, with_mapped_headings
 from leachkin.campaign.settings import Setting, Settings
 from leachkin.errors import InputProblems
 from leachkin.files import (
@@ -52,17 +53,20 @@ def read_sheets(
     sheets: dict[str, list[Sheet]] = {}
     problems: list[Problem] = []
     decimal_mark = settings.get("sheets.decimal_mark")
+    mappings = read_mappings(settings, folder, file, problems)
     for name in (*BENCH_SHEETS, "extraction"):
         setting = settings.values.get(f"tables.{name}")
         if setting is not None:
             with _told(problems, setting, file):
                 sheet = read_sheet(str(setting.value), folder, decimal_mark)
-                sheets.setdefault(name, []).append(sheet)
                 problems.extend(sheet.problems)
+                sheet = with_mapped_headings(sheet, mappings.get(name, {}), problems)
+                sheets.setdefault(name, []).append(sheet)
     bench = settings.values.get("tables.bench")
     for text in bench.value if bench is not None else ():
         with _told(problems, bench, file):
-            _add_bench_sheets(text, folder, decimal_mark, sheets, problems)
+            grids = _bench_grids(text, folder, decimal_mark, mappings["bench"])
+            _add_bench_sheets(grids, sheets, problems)
     export = settings.values.get("tables.export")
     for text in export.value if export is not None else ():
         with _told(problems, export, file):
@@ -128,22 +132,26 @@ def _told(problems: list[Problem], setting: Setting | None, file: str) -> Iterat
         )
 
 
-def _add_bench_sheets(
-    text: str,
-    folder: Path,
-    decimal_mark: str | None,
-    sheets: dict[str, list[Sheet]],
-    problems: list[Problem],
-) -> None:
-    """Add what a bench sheet holds, or every bench sheet of a workbook, to the tables."""
+def _bench_grids(
+    text: str, folder: Path, decimal_mark: str | None, mapping: Mapping[str, str]
+) -> list[Grid]:
+    """The bench sheets of a file, every one of a workbook where none is named."""
     path = check_path_text(text)
     if path.lower().endswith(WORKBOOK_ENDINGS):
         grids = read_workbook(folder / path, path, decimal_mark)
     else:
         grids = [read_grid(path, folder, decimal_mark)]
-    bench = [grid for grid in grids if is_bench_sheet(grid)]
+    mapped = [grid.with_cells(mapping) for grid in grids]
+    bench = [grid for grid in mapped if is_bench_sheet(grid)]
     if not bench:
         raise InputProblems([no_bench_sheet(path)])
+    return bench
+
+
+def _add_bench_sheets(
+    bench: Sequence[Grid], sheets: dict[str, list[Sheet]], problems: list[Problem]
+) -> None:
+    """Add what bench sheets hold to the tables."""
     for grid in bench:
         problems.extend(grid.problems)
         taken = [c for sheet in sheets.get("tests", ()) for c in test_names(sheet)]

@@ -2,7 +2,7 @@
 whole or not at all. The only part that knows openpyxl. What a cell means is decided further on."""
 
 from leachkin.files.csv_sheet import read_csv, read_csv_grid
-from leachkin.files.grid import Grid, grid_of
+from leachkin.files.grid import Grid, fold_cell, grid_of
 from leachkin.files.numerals import ERROR_CODES, parse_numeral
 from leachkin.files.paths import check_path_text, file_bytes
 from leachkin.files.sheet import Sheet, SheetRow, build_sheet, column_letters
@@ -31,6 +31,7 @@ __all__ = [
     "check_path_text",
     "column_letters",
     "file_bytes",
+    "fold_cell",
     "grid_of",
     "parse_numeral",
     "read_csv",
