@@ -14,6 +14,13 @@ from leachkin.kinetics.arrhenius_two_step import (
 )
 from leachkin.kinetics.box import DataBox
 from leachkin.kinetics.demand import ReagentDemand
+from leachkin.kinetics.diagnostics import (
+    ArrheniusPanel,
+    KineticDiagnostics,
+    RatePlot,
+    RowChecks,
+    kinetic_diagnostics,
+)
 from leachkin.kinetics.drive import DRIVES, Drive, DriveForm, ln_drive
 from leachkin.kinetics.evidence import Evidence, EvidenceLine, gather_evidence, stirring_power
 from leachkin.kinetics.fit_curve import fit_curve, straightened_time
@@ -83,8 +90,20 @@ from leachkin.kinetics.simulate import (
     simulate_tests,
     solution_operator,
 )
+from leachkin.kinetics.straightened import StraightenedTest, straightened
+from leachkin.kinetics.time_factors import TimeFactor, time_factors, total_time
 
 __all__ = [
+    "ArrheniusPanel",
+    "KineticDiagnostics",
+    "RatePlot",
+    "RowChecks",
+    "StraightenedTest",
+    "TimeFactor",
+    "kinetic_diagnostics",
+    "straightened",
+    "time_factors",
+    "total_time",
     "CurvatureTest",
     "TwoStepArrhenius",
     "arrhenius_two_step",
