@@ -17,7 +17,7 @@ from leachkin.testwork.quality import (
     kind_of_sample,
     quality_notes,
 )
-from leachkin.testwork.sample_ids import Place, place_of_sample
+from leachkin.testwork.sample_ids import Place, SampleNames
 from leachkin.testwork.settings import TestworkSettings
 from leachkin.testwork.trade_names import as_trade_name, plain_text
 
@@ -102,13 +102,14 @@ def read_lab_export(
     by_id: dict[str, list[_Result]] = {fold_name(r.sample): [] for r in results}
     lost: dict[str, int] = {}
     known = _known_ids(readings)
+    names = SampleNames(tests, domains)
     for result in results:
         kind = kind_of_sample(result.kind, result.sample)
         if kind in ("blank", "standard"):
             export.quality.append(_quality(grid, result, kind))
         elif fold_name(result.sample) in known:
             by_id[fold_name(result.sample)].append(result)
-        elif (place := place_of_sample(result.sample, tests, domains)) is not None:
+        elif (place := names.place(result.sample)) is not None:
             placed.append((place, result))
         else:
             lost.setdefault(result.sample, result.row)

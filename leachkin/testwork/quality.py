@@ -7,7 +7,6 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
-from scipy.optimize import minimize
 
 from leachkin.errors import UnitError
 from leachkin.files import parse_numeral
@@ -128,6 +127,8 @@ def precision_of_pairs(first: Array, second: Array) -> DuplicatePrecision | None
 
 def _most_likely(mean: Array, difference: Array, relative: float) -> tuple[float, float]:
     """Floor and part of the greatest likelihood, both from 0 up."""
+    from scipy.optimize import minimize
+
     scale = float(np.median(mean))
 
     def cost(parameters: Array) -> float:
