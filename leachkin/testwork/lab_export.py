@@ -103,8 +103,11 @@ def read_lab_export(
     lost: dict[str, int] = {}
     known = _known_ids(readings)
     names = SampleNames(tests, domains)
+    kinds = {
+        key: kind_of_sample(*key) for key in dict.fromkeys((r.kind, r.sample) for r in results)
+    }
     for result in results:
-        kind = kind_of_sample(result.kind, result.sample)
+        kind = kinds[result.kind, result.sample]
         if kind in ("blank", "standard"):
             export.quality.append(_quality(grid, result, kind))
         elif fold_name(result.sample) in known:
@@ -140,11 +143,14 @@ def _results(
     found: list[_Result] = []
     diluted: tuple[int, str] | None = None
     apply = settings.answers.dilution == "to apply"
+    analytes: dict[str, str] = {}
     for row in grid.rows[1:]:
         cells = {key: row.cells[i] if i < len(row.cells) else "" for key, i in positions.items()}
         if not cells["sample"] or not cells["analyte"]:
             continue
-        analyte = _analyte(cells["analyte"], settings)
+        if cells["analyte"] not in analytes:
+            analytes[cells["analyte"]] = _analyte(cells["analyte"], settings)
+        analyte = analytes[cells["analyte"]]
         text = _value(cells)
         dilution = cells.get("dilution", "")
         if dilution not in ("", "1", "1.0", "0"):

@@ -70,8 +70,8 @@ class SampleNames:
             if _HEAD.fullmatch(rest):
                 return Place("heads", (("domain", domain),), duplicate)
         head = _HEAD_FIRST.match(bare)
-        domain = self._domains.get(_parts(bare[head.end() :])) if head else None
-        return Place("heads", (("domain", domain),), duplicate) if domain else None
+        named = self._domains.get(_parts(bare[head.end() :])) if head else None
+        return Place("heads", (("domain", named),), duplicate) if named else None
 
     def _beginnings(
         self, text: str, names: Mapping[tuple[str, ...], str]
