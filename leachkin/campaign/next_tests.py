@@ -11,6 +11,7 @@ from leachkin.campaign.campaign import Campaign
 from leachkin.campaign.next_tests_advice import (
     law_advice,
     left_out_advice,
+    longer_advice,
     no_law_advice,
     plant_advice,
     quantity_advice,
@@ -244,7 +245,7 @@ class _Asked:
         found = self._next_tests(
             candidates, rivals if self.aim == "mechanism" else (), self._assumed_of_fit()
         )
-        said = quantity_advice(found)
+        said = [*longer_advice(self.fit, found), *quantity_advice(found)]
         if self.aim == "mechanism":
             said = [*law_advice(found), *stirring_advice(self.stage)]
         remarks = [r for r in found.remarks if sentence(r) not in said]
@@ -315,16 +316,19 @@ class _Asked:
         return found
 
     def _new_ultimates(self, candidates: Sequence[Candidate]) -> dict[str, tuple[float, float]]:
-        """Return what is thought of the ultimates at sizes that only candidates have."""
+        """Return what is thought of the ultimates at conditions that only candidates have."""
         layout = self.fit.layout
         free = any(q.role == "ultimate" and q.free for q in layout.quantities)
         one = self.campaign.settings.get("fit.ultimate") == "one"
-        if layout.knot_temperature_K is not None or not free or one:
+        if not free or one:
             return {}
-        known = [*layout.knot_size_mm.tolist()]
-        known += [o.sizes.mass_mean_mm for o in self.stage.observed if o.sizes is not None]
-        sizes = [knot_of(layout, candidate) for candidate in candidates]
-        new = {new_knot_name(layout, d): d for d in sizes if not is_one_of(d, known)}
+        if layout.knot_temperature_K is not None:
+            known = [*layout.knot_temperature_K.tolist()]
+        else:
+            known = [*layout.knot_size_mm.tolist()]
+            known += [o.sizes.mass_mean_mm for o in self.stage.observed if o.sizes is not None]
+        asked = [knot_of(layout, candidate) for candidate in candidates]
+        new = {new_knot_name(layout, at): at for at in asked if not is_one_of(at, known)}
         return assumed_ultimates(self.fit, new)
 
     def _for_plant(
@@ -339,9 +343,12 @@ class _Asked:
         multiplier = normal_multiplier(self.result.level)
         fit_sd = self._fit_sd(candidates, own, untested, found, named, multiplier)
         band = plant_band(self.campaign, self.result, self.plant, fit_sd, self.fit.law.box)
+        laws = law_advice(found, stage_of(self.result, self.plant))
+        matters = any("it matters" in said for said in laws)
+        figure = plant_advice(found, band, multiplier)
         advice = [
-            *plant_advice(found, band, multiplier),
-            *law_advice(found, self.stage, stage_of(self.result, self.plant)),
+            *longer_advice(self.fit, found),
+            *([*laws, *figure] if matters else [*figure, *laws]),
             *untested_advice(self.plant, untested),
             *self._left_out_advice(found, candidates, own),
         ]

@@ -9,7 +9,7 @@ from leachkin.campaign.next_tests_default import COARSER
 from leachkin.campaign.next_tests_plant import PlantBand
 from leachkin.campaign.stage_results import HeapStage, KineticsStage, TankStage
 from leachkin.constants import ZERO_CELSIUS_K
-from leachkin.kinetics import Candidate, CandidateGain, NextTests
+from leachkin.kinetics import Candidate, CandidateGain, FitResult, NextTests
 
 #: A whole band that would shrink by less than this share is not worth another bottle.
 WORTH_A_BOTTLE = 0.05
@@ -17,6 +17,10 @@ WORTH_A_BOTTLE = 0.05
 NARROW = 1.0
 #: The rest of a band is named where it makes more than this share of the variance.
 MOST_OF_IT = 0.5
+#: A choice of law that makes more than this share of the variance comes first.
+LAW_IS_MUCH = 0.2
+#: Sizes closer than this, relative, are one.
+SAME_SIZE = 1e-3
 #: A test this near the plant's temperature stands for it [K].
 NEAR_K = 1.0
 _PERCENT = 100.0
@@ -88,14 +92,30 @@ def stirring_advice(stage: KineticsStage) -> list[str]:
     ]
 
 
-def law_advice(
-    found: NextTests,
-    stage: KineticsStage | None = None,
-    plant: HeapStage | TankStage | None = None,
-) -> list[str]:
+def longer_advice(fit: FitResult, found: NextTests) -> list[str]:
+    """Say that a longer test comes first where the curves do not bend over."""
+    names = [q.name for q in fit.layout.quantities if q.role == "ultimate" and q.free]
+    open_ended = [p for p in fit.parameters if p.name in names and p.high is None]
+    if not open_ended:
+        return []
+    tested = fit.layout.knot_size_mm
+    long = [
+        (-float(row.candidate.bottle.time_h[-1]), row.name)
+        for row in found.rows
+        if any(abs(row.candidate.bottle.sizes.mass_mean_mm / d - 1.0) < SAME_SIZE for d in tested)
+    ]
+    which = f" ({min(long)[1]})" if long else ""
+    values = listed([f"{p.name} at {p.value:.2f}" for p in open_ended])
+    return [
+        f"The tests do not exclude an ultimate extraction of 1: a longer one{which} comes first. "
+        f"What follows takes {values}."
+    ]
+
+
+def law_advice(found: NextTests, plant: HeapStage | TankStage | None = None) -> list[str]:
     """Return which test would tell apart the laws that are left, and whether it matters."""
     said = [sentence(r) for r in found.remarks if " apart" in r]
-    others = getattr(plant, "other_laws", ()) if said and stage is not None else ()
+    others = getattr(plant, "other_laws", ()) if said else ()
     for law in others:
         matters = "matters" if law.changes_the_figure else "does not matter"
         said.append(
@@ -115,7 +135,7 @@ def untested_advice(plant: str, untested: Mapping[str, tuple[float, float]]) -> 
     ]
     return [
         f"The ultimate extraction at {listed(named)} was not tested: the fit's part here holds it, "
-        f"within the trend of the tested sizes; the {plant}'s own band does not."
+        f"within the trend of the tested ones; the {plant}'s own band does not."
     ]
 
 
@@ -140,35 +160,47 @@ def plant_advice(found: NextTests, band: PlantBand, multiplier: float) -> list[s
             f"tells and no range is assumed for: {gives}."
         ]
         return [*said, *_unranged(band), *_checks(found, band)]
-    whole, left = (band.whole_half(half, multiplier) for half in (now.half_width, after))
-    gain = 1.0 - left / whole if whole else 0.0
-    share = (now.half_width / whole) ** 2 if whole else 0.0
+    return [*_band_advice(best, band, (now.half_width, after), multiplier), *_checks(found, band)]
+
+
+def _band_advice(
+    best: CandidateGain, band: PlantBand, fit_halves: tuple[float, float], multiplier: float
+) -> list[str]:
+    """Return what the best test does to the band, and what the rest of the band comes from."""
+    whole, left = (band.whole_half(half, multiplier) for half in fit_halves)
+    gain, share, law_share = 0.0, 0.0, 0.0
+    if whole > 0.0:
+        gain, share = 1.0 - left / whole, (fit_halves[0] / whole) ** 2
+        law_share = multiplier**2 * band.law_variance / whole**2
+    if law_share > LAW_IS_MUCH:
+        first = (
+            f"The choice of law makes {_PERCENT * law_share:.2g} % of the variance of the "
+            f"{band.plant}'s band and the constants {_PERCENT * share:.2g} %: a test that tells "
+            "the laws apart buys most."
+        )
+        return [first, *_unranged(band)]
     if band.scale_up_unknown:
-        said = [
-            f"{_named(best)} tells most of the fit's part: +/- {now.half_width:.2g} to "
-            f"+/- {after:.2g} % of total metal.",
-            *_unranged(band),
+        first = (
+            f"{_named(best)} tells most of the fit's part: +/- {fit_halves[0]:.2g} to "
+            f"+/- {fit_halves[1]:.2g} % of total metal."
+        )
+        return [first, *_unranged(band)]
+    if whole < NARROW:
+        return [
+            f"The {band.plant}'s band is already within +/- {whole:.2g} % of total metal: no "
+            "further bottle is needed for it."
         ]
-    elif whole < NARROW:
-        said = [
-            f"The {band.plant}'s band is already within +/- {whole:.2g} % of total "
-            "metal: no further bottle is needed for it."
-        ]
-    elif gain < WORTH_A_BOTTLE:
-        said = [
+    if gain < WORTH_A_BOTTLE:
+        first = (
             f"No further bottle narrows the {band.plant}'s band by more than "
-            f"{_PERCENT * gain:.2g} %: the fit makes {_PERCENT * share:.2g} % of its "
-            "variance.",
-            _rest(band, "not another bottle"),
-        ]
-    else:
-        said = [
-            f"{_named(best)} buys most: the {band.plant}'s band goes from +/- "
-            f"{whole:.2g} to +/- {left:.2g} % of total metal."
-        ]
-        if 1.0 - share > MOST_OF_IT:
-            said.append(_rest(band, "for the rest"))
-    return [*said, *_checks(found, band)]
+            f"{_PERCENT * gain:.2g} %: the fit makes {_PERCENT * share:.2g} % of its variance."
+        )
+        return [first, _rest(band, "not another bottle")]
+    first = (
+        f"{_named(best)} buys most: the {band.plant}'s band goes from +/- {whole:.2g} to "
+        f"+/- {left:.2g} % of total metal."
+    )
+    return [first, _rest(band, "for the rest")] if 1.0 - share > MOST_OF_IT else [first]
 
 
 def _unranged(band: PlantBand) -> list[str]:

@@ -45,7 +45,9 @@ class PlantBand:
     column : bool
         Whether a column stands behind the law.
     other_variance : float
-        Of everything but the fit: scale-up ranges, gangue, head.
+        Of everything but the constants of the law: its choice, scale-up ranges, gangue, head.
+    law_variance : float
+        Of the choice between laws that the data do not reject, in ``other_variance``.
     scale_up : tuple of str
         Keys whose stated ranges are in it.
     drawn : bool
@@ -58,6 +60,7 @@ class PlantBand:
     plant: str
     column: bool
     other_variance: float
+    law_variance: float
     scale_up: tuple[str, ...]
     drawn: bool
     conditions: PlantConditions
@@ -133,6 +136,7 @@ def plant_band(
         plant=plant,
         column=stage is not None and stage.grade == COLUMN,
         other_variance=other,
+        law_variance=min(_law_variance(stage), other),
         scale_up=tuple(setting.key.split(".", 1)[1] for setting in ranges),
         drawn=drawn is not None,
         conditions=conditions_of(campaign.settings, plant),
@@ -140,22 +144,36 @@ def plant_band(
     )
 
 
+def _law_variance(stage: HeapStage | TankStage | None) -> float:
+    """Return the variance of the figure over the laws that are not rejected, by their weights."""
+    others = getattr(stage, "other_laws", ())
+    if stage is None or not others:
+        return 0.0
+    own = stage.extracted if isinstance(stage, HeapStage) else stage.extraction
+    weights = [getattr(law, "weight", 0.0) for law in others]
+    values = PERCENT * np.array([float(own.value[-1]), *(law.extraction for law in others)])
+    shares = np.array([max(1.0 - sum(weights), 0.0), *weights])
+    return float(shares @ (values - shares @ values) ** 2)
+
+
 def assumed_ultimates(
     fit: FitResult, new_knots: Mapping[str, float]
 ) -> dict[str, tuple[float, float]]:
-    """Return what is thought of ultimate extractions at untested sizes: value, standard deviation.
+    """Return what is thought of ultimates at untested sizes (or temperatures): value and deviation.
 
     The value is that of the law, flat outside the tests. Outside, the deviation is the change that
-    the trend of the nearest two tested sizes would make; inside, a quarter of the step between its
-    neighbours; :data:`LEAST_SD` at least, and :data:`ONE_SIZE_SD` where one size was tested.
+    the trend of the nearest two tested ones would make; inside, a quarter of the step between its
+    neighbours; :data:`LEAST_SD` at least, and :data:`ONE_SIZE_SD` where one was tested.
     """
     law = fit.law
-    knots = np.log(np.asarray(law.ultimate_size_mm, dtype=float))
+    by_temperature = law.ultimate_temperature_K is not None
+    knots = law.ultimate_temperature_K if by_temperature else np.log(law.ultimate_size_mm)
     ultimate = np.asarray(law.ultimate, dtype=float)
     found = {}
-    for name, size_mm in new_knots.items():
-        value = float(law.ultimate_at(size_mm)[..., 0])
-        sd = _ultimate_sd(knots, ultimate, float(np.log(size_mm)))
+    for name, at in new_knots.items():
+        where = (law.reference.size_mm, at) if by_temperature else (at, None)
+        value = float(law.ultimate_at(*where)[..., 0])
+        sd = _ultimate_sd(np.asarray(knots), ultimate, at if by_temperature else float(np.log(at)))
         found[name] = (value, sd)
     return found
 

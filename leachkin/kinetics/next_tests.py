@@ -274,7 +274,8 @@ class _Judge:
         if not self.targets:
             return 0.0
         widest = np.array([t.widest for t in self.targets])
-        ratio = np.minimum(before, widest) / np.minimum(halves, widest)
+        after, now = np.minimum(halves, widest), np.minimum(before, widest)
+        ratio = np.where(after > 0.0, now / np.where(after > 0.0, after, 1.0), 1.0)
         return float(np.mean(np.log(np.maximum(ratio, 1.0))))
 
 

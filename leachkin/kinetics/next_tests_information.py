@@ -238,7 +238,8 @@ def known_of(
         Whether the power of the stirring speed is asked for.
     """
     if fit.design is None or not fit.converged or not fit.layout.free:
-        raise argument_error("fit", "a fit that did not converge", "a converged fit with its data")
+        why = f": {fit.message}" if fit.message else ""
+        raise argument_error("fit", f"a fit that did not converge{why}", "a converged fit of tests")
     names = {*free, *freed_by_temperature(fit, tests, candidates), *held_with_a_range(fit, assumed)}
     layout, vector = freed_layout(fit, names, assumed)
     design = replace(fit.design, layout=layout)

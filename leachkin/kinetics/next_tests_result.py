@@ -227,7 +227,7 @@ class NextTests:
         records = [_interval("the present tests", outlook) for outlook in self.present]
         for row in self.rows[:best]:
             records += [_interval(row.name, outlook) for outlook in row.outlooks]
-        caption = "Expected intervals, drawn about the present values"
+        caption = "Expected intervals, linearised, drawn about the present values"
         return ResultTable.from_records("next_test_intervals", columns, records, caption)
 
     def separation_table(self) -> ResultTable:

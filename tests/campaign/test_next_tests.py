@@ -4,6 +4,7 @@ import json
 import re
 from dataclasses import replace
 from pathlib import Path
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
@@ -15,6 +16,7 @@ from leachkin.campaign import (
     read_campaign,
     run_campaign,
 )
+from leachkin.campaign.next_tests_advice import longer_advice
 from leachkin.campaign.next_tests_bench import patterns_of
 from leachkin.campaign.next_tests_default import PlantConditions, default_candidates
 from leachkin.campaign.plant_ore import plant_ore
@@ -22,7 +24,8 @@ from leachkin.campaign.settings import Setting
 from leachkin.campaign.stage_heap import heap_end
 from leachkin.campaign.stage_tank import tank_end
 from leachkin.errors import InputProblems
-from leachkin.testwork import SizeDistribution
+from leachkin.kinetics import Bottle, Candidate, ParticleLaw, fit_tests, next_tests
+from leachkin.testwork import SizeDistribution, observed_from_extraction
 
 COPPER = Path(__file__).parents[2] / "example_runs" / "copper_heap" / "campaign.toml"
 RANGES = """
@@ -71,6 +74,16 @@ def one_temperature(folder):
 
 
 @pytest.fixture(scope="module")
+def four(tmp_path_factory, sheet_texts):
+    """The four bottles as they are, fitted."""
+    place = tmp_path_factory.mktemp("four")
+    for name, text in sheet_texts.items():
+        (place / name).write_text(text, encoding="utf-8")
+    campaign = read_campaign(place / "campaign.toml")
+    return campaign, run_campaign(campaign, "fit", draws=0)
+
+
+@pytest.fixture(scope="module")
 def copper():
     campaign = read_campaign(COPPER)
     return campaign, run_campaign(campaign, seed=1, draws=400)
@@ -79,9 +92,8 @@ def copper():
 # candidates made from the tests
 
 
-def test_a_set_is_made_from_the_tests(folder):
-    campaign = read_campaign(folder / "campaign.toml")
-    result = run_campaign(campaign, "fit")
+def test_a_set_is_made_from_the_tests(four):
+    campaign, result = four
     patterns = patterns_of(result.kinetics["oxide/Cu"], campaign.tests)
     made = default_candidates(patterns)
     assert [c.name for c in made] == [
@@ -112,9 +124,8 @@ def test_a_set_is_made_from_the_tests(folder):
     assert not [c for c in default_candidates(patterns, plant, False) if "g/L" in c.name]
 
 
-def test_stirring_is_offered_where_speeds_are_written(folder):
-    campaign = read_campaign(folder / "campaign.toml")
-    result = run_campaign(campaign, "fit")
+def test_stirring_is_offered_where_speeds_are_written(four):
+    campaign, result = four
     stage = result.kinetics["oxide/Cu"]
     stirred = replace(
         stage, observed=tuple(replace(one, stirring_rpm=200.0) for one in stage.observed)
@@ -197,11 +208,11 @@ def test_cost_ranks_the_candidates_of_a_campaign(folder):
         ('like = "P1"\n[[candidates]]\nlike = "P1"', r"row \d+.*two named P1 again"),
     ],
 )
-def test_a_candidate_without_meaning_stops_with_its_line(folder, text, message):
+def test_a_candidate_without_meaning_stops_with_its_line(folder, four, text, message):
     row = len((folder / "campaign.toml").read_text().splitlines()) + 2
     path = add(folder, f"[[candidates]]\n{text}\n")
     with pytest.raises(InputProblems) as stopped:
-        judged(path, "constants")
+        campaign_next_tests(read_campaign(path), four[1], "constants")
     assert re.search(message.format(n=row), str(stopped.value)), str(stopped.value)
 
 
@@ -233,8 +244,8 @@ def test_an_assumed_energy_is_the_present_interval(one_temperature):
     assert now.half_width == pytest.approx(1.95996 * variance**0.5, rel=1e-4)
 
 
-def test_without_an_aim_the_constants_are_judged(folder):
-    found = judged(folder / "campaign.toml")
+def test_without_an_aim_the_constants_are_judged(four):
+    found = campaign_next_tests(*four)
     assert found.aim == "constants"
     assert "tells most" in found.advice[0]
     assert "A set of 3" in found.advice[1]
@@ -245,16 +256,15 @@ def test_without_an_aim_the_constants_are_judged(folder):
     assert data["key"] == "oxide/Cu"
 
 
-def test_a_settled_mechanism_needs_no_test(folder):
-    found = judged(folder / "campaign.toml", "mechanism")
+def test_a_settled_mechanism_needs_no_test(four):
+    found = campaign_next_tests(*four, "mechanism")
     assert found.found is None
     assert found.advice[0].startswith("The ranking is settled")
     assert "No stirring speed is written" in found.advice[1]
 
 
-def test_laws_that_are_left_get_a_chance_to_be_told_apart(folder):
-    campaign = read_campaign(folder / "campaign.toml")
-    result = run_campaign(campaign, "fit")
+def test_laws_that_are_left_get_a_chance_to_be_told_apart(four):
+    campaign, result = four
     stage = result.kinetics["oxide/Cu"]
     left = replace(stage, ranking=replace(stage.ranking, mechanisms=("ash_layer", "chemical")))
     found = campaign_next_tests(campaign, replace(result, kinetics={"oxide/Cu": left}))
@@ -377,14 +387,14 @@ def test_a_narrow_band_needs_no_bottle(folder):
         ("tank", r"there is no table \[tank\]"),
     ],
 )
-def test_an_aim_without_meaning_stops(folder, aim, message):
+def test_an_aim_without_meaning_stops(four, aim, message):
     with pytest.raises(InputProblems, match=message):
-        judged(folder / "campaign.toml", aim)
+        campaign_next_tests(*four, aim)
 
 
-def test_a_count_without_meaning_stops(folder):
+def test_a_count_without_meaning_stops(four):
     with pytest.raises(InputProblems, match="0 to 20"):
-        judged(folder / "campaign.toml", count=21)
+        campaign_next_tests(*four, count=21)
 
 
 def test_a_law_from_print_has_no_tests_to_stand_beside(tmp_path):
@@ -408,3 +418,48 @@ source = "stated"
     )
     with pytest.raises(InputProblems, match="no fit of tests"):
         judged(path)
+
+
+def test_curves_that_do_not_bend_ask_for_a_longer_test():
+    """Readings up to a tenth of the whole time: any ultimate extraction fits."""
+    time_h = np.array([0.5, 1.0, 1.5, 2.0])
+    E = 0.9 * ParticleLaw(chemical=20.0).conversion(time_h)
+    size = SizeDistribution.single(1.0)
+    tests = [observed_from_extraction(time_h, E, 0.02, test="A", sizes=size)]
+    fit = fit_tests(tests, "chemical")
+    bottles = [Bottle(n, size, 298.15, k * time_h, 1.0) for n, k in (("again", 1), ("longer", 10))]
+    found = next_tests(tests, fit, [Candidate(b) for b in bottles])
+    said = longer_advice(fit, found)
+    assert "do not exclude an ultimate extraction of 1: a longer one (longer)" in said[0]
+    late = np.array([1.0, 5.0, 10.0, 15.0, 20.0, 30.0, 40.0])
+    whole = 0.9 * ParticleLaw(chemical=20.0).conversion(late)
+    bent = [observed_from_extraction(late, whole, 0.01, test="A", sizes=size)]
+    settled = fit_tests(bent, "chemical")
+    assert not longer_advice(settled, next_tests(bent, settled, [Candidate(b) for b in bottles]))
+
+
+def test_a_choice_of_law_that_moves_the_figure_comes_first(folder, heap_text):
+    """Two laws with even weights, 10 % apart: their variance is that of two points."""
+    from leachkin.campaign.next_tests_plant import plant_band
+
+    campaign = read_campaign(add(folder, heap_text))
+    result = run_campaign(campaign, "heap", draws=100)
+    here = float(result.heap.extracted.value[-1])
+    other = SimpleNamespace(
+        law="chemical", extraction=here - 0.1, changes_the_figure=True, weight=0.5
+    )
+    spread = result.heap.draws.extracted + 0.1 * (np.arange(100) % 2 - 0.5)[:, None]
+    heap = replace(
+        result.heap,
+        other_laws=(other,),
+        draws=replace(result.heap.draws, extracted=spread),
+    )
+    stage = result.kinetics["oxide/Cu"]
+    left = replace(stage, ranking=replace(stage.ranking, mechanisms=("ash_layer", "chemical")))
+    moved = replace(result, heap=heap, kinetics={"oxide/Cu": left})
+    band = plant_band(campaign, moved, "heap", 0.0, None)
+    assert band.law_variance == pytest.approx(25.0, rel=1e-9)
+    found = campaign_next_tests(campaign, moved)
+    assert "would tell ash_layer and chemical apart" in found.advice[0]
+    assert "chemical, not rejected, would give" in found.advice[1]
+    assert "The choice of law makes" in found.advice[2]
