@@ -106,8 +106,14 @@ def tables_of_bench_sheet(
     for block in blocks:
         _tell_rows(grid, block, problems)
     _tell_labels(grid, unused, problems)
+    tables["closeout"].records.sort(key=_amounts_first)
     row = blocks[0].heading_row if blocks else 1
     return {name: table.sheet(grid, row) for name, table in tables.items() if table.records}
+
+
+def _amounts_first(item: tuple[int, dict[str, str]]) -> bool:
+    """Masses and volumes before assays, so that assays are replicates of what was weighed."""
+    return not any(heading.startswith(("mass", "volume")) for heading in item[1])
 
 
 def _tests_record(pairs: Sequence[Pair]) -> tuple[dict[str, str], list[Pair]]:

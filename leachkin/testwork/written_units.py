@@ -209,7 +209,7 @@ def _bare(name: str) -> str:
 
 def _eh(heading: Heading, answers: Answers) -> Found:
     unit, written = _split_electrode(heading.spelling)
-    _, in_name = _split_electrode(heading.column.partition("(")[0])
+    in_name = _electrode_in_name(heading.column.partition("(")[0])
     electrode = _electrode(written or in_name) or answers.electrode
     try:
         scale = convert(1.0, unit, "mV")
@@ -244,6 +244,14 @@ def _split_electrode(text: str) -> tuple[str, str]:
         return text.strip(), ""
     rest = re.sub(r"^(?:vs\.?|v\.?|against|to)\s+", "", parts[1].strip("() "))
     return parts[0], rest
+
+
+def _electrode_in_name(name: str) -> str:
+    """What stands behind "vs" or "against" in a heading, or an electrode at its end."""
+    if match := re.search(r"\b(?:vs\.?|against)\s+(.+?)\s*$", name):
+        return re.sub(r"\s+m?V$", "", match[1])
+    words = re.sub(r"\s+m?V\s*$", "", name.strip()).split(maxsplit=1)
+    return words[1] if len(words) > 1 and _electrode(words[1]) else ""
 
 
 def _electrode(text: str) -> str | None:

@@ -183,6 +183,8 @@ def test_electrode_and_filling_are_asked(read_texts):
     assert "against which electrode?" in question.found
     assert question.paste == 'sheets.electrode = "Ag/AgCl 3 M"'
     assert_allclose(test.logged["Eh_mV_SHE"], 450.0)
+    _, problems = reading(read_texts, "ORP mV", "450", of())
+    assert "against which electrode?" in [p for p in problems if p.paste][0].found
     test, problems = reading(read_texts, "Eh (mV Ag/AgCl)", "450", of())
     (question,) = [p for p in problems if p.column.startswith("Eh")]
     assert "Ag/AgCl with which filling? It is 197 to 236 mV" in question.found
