@@ -1,27 +1,24 @@
-"""What a row of ``[[assumed]]`` does: hold a parameter of the fit, or stand in the register."""
+"""What a row of ``[[assumed]]`` does: a prior of the fit, or a row of the register."""
 
 from __future__ import annotations
 
 import re
-from collections.abc import Mapping
-from dataclasses import replace
-from typing import Any
 
 from leachkin.campaign.schema_tables import SCHEMA
-from leachkin.campaign.settings import Group, Setting, Settings, draw_setting
+from leachkin.campaign.settings import Group, Setting, Settings
 from leachkin.errors import UnitError
-from leachkin.kinetics import RateLaw
 from leachkin.problems import Problem, unit_problem
 from leachkin.units import convert
 
 _ENERGY = re.compile(r"activation_energy(?:_(film|ash_layer|chemical|gangue))?")
 _EXPONENT = re.compile(r"size_exponent_(film|ash_layer|chemical)")
+_SHARE = re.compile(r"ultimate(?:_[0-9.e+-]+_(?:mm|K))?|slow_share|soluble_share")
 
 
 def assumed_in_fit(settings: Settings) -> dict[str, float]:
     """Return the assumed parameters that a fit holds, by name, in the fit's units.
 
-    Activation energies in kJ/mol, size exponents and the reagent order as bare numbers.
+    Activation energies in kJ/mol, size exponents, shares and the reagent order as bare numbers.
     """
     found = {}
     for group in settings.repeated.get("assumed", ()):
@@ -99,7 +96,7 @@ def _row_problems(
                 "assumed",
                 "note",
                 f"{name} is in the register and moves no number",
-                "activation_energy_chemical, size_exponent_ash_layer, reagent_order, ...",
+                "activation_energy_chemical, size_exponent_ash_layer, ultimate, reagent_order, ...",
             )
         ]
     return []
@@ -111,6 +108,8 @@ def _order_problems(settings: Settings, group: Group, file: str, line: int | Non
     if isinstance(stated, float) and value is not None and stated != value:
         found = f"reagent_order is {value:g} here and {stated:g} in [fit]"
         return [Problem(file, line, "assumed", "stop", found, "one value", "make them equal")]
+    if not settings.has("heap"):
+        return []
     found = "the range of reagent_order is in the register and not in the bands"
     return [
         Problem(
@@ -130,7 +129,8 @@ def _name(group: Group) -> str | None:
 
 
 def _acts(name: str) -> bool:
-    return bool(_ENERGY.fullmatch(name) or _EXPONENT.fullmatch(name)) or name == "reagent_order"
+    known = (_ENERGY, _EXPONENT, _SHARE)
+    return any(one.fullmatch(name) for one in known) or name == "reagent_order"
 
 
 def _in_unit(name: str, setting: Setting) -> float:
@@ -143,32 +143,13 @@ def _in_unit(name: str, setting: Setting) -> float:
     return float(setting.value)
 
 
-def with_assumed_ranges(law: RateLaw, settings: Settings, count: int, seed: int) -> RateLaw:
-    """Return draws of a law with the assumed activation energies drawn over their ranges."""
-    draws = _energy_draws(settings, count, seed)
-    if not draws:
-        return law
-    changed = []
-    for one in law.resistances:
-        name = "activation_energy" if one.kind == "clock" else f"activation_energy_{one.kind}"
-        drawn = draws.get(name)
-        changed.append(one if drawn is None else replace(one, activation_energy_kJ_per_mol=drawn))
-    return replace(law, resistances=tuple(changed))
+def assumed_priors(settings: Settings) -> dict[str, tuple[float, float]]:
+    """Return what is assumed of parameters of the fit, as value and standard deviation.
 
-
-def drawn_energies(settings: Settings) -> tuple[str, ...]:
-    """Return the names of the assumed activation energies that have a range."""
-    return tuple(_energy_draws(settings, 1, 0))
-
-
-def _energy_draws(settings: Settings, count: int, seed: int) -> Mapping[str, Any]:
-    found: dict[str, Any] = {}
-    for group in settings.repeated.get("assumed", ()):
-        name = _name(group)
-        if name is None or not _ENERGY.fullmatch(name) or not {"low", "high"} <= set(group):
-            continue
-        low, value, high = (_in_unit(name, group[end]) for end in ("low", "value", "high"))
-        setting = Setting(f"assumed.{name}", value, "kJ/mol", low, high)
-        if setting.has_range:
-            found[name] = draw_setting(setting, count, seed)
+    The order in the reagent is left out where a heap is planned: plug flow holds for order 1.
+    """
+    found = assumed_deviations(settings)
+    found.pop("activation_energy_gangue", None)
+    if settings.has("heap"):
+        found.pop("reagent_order", None)
     return found

@@ -6,6 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 
+from leachkin.campaign.assumed_values import assumed_problems
 from leachkin.campaign.extraction_sheet import is_extraction_sheet
 from leachkin.campaign.read_settings import assumptions_of, read_settings
 from leachkin.campaign.schema import FORMAT
@@ -190,7 +191,8 @@ def _of_document(
         for found in sheets.values()
         for sheet in found
     }
-    everything = (*before, *problems, *sheet_problems, *test_problems, *observed_problems)
+    found = (*sheet_problems, *test_problems, *observed_problems)
+    everything = (*before, *problems, *assumed_problems(settings, document.file), *found)
     return Campaign(
         document.file,
         settings,

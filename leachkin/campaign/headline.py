@@ -77,6 +77,20 @@ def _heap_lines(heap: HeapStage, level: float) -> Iterator[str]:
         f"{_fraction(heap.in_solution.at(-1))} % dissolved in the heap. Basis: dry ore."
     )
     yield _what_rules(heap)
+    yield from _wide_line(heap)
+
+
+def _wide_line(plant: HeapStage | TankStage) -> Iterator[str]:
+    """What makes the band wide: each cause alone."""
+    parts = []
+    for one in plant.band_parts[:-1]:
+        if one.figure.low is None or one.figure.high is None:
+            parts.append(f"{one.cause} nothing ({one.holds})")
+        else:
+            ends = (_PERCENT * one.figure.low, _PERCENT * one.figure.high)
+            parts.append(f"{one.cause} {ends[0]:.3g} to {ends[1]:.3g} %")
+    if parts:
+        yield f"What makes that band, each alone: {'; '.join(parts)}."
 
 
 def _what_rules(heap: HeapStage) -> str:
@@ -104,6 +118,7 @@ def _tank_lines(tank: TankStage, level: float) -> Iterator[str]:
         f"{len(tank.residence_times_h)} tanks of {hours:.3g} h in all"
         f"{_band_words(out.level, tank.contains)}. Basis: dry ore."
     )
+    yield from _wide_line(tank)
 
 
 def _bottle_lines(result: CampaignResult) -> Iterator[str]:
@@ -168,7 +183,8 @@ def _assumed_line(assumed: tuple[Assumption, ...]) -> str:
         return "Nothing is assumed beyond the sheets and settings."
     worst = sorted(assumed, key=_importance)[:WORST]
     named = listed([f"{row.key} = {_shown(row)}" for row in worst])
-    return f"{len(assumed)} values are assumed, not measured; the worst: {named}."
+    counted = "1 value is" if len(assumed) == 1 else f"{len(assumed)} values are"
+    return f"{counted} assumed, not measured; the worst: {named}."
 
 
 def _importance(row: Assumption) -> tuple[bool, bool, float]:
@@ -197,20 +213,19 @@ def _law_lines(result: CampaignResult) -> Iterator[str]:
         if stage.ranking is None:
             continue
         yield f"{key}: {stage.ranking.verdict}"
-    if result.heap is None or not result.heap.other_laws:
-        return
-    moved = [one for one in result.heap.other_laws if one.changes_the_figure]
-    if moved:
-        words = listed([f"{one.law} {_PERCENT * one.extraction:.3g} %" for one in moved])
-        yield f"Laws that the data do not reject change the plant figure: {words}."
-    else:
-        yield "The laws that cannot be told apart give the same plant figure within 1 point."
+        if stage.evidence is not None and stage.evidence.lines is not None:
+            yield stage.evidence.lines.verdict
+    for plant in (result.heap, result.tank):
+        if plant is not None and plant.law_verdict:
+            yield plant.law_verdict
 
 
 def _question_line(problems: tuple[Problem, ...]) -> str:
     asked = sum(problem.level == "ask" for problem in problems)
     notes = sum(problem.level == "note" for problem in problems)
-    return f"{asked} questions to answer and {notes} notes; see problems."
+    questions = "1 question" if asked == 1 else f"{asked} questions"
+    remarks = "1 note" if notes == 1 else f"{notes} notes"
+    return f"{questions} to answer and {remarks}; see problems."
 
 
 def _hazard_line(result: CampaignResult) -> str:

@@ -6,17 +6,15 @@ from collections.abc import Mapping, Sequence
 
 import numpy as np
 
-from leachkin.campaign.assumed_values import with_assumed_ranges
 from leachkin.campaign.campaign import Campaign
+from leachkin.campaign.carried_laws import carried_fits, drawn_laws, is_particle, own_draws
 from leachkin.campaign.printed_law import law_from_print
 from leachkin.campaign.settings import draw_setting
 from leachkin.campaign.stage_gangue import reagent_per_metal
-from leachkin.campaign.stage_kinetics import is_particle
-from leachkin.campaign.stage_results import KineticsStage, PlantOre
+from leachkin.campaign.stage_results import CarriedLaw, KineticsStage, PlantOre
 from leachkin.errors import InputProblems
 from leachkin.kinetics import RateLaw
 from leachkin.problems import Problem
-from leachkin.run_record import stage_seed
 from leachkin.testwork import Test
 
 #: What stands behind the plant figures.
@@ -43,6 +41,8 @@ def plant_ore(
     head, head_draws = _head(campaign, law_stage.key, stage, draws, seed)
     per_metal, per_metal_draws = _per_metal(campaign, law_stage.metal, draws, seed)
     law_draws = _law_draws(campaign, law_stage, draws, seed)
+    ranking = law_stage.ranking
+    carried = carried_fits(law_stage)
     return PlantOre(
         law_stage.key,
         law_stage.law,
@@ -53,6 +53,11 @@ def plant_ore(
         per_metal_draws,
         grade_of(campaign, law_stage),
         law_stage.source == "fit" and law_draws is not None,
+        law_draws if len(carried) < 2 else own_draws(law_stage, draws, seed),
+        tuple(CarriedLaw(fit.law_name, fit.law, weight) for fit, weight in carried),
+        ()
+        if ranking is None
+        else tuple(law for law in ranking.indistinguishable if not is_particle(law)),
     )
 
 
@@ -150,8 +155,5 @@ def _law_draws(
     if law_stage.source == "print":
         drawn = law_from_print(campaign.settings, draws, seed)
         return drawn if drawn.batch_shape else None
-    fit = law_stage.fit
-    if fit is None or fit.covariance is None:
-        return None
-    law = fit.draw(draws, stage_seed(seed, f"fit {law_stage.key}"))
-    return with_assumed_ranges(law, campaign.settings, draws, seed)
+    found = drawn_laws(law_stage, draws, seed)
+    return None if found is None else found[0]

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from leachkin.campaign.assumed_values import drawn_energies
+from leachkin.campaign.assumed_values import assumed_priors
 from leachkin.campaign.printed_law import flat_sizes, with_ultimate_knots
 from leachkin.campaign.settings import Settings
 from leachkin.campaign.stage_results import GangueStage, PlantOre
@@ -28,8 +28,10 @@ def band_contents(
     held = []
     if ore.fit_in_band:
         held.append("fit")
-        energies = drawn_energies(settings)
-        held += [f"assumed ranges of {', '.join(energies)}"] if energies else []
+        if len(ore.carried) > 1:
+            held.append(f"{len(ore.carried)} laws not rejected, by AICc weight")
+        assumed = assumed_priors(settings)
+        held += [f"assumed ranges of {', '.join(assumed)}"] if assumed else []
     if gangue is not None and gangue.source == "fit":
         held.append("gangue fit")
     printed = settings.ranged("rate_law", "gangue")

@@ -10,6 +10,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from leachkin.campaign.bands import Band, Quantity, plain_number
+from leachkin.campaign.diagnostics_dict import diagnostics_dict, posterior_dict
+from leachkin.campaign.evidence_tables import evidence_tables
 from leachkin.campaign.result import SCHEMA_VERSION, CampaignResult
 from leachkin.campaign.stage_results import (
     BudgetStage,
@@ -115,6 +117,7 @@ def _balance(balance: MetalBalance) -> dict[str, Any]:
 
 def _kinetics(stage: KineticsStage) -> dict[str, Any]:
     fit, ranking, reference = stage.fit, stage.ranking, stage.law.reference
+    key = stage.key
     return {
         "law": stage.law.name,
         "source": stage.source,
@@ -127,7 +130,14 @@ def _kinetics(stage: KineticsStage) -> dict[str, Any]:
             "size_mm": _numbers(stage.law.ultimate_size_mm),
             "value": _numbers(stage.law.ultimate),
         },
+        "intervals": stage.intervals or None,
         "parameters": [] if fit is None else [_parameter(p) for p in fit.parameters],
+        "posterior": None if fit is None else posterior_dict(fit.sampled),
+        "alternatives": [
+            {"law": one.law.name, "parameters": [_parameter(p) for p in one.parameters]}
+            for one in stage.alternatives
+        ],
+        "diagnostics": diagnostics_dict(stage.diagnostics),
         "n_tests": None if fit is None else fit.n_tests,
         "n_points": None if fit is None else fit.n_points,
         "degrees_of_freedom": None if fit is None else fit.degrees_of_freedom,
@@ -137,6 +147,10 @@ def _kinetics(stage: KineticsStage) -> dict[str, Any]:
         "ranking": [] if ranking is None else _records(ranking.table()),
         "verdict": None if ranking is None else ranking.verdict,
         "indistinguishable": [] if ranking is None else list(ranking.indistinguishable),
+        "evidence": {
+            table.name.removesuffix(f"_{key}"): _records(table)
+            for table in evidence_tables(stage, key)
+        },
         "tests": [one.test for one in stage.observed],
         "excluded": list(stage.excluded),
         "notes": list(stage.notes),
@@ -154,6 +168,7 @@ def _parameter(parameter: Any) -> dict[str, Any]:
         "level": parameter.level,
         "method": parameter.method,
         "why_no_interval": parameter.why_no_interval,
+        "remark": parameter.remark,
     }
 
 
@@ -207,9 +222,22 @@ def _tank(stage: TankStage) -> dict[str, Any]:
         "ore_rate_t_per_month": stage.ore_rate_t_per_month,
         "metal_taken_kg_per_t": _quantity(stage.metal_taken_kg_per_t),
         "gangue_taken_kg_per_t": _quantity(stage.gangue_taken_kg_per_t),
+        **_laws(stage),
         "band_holds": list(stage.contains),
         "outside_the_data": list(stage.outside),
         "notes": list(stage.notes),
+    }
+
+
+def _laws(stage: TankStage | HeapStage) -> dict[str, Any]:
+    """The other laws not rejected, what they change, and what makes the band wide."""
+    return {
+        "other_laws": [asdict(one) for one in stage.other_laws],
+        "law_verdict": stage.law_verdict,
+        "band_parts": [
+            {"cause": one.cause, "figure": _quantity(one.figure), "holds": one.holds}
+            for one in stage.band_parts
+        ],
     }
 
 
@@ -250,7 +278,7 @@ def _heap(stage: HeapStage) -> dict[str, Any]:
         "rules": list(stage.result.rules),
         "first_solution_day": plain_number(stage.result.first_solution_day),
         "sizes": _sizes(stage.sizes),
-        "other_laws": [asdict(one) for one in stage.other_laws],
+        **_laws(stage),
         "band_holds": list(stage.contains),
         "outside_the_data": list(stage.outside),
         "notes": list(stage.notes),
@@ -291,7 +319,7 @@ def _budget(stage: BudgetStage) -> dict[str, Any]:
         "cost_per_month": _quantity(stage.cost_per_month),
         "cost_per_t_ore": _quantity(stage.cost_per_t_ore),
         "cost_per_kg_metal": _quantity(stage.cost_per_kg_metal),
-        "tables": {table.name: _records(table) for table in budget_tables(stage.budget)},
+        "tables": {table.name: _records(table) for table in budget_tables(stage.budget, stage.drawn)},
         "basis": list(stage.basis),
         "band_holds": list(stage.contains),
         "notes": list(stage.notes),

@@ -7,6 +7,11 @@ from dataclasses import replace
 from typing import Any
 
 from leachkin.campaign.bands import Band, Quantity
+from leachkin.campaign.evidence_tables import (
+    band_parts_table,
+    evidence_tables,
+    other_laws_table,
+)
 from leachkin.campaign.result import CampaignResult
 from leachkin.campaign.settings import register_table
 from leachkin.campaign.stage_results import (
@@ -47,8 +52,10 @@ def _all(result: CampaignResult) -> Iterator[ResultTable]:
         yield gangue_table(result.gangue)
     if result.tank is not None:
         yield tank_table(result.tank)
+        yield from _law_tables(result.tank, "tank")
     if result.heap is not None:
         yield from heap_tables(result.heap)
+        yield from _law_tables(result.heap, "heap")
     if result.cementation is not None:
         yield from cementation_tables(result.cementation)
     if result.budget is not None:
@@ -87,9 +94,18 @@ def kinetics_tables(stage: KineticsStage) -> Iterator[ResultTable]:
                 caption="The energy of all tests together is the one used; a line through a fit a "
                 "temperature keeps few degrees of freedom.",
             )
+        yield from evidence_tables(stage, key)
         yield replace(stage.fit.residual_table(), name=f"residuals_{key}")
     else:
         yield replace(printed_table(stage), name=f"parameters_{key}")
+
+
+def _law_tables(stage: HeapStage | TankStage, plant: str) -> Iterator[ResultTable]:
+    found = (
+        band_parts_table(stage, f"{plant}_band"),
+        other_laws_table(stage, f"{plant}_other_laws"),
+    )
+    yield from (table for table in found if table is not None)
 
 
 def printed_table(stage: KineticsStage) -> ResultTable:
@@ -312,7 +328,7 @@ def _cementation_figures(stage: CementationStage) -> Iterator[tuple[str, Quantit
 
 def budget_tables(stage: BudgetStage) -> Iterator[ResultTable]:
     """Yield the budget's own tables and its totals with bands."""
-    yield from budget_sheets(stage.budget)
+    yield from budget_sheets(stage.budget, stage.drawn)
     yield figures_table(
         "budget_totals",
         iter(

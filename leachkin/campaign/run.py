@@ -172,7 +172,7 @@ def _do_kinetics(run: _Run, reuse: CampaignResult | None) -> None:
     if reuse is not None:
         run.found["kinetics"] = reuse.kinetics
         return
-    run.found["kinetics"], problems = kinetics_stage(run.campaign, run.level)
+    run.found["kinetics"], problems = kinetics_stage(run.campaign, run.level, run.seed)
     run.problems += problems
 
 
@@ -215,7 +215,7 @@ def _heap(run: _Run) -> Any:
     kinetics = run.found.get("kinetics", {})
     ore = plant_ore(run.campaign, kinetics, "heap", run.draws, run.seed)
     gangue = run.found.get("gangue")
-    return heap_stage(run.campaign, ore, gangue, kinetics[ore.key], run.draws, run.seed, run.level)
+    return heap_stage(run.campaign, ore, gangue, run.draws, run.seed, run.level)
 
 
 def _do_cementation(run: _Run, reuse: CampaignResult | None) -> None:

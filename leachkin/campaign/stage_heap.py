@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -13,18 +13,12 @@ from leachkin.campaign.bands import band_of, quantity_of
 from leachkin.campaign.campaign import Campaign
 from leachkin.campaign.plant_ore import SCOPING
 from leachkin.campaign.plant_sizes import plant_sizes
+from leachkin.campaign.plant_split import End, band_parts, other_laws, plant_verdict
 from leachkin.campaign.plant_words import band_contents, outside_the_data, ultimate_note
 from leachkin.campaign.printed_law import at_temperature, lengthened, with_ultimate_knots
 from leachkin.campaign.settings import Settings, is_drawn
 from leachkin.campaign.stage_gangue import demand_at, gangue_draws
-from leachkin.campaign.stage_kinetics import is_particle
-from leachkin.campaign.stage_results import (
-    GangueStage,
-    HeapStage,
-    KineticsStage,
-    LawElsewhere,
-    PlantOre,
-)
+from leachkin.campaign.stage_results import BandPart, GangueStage, HeapStage, PlantOre
 from leachkin.constants import DAYS_PER_MONTH, HOURS_PER_DAY
 from leachkin.errors import InputProblems
 from leachkin.kinetics import GangueLaw, RateLaw
@@ -49,8 +43,6 @@ _CONDITIONS = (
     "delivery_factor",
     "length_factor",
 )
-#: A difference between laws that is worth a word, as a fraction of the head.
-WORTH_A_WORD = 0.01
 
 
 @dataclass(frozen=True)
@@ -108,7 +100,6 @@ def heap_stage(
     campaign: Campaign,
     ore: PlantOre,
     gangue: GangueStage | None,
-    kinetics: KineticsStage,
     draws: int,
     seed: int,
     level: float,
@@ -121,10 +112,7 @@ def heap_stage(
         If the size distribution is missing, or the law cannot be used by plug flow.
     """
     settings = campaign.settings
-    sizes = plant_sizes(settings, "heap")
-    if sizes is None:
-        raise InputProblems([_no_sizes("heap")])
-    bed = _Bed(settings, sizes, gangue, settings.number("heap.lift_height"))
+    bed = _bed(campaign, gangue)
     days = heap_days(settings.number("heap.cycle"))
     stated = {name: settings.number(f"heap.{name}") for name in _CONDITIONS}
     result = bed.run(
@@ -136,7 +124,8 @@ def heap_stage(
         (0, seed),
     )
     drawn = _drawn(bed, ore, days, draws, seed) if draws else None
-    return _stage(bed, ore, kinetics, stated, days, result, drawn, level)
+    stage = _stage(bed, ore, stated, days, result, drawn, level)
+    return _with_laws(stage, bed, ore, stated, draws, seed)
 
 
 def heap_end(
@@ -149,20 +138,19 @@ def heap_end(
     InputProblems
         As :func:`heap_stage`.
     """
+    bed = _bed(campaign, gangue)
+    settings = campaign.settings
+    stated = {name: settings.number(f"heap.{name}") for name in _CONDITIONS}
+    run = _end(bed, ore, stated, np.array([settings.number("heap.cycle")]), 0, 0)
+    return lambda law: run(law, False)
+
+
+def _bed(campaign: Campaign, gangue: GangueStage | None) -> _Bed:
     settings = campaign.settings
     sizes = plant_sizes(settings, "heap")
     if sizes is None:
         raise InputProblems([_no_sizes("heap")])
-    bed = _Bed(settings, sizes, gangue, settings.number("heap.lift_height"))
-    stated = {name: settings.number(f"heap.{name}") for name in _CONDITIONS}
-    metal = (ore.per_metal_kg_per_kg, ore.head_kg_per_t)
-    days = np.array([settings.number("heap.cycle")])
-
-    def end(law: RateLaw) -> Array:
-        result = bed.run(law, metal, stated, bed.stated_gangue, days, (0, 0))
-        return np.asarray(result.extracted)[..., -1]
-
-    return end
+    return _Bed(settings, sizes, gangue, settings.number("heap.lift_height"))
 
 
 def _no_sizes(stage: str) -> Problem:
@@ -194,7 +182,6 @@ def _drawn(bed: _Bed, ore: PlantOre, days: Array, draws: int, seed: int) -> Heap
 def _stage(
     bed: _Bed,
     ore: PlantOre,
-    kinetics: KineticsStage,
     stated: Mapping[str, float],
     days: Array,
     result: HeapResult,
@@ -236,7 +223,6 @@ def _stage(
         cure_kg_per_t=stated["cure"],
         **sinks,
         gangue_known=bed.gangue is not None,
-        other_laws=_other_laws(bed, ore, kinetics, stated, days, result),
         contains=band_contents(ore, bed.gangue, settings, "heap", drawn is not None),
         outside=_outside(bed, ore, stated, cycle),
         notes=_notes(bed, ore, result),
@@ -277,35 +263,42 @@ def _sinks(
     }
 
 
-def _other_laws(
+def _with_laws(
+    stage: HeapStage,
     bed: _Bed,
     ore: PlantOre,
-    kinetics: KineticsStage,
     stated: Mapping[str, float],
-    days: Array,
-    result: HeapResult,
-) -> tuple[LawElsewhere, ...]:
-    """Carry every other law that the data do not reject to the end of the cycle."""
-    if kinetics.ranking is None:
-        return ()
-    found = []
-    answer = float(np.asarray(result.extracted)[-1])
-    for row in kinetics.ranking.rows:
-        if row.fit is None or row.law not in kinetics.ranking.indistinguishable:
-            continue
-        if row.law == ore.law.name or not is_particle(row.law):
-            continue
-        other = bed.run(
-            row.fit.law,
-            (ore.per_metal_kg_per_kg, ore.head_kg_per_t),
-            stated,
-            bed.stated_gangue,
-            days[-1:],
-            (0, 0),
-        )
-        end = float(np.asarray(other.extracted)[-1])
-        found.append(LawElsewhere(row.law, end, abs(end - answer) > WORTH_A_WORD))
-    return tuple(found)
+    draws: int,
+    seed: int,
+) -> HeapStage:
+    """Return the stage with every other law at the end of the cycle, and what makes the band."""
+    end = _end(bed, ore, stated, stage.days[-1:], draws, seed)
+    others = other_laws(ore, end)
+    figure = stage.extracted.at(-1)
+    where = f"extracted at {stage.cycle_d:.4g} d"
+    parts: tuple[BandPart, ...] = ()
+    if stage.draws is not None and figure.level is not None:
+        names = tuple(s.key.split(".", 1)[1] for s in bed.settings.ranged("heap"))
+        parts = band_parts(ore, end, others, figure, ore.fit_draws, names, figure.level)
+    verdict = plant_verdict(ore, others, figure, where)
+    return replace(stage, other_laws=others, band_parts=parts, law_verdict=verdict)
+
+
+def _end(
+    bed: _Bed, ore: PlantOre, stated: Mapping[str, float], last: Array, draws: int, seed: int
+) -> End:
+    """Return the extraction at the end of the cycle as a function of law and scale-up."""
+    metal = (ore.per_metal_kg_per_kg, ore.head_kg_per_t)
+
+    def end(law: RateLaw, scale_up: bool) -> Array:
+        condition: Mapping[str, Any] = stated
+        if scale_up:
+            condition = {n: bed.settings.draw(f"heap.{n}", draws, seed) for n in _CONDITIONS}
+        knots = (0, 0) if not scale_up else (draws, seed)
+        result = bed.run(law, metal, condition, bed.stated_gangue, last, knots)
+        return np.asarray(result.extracted)[..., -1]
+
+    return end
 
 
 def _outside(

@@ -5,11 +5,15 @@ from __future__ import annotations
 from collections.abc import Sequence
 from typing import Any
 
+from leachkin.campaign.assumed_values import assumed_priors
 from leachkin.campaign.campaign import Campaign
+from leachkin.campaign.carried_laws import is_particle
 from leachkin.campaign.fit_balances import fit_balances
 from leachkin.campaign.printed_law import law_from_print
 from leachkin.campaign.settings import Settings
 from leachkin.campaign.sheets import exclusions
+from leachkin.campaign.stage_evidence import with_evidence
+from leachkin.campaign.stage_intervals import with_intervals
 from leachkin.campaign.stage_results import KineticsStage
 from leachkin.errors import InputProblems, LeachkinError
 from leachkin.kinetics import (
@@ -19,7 +23,6 @@ from leachkin.kinetics import (
     Reference,
     TwoStepArrhenius,
     arrhenius_two_step,
-    law_terms,
     rank_tests,
 )
 from leachkin.problems import Problem
@@ -30,7 +33,7 @@ FEWEST_READINGS = 4
 
 
 def kinetics_stage(
-    campaign: Campaign, level: float
+    campaign: Campaign, level: float, seed: int = 1
 ) -> tuple[dict[str, KineticsStage], tuple[Problem, ...]]:
     """Return the rate law of every metal and domain, by "domain/metal".
 
@@ -46,7 +49,8 @@ def kinetics_stage(
             problems.append(_print_wins(key))
             continue
         try:
-            stages[key] = _fitted(campaign, key, tests, level)
+            stages[key], found = _fitted(campaign, key, tests, level, seed)
+            problems += found
         except LeachkinError as error:
             problems += _failed(key, error)
     if printed is not None:
@@ -137,7 +141,9 @@ def _printed(settings: Settings, key: str) -> KineticsStage:
     return KineticsStage(key, law_from_print(settings), "print", notes=(note,))
 
 
-def _fitted(campaign: Campaign, key: str, tests: Sequence[Observed], level: float) -> KineticsStage:
+def _fitted(
+    campaign: Campaign, key: str, tests: Sequence[Observed], level: float, seed: int
+) -> tuple[KineticsStage, tuple[Problem, ...]]:
     readings = sum(len(one.value) for one in tests)
     if readings < FEWEST_READINGS:
         raise InputProblems(
@@ -155,10 +161,13 @@ def _fitted(campaign: Campaign, key: str, tests: Sequence[Observed], level: floa
         )
     options = fit_options(campaign.settings, level)
     options["balances"] = fit_balances(campaign, key.rpartition("/")[2])
+    priors = assumed_priors(campaign.settings)
+    if priors:
+        options["priors"] = priors
     ranking = rank_tests(tests, **options)
     fit = carried(ranking)
     two_step, notes = _two_step(tests, fit, options)
-    return KineticsStage(
+    stage = KineticsStage(
         key,
         fit.law,
         "fit",
@@ -169,6 +178,9 @@ def _fitted(campaign: Campaign, key: str, tests: Sequence[Observed], level: floa
         notes,
         two_step,
     )
+    stage = with_evidence(stage, options, campaign.settings.get("fit.try_terms"))
+    method = campaign.settings.get("fit.intervals")
+    return with_intervals(stage, method, seed, options["balances"])
 
 
 def _two_step(
@@ -177,7 +189,7 @@ def _two_step(
     """Return the energies in two steps, or why they cannot be had."""
     if len({round(one.temperature_K) for one in tests}) < 2:
         return None, ()
-    same = {name: value for name, value in options.items() if name != "laws"}
+    same = {name: value for name, value in options.items() if name not in ("laws", "priors")}
     try:
         found = arrhenius_two_step(tests, fit.law.name, **same)
     except InputProblems as error:
@@ -225,10 +237,15 @@ def _reference(settings: Settings) -> Reference | None:
 
 
 def carried(ranking: Ranking) -> FitResult:
-    """Return the fit that the plant uses: the best one that has a theory of size and strength.
+    """Return the fit that the plant uses: the mechanism named first, if it can be carried there.
 
-    Without any, the best one; the plant stages then say that they cannot use it elsewhere.
+    Else the best law that has a theory of size and strength. Without any, the best one; the plant
+    stages then say that they cannot use it elsewhere.
     """
+    for law in ranking.mechanisms:
+        named = ranking.fit_of(law)
+        if named is not None and named.converged and is_particle(law):
+            return named
     fits = [
         row.fit
         for row in sorted(ranking.rows, key=lambda row: row.delta)
@@ -249,8 +266,3 @@ def carried(ranking: Ranking) -> FitResult:
             ]
         )
     return next((fit for fit in fits if is_particle(fit.law.name)), fits[0])
-
-
-def is_particle(law: str) -> bool:
-    """Return True for a law of film, ash layer and chemical control in any sum."""
-    return all(term in ("film", "ash_layer", "chemical") for term in law_terms(law))

@@ -6,7 +6,7 @@ from collections.abc import Mapping
 from dataclasses import replace
 from typing import Any
 
-from leachkin.campaign.assumed_values import drawn_energies
+from leachkin.campaign.assumed_values import assumed_priors
 from leachkin.campaign.campaign import Campaign
 from leachkin.campaign.settings import Assumption
 from leachkin.campaign.stage_gangue import reagent_per_metal
@@ -28,7 +28,7 @@ def register_of_run(campaign: Campaign, found: Mapping[str, Any]) -> tuple[Assum
     Those of stages that were not done are left out; what a stage took from molar masses or from
     the law itself is added.
     """
-    drawn = _drawn_energies(campaign, found)
+    drawn = _drawn_assumptions(campaign, found)
     rows = [
         replace(row, in_band=True) if row.key in drawn else row
         for row in campaign.assumed
@@ -40,11 +40,11 @@ def register_of_run(campaign: Campaign, found: Mapping[str, Any]) -> tuple[Assum
     return tuple(dict.fromkeys(rows))
 
 
-def _drawn_energies(campaign: Campaign, found: Mapping[str, Any]) -> tuple[str, ...]:
-    """The assumed activation energies whose range is in the band of a plant figure."""
+def _drawn_assumptions(campaign: Campaign, found: Mapping[str, Any]) -> tuple[str, ...]:
+    """The assumed values of the fit whose range is in the band of a plant figure."""
     plants = [found[name] for name in ("heap", "tank") if found.get(name) is not None]
     fitted = [p for p in plants if p.draws is not None and "fit" in p.contains]
-    return drawn_energies(campaign.settings) if fitted else ()
+    return tuple(assumed_priors(campaign.settings)) if fitted else ()
 
 
 def _used(row: Assumption, found: Mapping[str, Any]) -> bool:

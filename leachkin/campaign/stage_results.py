@@ -11,13 +11,19 @@ from numpy.typing import NDArray
 from leachkin.campaign.bands import Band, Quantity
 from leachkin.cementation import CementationDemand, Precipitant, Solution
 from leachkin.kinetics import (
+    Evidence,
     FitResult,
     GangueFit,
     GangueLaw,
     GangueReadings,
+    KineticDiagnostics,
+    LeftOut,
+    NestedTest,
     Ranking,
     RateLaw,
     ReagentDemand,
+    ResidualChecks,
+    TermTest,
     TwoStepArrhenius,
 )
 from leachkin.reagents import Budget
@@ -25,6 +31,32 @@ from leachkin.scaleup import HeapResult, TankTrain
 from leachkin.testwork import Observed, SizeDistribution
 
 Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class LawEvidence:
+    """What speaks for and against the law of a metal.
+
+    Attributes
+    ----------
+    lines : Evidence or None
+        Ranking, size exponent, stirring and activation energy, each scored; None for an empirical
+        law.
+    nested : tuple of NestedTest
+        Each law of the ranking against each that it contains.
+    left_out : tuple of LeftOut
+        How well laws predict each test from the others; empty for too few or too many tests.
+    residuals : ResidualChecks or None
+        Runs of one sign, and a trend; None for too few readings.
+    terms : tuple of TermTest
+        Further terms, and whether the data ask for them.
+    """
+
+    lines: Evidence | None
+    nested: tuple[NestedTest, ...]
+    left_out: tuple[LeftOut, ...]
+    residuals: ResidualChecks | None
+    terms: tuple[TermTest, ...]
 
 
 @dataclass(frozen=True)
@@ -48,6 +80,13 @@ class KineticsStage:
     notes : tuple of str
     two_step : TwoStepArrhenius or None
         Activation energies by a fit a temperature, beside the fit; None for one temperature.
+    evidence : LawEvidence or None
+    intervals : str
+        Method of the intervals of ``fit``; "" for a printed law.
+    alternatives : tuple of FitResult
+        Other laws that the data do not reject, with intervals.
+    diagnostics : KineticDiagnostics or None
+        What the figures of the fit need.
     """
 
     key: str
@@ -59,6 +98,10 @@ class KineticsStage:
     excluded: tuple[str, ...] = ()
     notes: tuple[str, ...] = ()
     two_step: TwoStepArrhenius | None = None
+    evidence: LawEvidence | None = None
+    intervals: str = ""
+    alternatives: tuple[FitResult, ...] = ()
+    diagnostics: KineticDiagnostics | None = None
 
     @property
     def metal(self) -> str:
@@ -88,6 +131,15 @@ class GangueStage:
 
 
 @dataclass(frozen=True)
+class CarriedLaw:
+    """A law that the data do not reject, as fitted, and its share of the draws."""
+
+    name: str
+    law: RateLaw
+    weight: float
+
+
+@dataclass(frozen=True)
 class PlantOre:
     """The ore as tanks and heap use it: law, head and reagent per metal, with their draws.
 
@@ -105,6 +157,12 @@ class PlantOre:
         Grade of evidence of everything that follows.
     fit_in_band : bool
         True where ``law_draws`` come from a fit.
+    fit_draws : RateLaw or None
+        Draws of ``law`` alone, by the index that ``law_draws`` has.
+    carried : tuple of CarriedLaw
+        Every law that the data do not reject and that may be carried to the plant, ``law`` first.
+    not_carried : tuple of str
+        Laws not rejected either, without a theory of size and strength.
     """
 
     key: str
@@ -116,6 +174,9 @@ class PlantOre:
     per_metal_draws: Array | float
     grade: str
     fit_in_band: bool
+    fit_draws: RateLaw | None = None
+    carried: tuple[CarriedLaw, ...] = ()
+    not_carried: tuple[str, ...] = ()
 
     @property
     def metal(self) -> str:
@@ -125,11 +186,30 @@ class PlantOre:
 
 @dataclass(frozen=True)
 class LawElsewhere:
-    """Another law that the data do not reject, carried to the plant."""
+    """Another law that the data do not reject, carried to the plant; weight is of its draws."""
 
     law: str
     extraction: float
     changes_the_figure: bool
+    weight: float = 0.0
+
+
+@dataclass(frozen=True)
+class BandPart:
+    """How wide the plant figure would be from one cause alone.
+
+    Attributes
+    ----------
+    cause : "fit", "law", "scale-up" or "all together"
+    figure : Quantity
+        Extraction at the end, with the ends that this cause gives it; none where it gives none.
+    holds : str
+        What is drawn, or why there is nothing.
+    """
+
+    cause: str
+    figure: Quantity
+    holds: str
 
 
 @dataclass(frozen=True)
@@ -160,6 +240,10 @@ class TankStage:
     outside : tuple of str
         Where the plant lies outside the data.
     notes : tuple of str
+    other_laws : tuple of LawElsewhere
+    band_parts : tuple of BandPart
+    law_verdict : str
+        Whether the choice of law changes the figure.
     """
 
     key: str
@@ -185,6 +269,9 @@ class TankStage:
     contains: tuple[str, ...] = ()
     outside: tuple[str, ...] = ()
     notes: tuple[str, ...] = ()
+    other_laws: tuple[LawElsewhere, ...] = ()
+    band_parts: tuple[BandPart, ...] = ()
+    law_verdict: str = ""
 
 
 @dataclass(frozen=True)
@@ -215,6 +302,9 @@ class HeapStage:
     gangue_known : bool
         False where no gangue demand stands behind the reagent taken.
     other_laws : tuple of LawElsewhere
+    band_parts : tuple of BandPart
+    law_verdict : str
+        Whether the choice of law changes the figure.
     contains : tuple of str
         What the band holds.
     outside : tuple of str
@@ -253,6 +343,8 @@ class HeapStage:
     gangue_taken_draws: Array | None = None
     gangue_known: bool = True
     other_laws: tuple[LawElsewhere, ...] = ()
+    band_parts: tuple[BandPart, ...] = ()
+    law_verdict: str = ""
     contains: tuple[str, ...] = ()
     outside: tuple[str, ...] = ()
     notes: tuple[str, ...] = ()

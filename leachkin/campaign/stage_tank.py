@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -12,11 +12,12 @@ from numpy.typing import NDArray
 from leachkin.campaign.bands import band_of, quantity_of
 from leachkin.campaign.campaign import Campaign
 from leachkin.campaign.plant_sizes import plant_sizes
+from leachkin.campaign.plant_split import End, band_parts, other_laws, plant_verdict
 from leachkin.campaign.plant_words import band_contents, outside_the_data, ultimate_note
 from leachkin.campaign.printed_law import with_ultimate_knots
 from leachkin.campaign.settings import Settings, is_drawn
 from leachkin.campaign.stage_gangue import demand_at, gangue_draws
-from leachkin.campaign.stage_results import GangueStage, PlantOre, TankStage
+from leachkin.campaign.stage_results import BandPart, GangueStage, PlantOre, TankStage
 from leachkin.constants import DAYS_PER_MONTH, HOURS_PER_DAY
 from leachkin.errors import InputProblems
 from leachkin.kinetics import GangueLaw, RateLaw
@@ -92,7 +93,45 @@ def tank_stage(
     train, stated_ore, stated = _stated_train(campaign, ore, gangue, draws, seed)
     result = train.run(ore.law, stated_ore, stated, train.stated_gangue, (0, seed))
     drawn = _drawn(train, ore) if draws else None
-    return _stage(train, ore, stated_ore, stated, result, drawn, level)
+    stage = _stage(train, ore, stated_ore, stated, result, drawn, level)
+    return _with_laws(stage, train, ore, stated_ore, stated)
+
+
+def _with_laws(
+    stage: TankStage,
+    train: _Train,
+    ore: PlantOre,
+    stated_ore: tuple[Any, Any],
+    stated: Mapping[str, Any],
+) -> TankStage:
+    """Return the stage with every other law at the last tank, and what makes the band."""
+    end = _end(train, stated_ore, stated)
+    others = other_laws(ore, end)
+    figure = stage.extraction.at(-1)
+    where = f"extracted in {len(stage.residence_times_h)} tanks"
+    parts: tuple[BandPart, ...] = ()
+    if stage.draws is not None and figure.level is not None:
+        names = tuple(s.key.split(".", 1)[1] for s in train.settings.ranged("tank"))
+        parts = band_parts(ore, end, others, figure, ore.fit_draws, names, figure.level)
+    verdict = plant_verdict(ore, others, figure, where)
+    return replace(stage, other_laws=others, band_parts=parts, law_verdict=verdict)
+
+
+def _end(train: _Train, stated_ore: tuple[Any, Any], stated: Mapping[str, Any]) -> End:
+    """Return the extraction at the last tank as a function of law and scale-up."""
+
+    def end(law: RateLaw, scale_up: bool) -> Array:
+        condition = stated
+        if scale_up:
+            condition = {
+                name: train.settings.draw(f"tank.{name}", train.draws, train.seed)
+                for name in stated
+            }
+        knots = (0, 0) if not scale_up else (train.draws, train.seed)
+        result = train.run(law, stated_ore, condition, train.stated_gangue, knots)
+        return np.asarray(result.extraction)[..., -1]
+
+    return end
 
 
 def _stated_train(
@@ -130,12 +169,8 @@ def tank_end(
         As :func:`tank_stage`.
     """
     train, stated_ore, stated = _stated_train(campaign, ore, gangue, 0, 0)
-
-    def end(law: RateLaw) -> Array:
-        result = train.run(law, stated_ore, stated, train.stated_gangue, (0, 0))
-        return np.asarray(result.extraction)[..., -1]
-
-    return end
+    run = _end(train, stated_ore, stated)
+    return lambda law: run(law, False)
 
 
 def residence_times(settings: Settings) -> tuple[float, ...]:

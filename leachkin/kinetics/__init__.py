@@ -67,6 +67,7 @@ from leachkin.kinetics.rank import (
     Ranking,
     contains,
     in_words,
+    options_of_law,
     rank_laws,
     rank_tests,
 )
@@ -162,6 +163,7 @@ __all__ = [
     "Ranking",
     "contains",
     "in_words",
+    "options_of_law",
     "rank_laws",
     "rank_tests",
     "Candidate",

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -164,8 +164,36 @@ def rank_tests(
     within: float = 2.0,
     **same: Any,
 ) -> Ranking:
-    """Return laws ranked on all tests together; ``same`` as in ``fit_tests``."""
-    return rank_by(lambda law: fit_tests(observed, law, **same), laws, within)
+    """Return laws ranked on all tests together; ``same`` as in ``fit_tests``.
+
+    A prior on a resistance that a law does not have is left out there.
+    """
+    return rank_by(
+        lambda law: fit_tests(observed, law, **options_of_law(law, same)), laws, within
+    )
+
+
+def options_of_law(law: str, same: Mapping[str, Any]) -> dict[str, Any]:
+    """Return the options of a fit with the priors that one law among several has.
+
+    Examples
+    --------
+    >>> both = {"priors": {"activation_energy_film": (15.0, 5.0), "ultimate": (0.9, 0.01)}}
+    >>> options_of_law("chemical", both)
+    {'priors': {'ultimate': (0.9, 0.01)}}
+    """
+    kinds = set(law_terms(canonical_law(law)))
+    absent = {"film", "ash_layer", "chemical"} - kinds
+
+    def is_own(name: str) -> bool:
+        slow = name.startswith("slow_")
+        if not slow and name == "activation_energy":
+            return "clock" in kinds
+        return slow or not any(name.endswith(f"_{kind}") for kind in absent)
+
+    priors = {n: value for n, value in dict(same.get("priors") or {}).items() if is_own(n)}
+    rest = {name: value for name, value in same.items() if name != "priors"}
+    return {**rest, "priors": priors} if priors else rest
 
 
 def rank_by(fit: Callable[[str], FitResult], laws: Sequence[str] | None, within: float) -> Ranking:

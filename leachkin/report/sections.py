@@ -27,6 +27,11 @@ class Section:
 _SECTIONS = (
     ("evidence", "Tests and balances", ("tests", "metal_balance")),
     ("kinetics", "Rate law", ("ranking", "parameters", "arrhenius", "gangue")),
+    (
+        "mechanism",
+        "How sure is the mechanism",
+        ("mechanism", "nested_tests", "left_out", "tests_of_need", "residual_checks"),
+    ),
     ("plant", "Plant", ("tank", "heap")),
     ("solution", "Recovery from solution", ("cementation",)),
     ("money", "Reagents and cost", ("budget", "reagent")),
@@ -37,7 +42,7 @@ _SECTIONS = (
 _FILES_ONLY = ("summary", "extraction", "residuals")
 _OF_STAGE = {
     "extraction": ("metal_balance",),
-    "fit": ("ranking", "parameters", "arrhenius", "gangue"),
+    "fit": ("ranking", "parameters", "arrhenius", "mechanism", "tests_of_need", "gangue"),
     "tank": ("tank",),
     "heap": ("heap",),
     "cementation": ("cementation",),
@@ -96,6 +101,7 @@ _SHOWN_COLUMNS = {
         "low",
         "high",
         "level",
+        "method",
         "why_no_interval",
     ),
 }
