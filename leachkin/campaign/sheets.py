@@ -206,7 +206,7 @@ def metals_of_sheets(settings: Settings, sheets: SheetsByTable) -> tuple[tuple[s
     """Return the metals and the reagent that the sheets themselves speak of, "" where none."""
     bench = {name: found for name, found in sheets.items() if name in BENCH_SHEETS}
     tests, _ = read_tests(bench, replace(testwork_settings(settings), metals=(), reagent=None))
-    dissolved = [name for test in tests for name in test.solution]
+    dissolved = [n for test in tests for n in test.solution if not n.endswith(("+", "-"))]
     heads = {name for test in tests for name in test.heads}
     metals = dict.fromkeys([n for n in dissolved if n in heads] or dissolved)
     reagents = dict.fromkeys(test.reagent for test in tests if test.reagent)

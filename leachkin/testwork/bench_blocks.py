@@ -120,10 +120,11 @@ def _times_in(cells: Sequence[str]) -> list[int]:
 def _blocks_of(rows: Sequence[SheetRow], start: int) -> list[Block]:
     cells = rows[start].cells
     times = _times_in(cells)
-    firsts = [0]
+    firsts, name = [0], fold_heading(cells[times[0]])
     for before, here in zip(times, times[1:], strict=False):
         blanks = [i for i in range(before + 1, here) if not cells[i]]
-        firsts.append(blanks[-1] + 1 if blanks else here)
+        if blanks or fold_heading(cells[here]) == name:  # else a second time of the same table
+            firsts.append(blanks[-1] + 1 if blanks else here)
     lasts = [*firsts[1:], max(len(row.cells) for row in rows)]
     units = _unit_row(rows, start)
     blocks = []

@@ -165,7 +165,8 @@ def _with_unit_of_value(label: str, value: str) -> tuple[str, str]:
     match = _VALUE.fullmatch(value.strip())
     if match is None or not match["unit"]:
         return label, value
-    if any(s for _, s in heading_candidates(label)) or not is_spelling(match["unit"].strip("()")):
+    written = [s for _, s in heading_candidates(label) if s and is_spelling(s.partition(" ")[0])]
+    if written or not is_spelling(match["unit"].strip("()")):
         return label, value
     return f"{label} ({match['unit'].strip('()')})", match["number"].strip()
 

@@ -161,6 +161,24 @@ B2,oxide,500,1000,33.3,40,-6.7+4.75 mm,2,20,1.1,450,6,700,10,2,19,1.5,
     assert [str(p) for p in problems if p.level == "stop"] == []
 
 
+def test_dates_and_hours_in_one_table_and_units_behind_values():
+    text = """
+Leach log,,,,,
+Test,R1,,Ore,sulphide,
+Charge (dry),500 g,,Solution,1.2 L,
+Temp,25 \u00b0C,,Aliquots,returned,
+Date,Time,Elapsed,Aliquot,pH,Cu
+,,h,mL,,g/L
+2026-03-01,10:00,2,20,1.5,0.4
+2026-03-02,08:00,24,20,1.5,1.2
+"""
+    tests, problems = read(text)
+    assert [str(p) for p in problems if p.level != "note"] == []
+    assert tests["R1"].time_h.tolist() == [2.0, 24.0]
+    assert (tests["R1"].solids_g, tests["R1"].solution_mL) == (500.0, 1200.0)
+    assert tests["R1"].temperature_K == pytest.approx(298.15)
+
+
 def test_what_is_no_bench_sheet():
     assert not is_bench_sheet(grid("a,b\n1,2\n"))
     assert not is_bench_sheet(grid("time,temperature\n1,2\n"))
