@@ -14,6 +14,8 @@ from leachkin.problems import Problem, unknown_name
 
 LineOf = Callable[[str], int | None]
 
+#: Tables that speak of a metal: a budget or a cementation alone names its own.
+_OF_A_METAL = ("tables", "rate_law", "heap", "tank")
 #: Where a what-if comes from, in place of a file name.
 FROM_COMMAND_LINE = "--set"
 
@@ -32,8 +34,16 @@ class _Walk:
     free: dict[str, Group] = field(default_factory=dict)
     tables: set[str] = field(default_factory=set)
 
-    def place(self, dotted: str) -> tuple[str, int | None]:
+    def is_override(self, dotted: str) -> bool:
+        """Whether a key, or one end of its range, comes from the command line."""
         if dotted in self.loose:
+            return True
+        return SCHEMA.table(dotted) is None and any(
+            one.startswith(f"{dotted}.") for one in self.loose
+        )
+
+    def place(self, dotted: str) -> tuple[str, int | None]:
+        if self.is_override(dotted):
             return FROM_COMMAND_LINE, None
         return self.file, self.line_of(dotted.replace(chr(34), ""))
 
@@ -74,6 +84,7 @@ def read_settings(
             _read_table(walk, name, content)
         elif name in SCHEMA.children("") and isinstance(content, list):
             _read_repeated(walk, name, content)
+    _check_metals(walk, merged)
     _put_in_defaults(walk)
     settings = Settings(walk.values, walk.repeated, walk.named, walk.free, frozenset(walk.tables))
     return settings, tuple(walk.problems)
@@ -161,6 +172,18 @@ def _check_top(walk: _Walk, data: Mapping[str, Any]) -> None:
             ),
             "campaign",
         )
+
+
+def _check_metals(walk: _Walk, data: Mapping[str, Any]) -> None:
+    job = data.get("campaign")
+    of_a_metal = [name for name in _OF_A_METAL if name in data]
+    if not of_a_metal or not isinstance(job, Mapping) or "metals" in job:
+        return
+    found = f"metals is missing, and there is [{of_a_metal[0]}]"
+    problem = Problem(
+        "", None, "campaign.metals", "stop", found, "metals, leading one first", 'metals = ["Cu"]'
+    )
+    walk.add(problem, "campaign")
 
 
 def _check_top_name(walk: _Walk, name: str, content: Any) -> None:
@@ -310,7 +333,7 @@ def _as_written(dotted: str) -> str:
 
 def _read_one(walk: _Walk, key: Key, dotted: str, raw: Any) -> Setting | None:
     try:
-        read = read_value(key, raw, loose=dotted in walk.loose)
+        read = read_value(key, raw, loose=walk.is_override(dotted))
     except ValueProblem as error:
         walk.add(error.problem, dotted)
         return None

@@ -319,7 +319,9 @@ def _budget(stage: BudgetStage) -> dict[str, Any]:
         "cost_per_month": _quantity(stage.cost_per_month),
         "cost_per_t_ore": _quantity(stage.cost_per_t_ore),
         "cost_per_kg_metal": _quantity(stage.cost_per_kg_metal),
-        "tables": {table.name: _records(table) for table in budget_tables(stage.budget, stage.drawn)},
+        "tables": {
+            table.name: _records(table) for table in budget_tables(stage.budget, stage.drawn)
+        },
         "basis": list(stage.basis),
         "band_holds": list(stage.contains),
         "notes": list(stage.notes),

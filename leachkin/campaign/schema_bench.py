@@ -10,7 +10,12 @@ CAMPAIGN = TableSchema(
     "What the job is.",
     (
         Key("title", "text", "Title of the job", default="untitled campaign"),
-        Key("metals", "texts", "Metals that get a rate law, the first one leading", required=True),
+        Key(
+            "metals",
+            "texts",
+            "Metals that get a rate law, the first one leading; needed with sheets, a printed law, "
+            "a heap or tanks",
+        ),
         Key("reagent", "text", "Leach reagent, by formula", default="H2SO4", why="acid leach"),
         Key("prepared_by", "text", "Who prepared it"),
         Key("checked_by", "text", "Who checked it"),
@@ -105,6 +110,13 @@ FIT = TableSchema(
             choices=("by size", "by temperature", "one"),
             above=0.0,
             at_most=1.0,
+        ),
+        Key(
+            "intervals",
+            "choice",
+            "How the intervals of the fitted parameters are made; left out, by profile likelihood, "
+            "which follows the bend of the law",
+            choices=("linearised", "profile", "bootstrap", "posterior"),
         ),
         Key(
             "size_exponents",

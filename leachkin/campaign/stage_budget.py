@@ -142,7 +142,8 @@ def _ore_rate(sources: _Sources) -> float:
 def _metal(sources: _Sources) -> str:
     if sources.plant is not None:
         return sources.plant.key.rpartition("/")[2]
-    return next(iter(sources.campaign.metals), "metal")
+    cemented = sources.settings.free.get("cementation.metals", {})
+    return next(iter((*sources.campaign.metals, *cemented)), "metal")
 
 
 def _recovered(sources: _Sources, drawn: bool) -> dict[str, Any] | None:

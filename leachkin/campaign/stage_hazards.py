@@ -11,6 +11,8 @@ from leachkin.hazards import Caution, Facts, cautions, facts_with_cementation
 
 ACIDS = ("H2SO4", "HCl", "HNO3")
 CYANIDES = ("NaCN", "KCN", "CN")
+#: Headings of an assay of sulphide sulphur; total sulphur holds sulphate too and is none.
+SULPHIDE = ("sulphide S", "sulfide S")
 _mg_per_kg_per_kg_per_t = 1000.0
 _kg_per_t_of_ore = 1000.0
 
@@ -47,6 +49,7 @@ def _facts(campaign: Campaign, heap: HeapStage | None) -> dict[str, Any]:
         "antimony_mg_per_kg": _head(campaign, "Sb", _mg_per_kg_per_kg_per_t),
         "mercury_mg_per_kg": _head(campaign, "Hg", _mg_per_kg_per_kg_per_t),
         "carbonate_share": _head(campaign, "CaCO3", 1.0 / _kg_per_t_of_ore),
+        "sulphide_share": _sulphide(campaign),
     }
     return {name: value for name, value in known.items() if value is not None}
 
@@ -86,6 +89,11 @@ def _temperature(campaign: Campaign) -> float:
 def _head(campaign: Campaign, analyte: str, scale: float) -> float | None:
     heads = [t.heads[analyte].value_kg_per_t for t in campaign.tests if analyte in t.heads]
     return max(heads) * scale if heads else None
+
+
+def _sulphide(campaign: Campaign) -> float | None:
+    found = [_head(campaign, name, 1.0 / _kg_per_t_of_ore) for name in SULPHIDE]
+    return max((share for share in found if share is not None), default=None)
 
 
 def _bottle_g(campaign: Campaign) -> float | None:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
+from dataclasses import replace
 
 import numpy as np
 
@@ -12,8 +13,24 @@ from leachkin.reagents.lines import Array
 from leachkin.result_table import Column, ResultTable
 
 
-def budget_tables(budget: Budget) -> tuple[ResultTable, ...]:
-    """Return every sheet of the budget, in reading order."""
+def budget_tables(budget: Budget, drawn: Budget | None = None) -> tuple[ResultTable, ...]:
+    """Return every sheet of the budget, in reading order.
+
+    Parameters
+    ----------
+    budget : Budget
+    drawn : Budget, optional
+        The same lines with draws. The figures stay those of ``budget``, low and high come from
+        here.
+    """
+    stated = _sheets(budget)
+    if drawn is None:
+        return stated
+    pairs = zip(stated, _sheets(drawn), strict=True)
+    return tuple(_with_ends(table, other, drawn) for table, other in pairs)
+
+
+def _sheets(budget: Budget) -> tuple[ResultTable, ...]:
     return (
         basis_table(budget),
         unit_consumption_table(budget),
@@ -23,6 +40,20 @@ def budget_tables(budget: Budget) -> tuple[ResultTable, ...]:
         total_table(budget),
         incomplete_table(budget),
     )
+
+
+def _with_ends(table: ResultTable, drawn: ResultTable, budget: Budget) -> ResultTable:
+    """Return a table with low and high of the same table with draws."""
+    ends = [i for i, c in enumerate(table.columns) if c.key.endswith(("_low", "_high"))]
+    if not ends or len(table.rows) != len(drawn.rows):
+        return table
+    rows = tuple(
+        tuple(theirs[i] if i in ends else cell for i, cell in enumerate(own))
+        for own, theirs in zip(table.rows, drawn.rows, strict=True)
+    )
+    low = 50 * (1 - budget.level)
+    ends_are = f"low is P{low:.3g} of the draws, high is P{100 - low:.4g}"
+    return replace(table, rows=rows, caption=f"{table.caption}; {ends_are}")
 
 
 def basis_table(budget: Budget) -> ResultTable:
@@ -153,7 +184,7 @@ def _roll_up(budget: Budget, key: str, heading: str, name: str) -> ResultTable:
         Column(key, heading),
         Column("net_kg_per_t", "Net, as 100 %", "kg/t"),
         Column("per_metal_kg_per_kg", f"Net per kg {_metal(budget)}", "kg/kg"),
-        Column("received_t_per_month", "As received", "t/month"),
+        *_band_columns("received_t_per_month", "As received", "t/month"),
         *_band_columns("cost_per_month", "Cost", f"{currency}/month"),
         Column("cost_per_t", "Cost per t ore", f"{currency}/t"),
         Column("cost_per_kg", f"Cost per kg {_metal(budget)}", f"{currency}/kg"),
@@ -176,8 +207,10 @@ def _group_record(budget: Budget, rows: list[BudgetRow], mixed: bool) -> dict[st
     one_reagent = not mixed or len({row.line.reagent for row in rows}) == 1
     record: dict[str, object] = {"missing": "; ".join(reasons)}
     if one_reagent:
-        for field in ("net_kg_per_t", "per_metal_kg_per_kg", "received_t_per_month"):
+        for field in ("net_kg_per_t", "per_metal_kg_per_kg"):
             record[field] = _maybe_middle(_whole(getattr(row, field) for row in rows))
+        received = _whole(row.received_t_per_month for row in rows)
+        record |= _banded("received_t_per_month", received, budget.level)
     cost = _whole(row.cost_per_month for row in rows)
     record |= _banded("cost_per_month", cost, budget.level)
     if cost is None:

@@ -271,3 +271,23 @@ REFUSED = [
 def test_what_has_no_meaning_is_refused(call, message):
     with pytest.raises(InputProblems, match=message):
         call()
+
+
+def test_the_stated_budget_takes_its_ends_from_draws():
+    generator = np.random.default_rng(3)
+    copper, gangue = generator.normal(7.3, 0.3, 200), generator.normal(19.1, 1.5, 200)
+    drawn = copper_budget(
+        [BudgetLine("H2SO4", "copper", copper), BudgetLine("H2SO4", "gangue", gangue)], level=0.95
+    )
+    stated = copper_budget([BudgetLine("H2SO4", "copper", 7.0), BudgetLine("H2SO4", "gangue", 20)])
+    by_name = {table.name: table for table in budget_tables(stated, drawn)}
+    row = by_name["budget_by_reagent"].to_records()[0]
+    plain = reagent_table(stated).to_records()[0]
+    assert row["cost_per_month"] == plain["cost_per_month"]
+    cost = (copper + gangue) / 0.985 * 250 * 120
+    ends = [row["cost_per_month_low"], row["cost_per_month_high"]]
+    assert_allclose(ends, np.quantile(cost, [0.025, 0.975]), rtol=1e-12)
+    tonnes = [row["received_t_per_month_low"], row["received_t_per_month_high"]]
+    assert_allclose(tonnes, np.quantile(cost / 120, [0.025, 0.975]), rtol=1e-12)
+    assert "low is P2.5 of the draws, high is P97.5" in by_name["budget_by_sink"].caption
+    assert by_name["budget_basis"] == budget_tables(stated)[0]
