@@ -133,7 +133,7 @@ def _repeats(tested: _Tested) -> Iterator[Candidate]:
     for kelvin in tested.end_temperatures:
         for size in tested.end_sizes:
             like = nearest(tested.patterns, kelvin, size)
-            yield like.candidate(f"{like.name} again", why="a repeat of a corner of the tests")
+            yield like.candidate(f"{like.name} again", why="a corner again")
 
 
 def _temperatures(tested: _Tested, plant: PlantConditions) -> Iterator[Candidate]:
@@ -142,12 +142,11 @@ def _temperatures(tested: _Tested, plant: PlantConditions) -> Iterator[Candidate
     asked: list[tuple[float, str]] = []
     at = plant.temperature_K
     if at is not None and not is_one_of(at, tested.temperatures_K):
-        outside = "" if lowest <= at <= highest else ", outside the tests"
-        asked.append((at, f"the temperature of the {plant.name}{outside}"))
+        asked.append((at, f"temperature of the {plant.name}"))
     if cold >= COLDEST_K:
-        asked.append((cold, f"{tested.step_K:.3g} K colder than the tests"))
+        asked.append((cold, f"{tested.step_K:.3g} K colder"))
     if hot <= max(HOTTEST_K, highest):
-        asked.append((hot, f"{tested.step_K:.3g} K hotter than the tests"))
+        asked.append((hot, f"{tested.step_K:.3g} K hotter"))
     for kelvin, why in asked:
         for size in tested.end_sizes:
             like = nearest(tested.patterns, kelvin, size)
@@ -158,15 +157,15 @@ def _temperatures(tested: _Tested, plant: PlantConditions) -> Iterator[Candidate
 def _sizes(tested: _Tested, plant: PlantConditions) -> Iterator[Candidate]:
     finest, coarsest = tested.sizes_mm[0], tested.sizes_mm[-1]
     middle = nearest(tested.patterns).bottle.temperature_K
-    asked = [(middle, finest / tested.ratio, "finer than the tests")]
+    asked = [(middle, finest / tested.ratio, "finer")]
     top, at = plant.coarsest_mm, plant.temperature_K
     if top is not None and top > COARSER * coarsest:
-        why = f"the coarsest class of the {plant.name}, coarser than the tests"
+        why = f"coarsest class of the {plant.name}"
         asked.append((middle, top, why))
         if at is not None and not is_one_of(at, tested.temperatures_K):
-            asked.append((at, top, f"temperature and coarsest class of the {plant.name}"))
+            asked.append((at, top, f"temperature, coarsest class of the {plant.name}"))
     elif top is None:
-        asked.append((middle, coarsest * tested.ratio, "coarser than the tests"))
+        asked.append((middle, coarsest * tested.ratio, "coarser"))
     for kelvin, size, why in asked:
         like = nearest(tested.patterns, kelvin, size)
         name = f"{_degC(kelvin)}, {size:.3g} mm"
@@ -181,11 +180,11 @@ def _times(tested: _Tested) -> Iterator[Candidate]:
     before = own[0] * np.array(EARLIER)
     early = np.concatenate([before[before >= EARLIEST_H], own])
     if early.size > own.size:
-        why = f"readings from {early[0]:.2g} h on, in the fastest test"
+        why = f"readings from {early[0]:.2g} h on"
         yield fast.candidate(f"{fast.name} earlier", time_h=early, why=why)
     slow = nearest(tested.patterns, tested.temperatures_K[0], tested.sizes_mm[-1])
     late = _longer(slow)
-    why = f"run to {late[-1]:.3g} h, the slowest test"
+    why = f"run to {late[-1]:.3g} h"
     yield slow.candidate(f"{slow.name} longer", time_h=late, why=why)
 
 
@@ -200,7 +199,7 @@ def _strengths(tested: _Tested, plant: PlantConditions) -> Iterator[Candidate]:
     asked = [(weak, "half the strength"), (strong, "twice the strength")]
     at = plant.reagent_g_per_L
     if at and not is_one_of(at, [*tested.strengths_g_per_L, weak, strong]):
-        asked.append((at, f"the strength fed to the {plant.name}"))
+        asked.append((at, f"strength fed to the {plant.name}"))
     for strength, why in asked:
         name = f"{like.name} at {strength:.3g} g/L"
         yield like.candidate(name, reagent_g_per_L=strength, why=why)

@@ -191,21 +191,23 @@ def _ultimate_sd(knots: Array, ultimate: Array, at: float) -> float:
 
 def plant_table(found: NextTests, band: PlantBand, multiplier: float) -> ResultTable:
     """Return the candidates with the band of the plant figure that each would leave."""
+    several = any(row.candidate.repeats > 1 for row in found.rows)
     columns = [
         Column("candidate", "Test"),
         Column("temperature", "Temperature", "degC"),
         Column("size", "Size", "mm"),
         Column("reagent", "Reagent", "g/L"),
         Column("hours", "Last reading", "h"),
-        Column("bottles", "Bottles"),
+        *([Column("bottles", "Bottles")] if several else []),
         Column("fit_half", "Fit's part, +/-", UNIT, digits=2),
         Column("whole_half", "Whole band, +/-", UNIT, digits=2),
         Column("whole_shrink", "Band shrinks by", "%", digits=2),
         Column("shrink", "Fit's part shrinks by", "%", digits=2),
     ]
     ranked = found.ranking_table()
+    more = [c for c in ranked.columns if c.key.startswith("shrink_")][-1:]
     priced = [c for c in ranked.columns if c.key in ("cost", "per_cost")]
-    columns += [*priced, Column("why", "What for")]
+    columns += [*more, *priced, Column("why", "What for")]
     now = found.present[0]
     records = [
         {"candidate": "the present tests", **_halves(now.half_width, None, band, multiplier)}
