@@ -263,9 +263,10 @@ class _Asked:
         given = given_candidates(self.campaign.settings, self.campaign.file, patterns)
         if given:
             return given, []
-        known = any(one.reagent_g_per_L for one in self.stage.observed)
+        strength = any(one.reagent_g_per_L for one in self.stage.observed)
+        size = any(one.sizes is not None for one in self.stage.observed)
         at = conditions_of(self.campaign.settings, self.plant or plant_of_settings(self.campaign))
-        made = default_candidates(patterns, at, known)
+        made = default_candidates(patterns, at, with_strength=strength, with_size=size)
         return made, [in_words(made)]
 
     def _rivals(self) -> tuple[FitResult, ...]:

@@ -62,14 +62,16 @@ class _Tested:
     temperatures_K: list[float]
     sizes_mm: list[float]
     strengths_g_per_L: list[float]
+    sized: bool
 
     @classmethod
-    def of(cls, patterns: Sequence[Pattern]) -> _Tested:
+    def of(cls, patterns: Sequence[Pattern], sized: bool) -> _Tested:
         return cls(
             tuple(patterns),
             distinct([p.bottle.temperature_K for p in patterns]),
             distinct([p.size_mm for p in patterns]),
             distinct([p.bottle.reagent_g_per_L for p in patterns]),
+            sized,
         )
 
     @property
@@ -94,7 +96,11 @@ class _Tested:
 
 
 def default_candidates(
-    patterns: Sequence[Pattern], plant: PlantConditions | None = None, with_strength: bool = True
+    patterns: Sequence[Pattern],
+    plant: PlantConditions | None = None,
+    *,
+    with_strength: bool = True,
+    with_size: bool = True,
 ) -> tuple[Candidate, ...]:
     """Return candidates made from the tests, each once.
 
@@ -102,14 +108,14 @@ def default_candidates(
     ----------
     patterns : sequence of Pattern
     plant : PlantConditions, optional
-    with_strength : bool
-        False where no strength is known of the tests.
+    with_strength, with_size : bool
+        False where no strength, or no size, is known of the tests.
     """
-    tested, at = _Tested.of(patterns), plant or PlantConditions()
+    tested, at = _Tested.of(patterns, with_size), plant or PlantConditions()
     found = [
         *_repeats(tested),
         *_temperatures(tested, at),
-        *_sizes(tested, at),
+        *(_sizes(tested, at) if with_size else ()),
         *_times(tested),
         *(_strengths(tested, at) if with_strength else ()),
         *_stirring(tested),
@@ -150,8 +156,8 @@ def _temperatures(tested: _Tested, plant: PlantConditions) -> Iterator[Candidate
     for kelvin, why in asked:
         for size in tested.end_sizes:
             like = nearest(tested.patterns, kelvin, size)
-            name = f"{_degC(kelvin)}, {like.size_mm:.3g} mm"
-            yield like.candidate(name, temperature_K=kelvin, why=why)
+            size_words = f", {like.size_mm:.3g} mm" if tested.sized else ""
+            yield like.candidate(f"{_degC(kelvin)}{size_words}", temperature_K=kelvin, why=why)
 
 
 def _sizes(tested: _Tested, plant: PlantConditions) -> Iterator[Candidate]:
