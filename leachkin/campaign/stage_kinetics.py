@@ -191,7 +191,7 @@ def _two_step(
         return None, ()
     same = {name: value for name, value in options.items() if name not in ("laws", "priors")}
     try:
-        found = arrhenius_two_step(tests, fit.law.name, **same)
+        found = arrhenius_two_step(tests, fit.law.name, whole=fit, **same)
     except InputProblems as error:
         return None, (f"no activation energy by a fit a temperature: {error}",)
     return found, found.warnings

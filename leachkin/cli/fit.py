@@ -6,12 +6,23 @@ from collections.abc import Mapping
 
 import click
 
-from leachkin.cli.options import campaign_argument, json_option, run_options, vary_option
+from leachkin.cli.options import (
+    INTERVAL_METHODS,
+    campaign_argument,
+    json_option,
+    run_options,
+    vary_option,
+)
 
 
 @click.command()
 @campaign_argument
 @run_options
+@click.option(
+    "--intervals",
+    type=click.Choice(INTERVAL_METHODS),
+    help="How the intervals of the parameters are made, as [fit] intervals.",
+)
 @vary_option
 @json_option
 def fit(
@@ -20,6 +31,7 @@ def fit(
     draws: int,
     level: float,
     settings: Mapping[str, str],
+    intervals: str | None,
     vary: Mapping[str, tuple[str, ...]],
     as_json: bool,
 ) -> None:
@@ -31,6 +43,8 @@ def fit(
     from leachkin.cli.stage import print_stage, run_stage, say_next, stage_result
     from leachkin.report import straightened_table
 
+    if intervals is not None:
+        settings = {**settings, "fit.intervals": intervals}
     if vary:
         run_stage("fit", campaign, settings, vary, as_json=as_json, seed=seed, draws=0, level=level)
         return

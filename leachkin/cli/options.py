@@ -13,6 +13,7 @@ Decorated = TypeVar("Decorated", bound=Callable[..., Any])
 DEFAULT_SEED = 1
 DEFAULT_DRAWS = 400
 DEFAULT_LEVEL = 0.95
+INTERVAL_METHODS = ("linearised", "profile", "bootstrap", "posterior")
 
 
 def campaign_argument(function: Decorated) -> Decorated:

@@ -191,7 +191,12 @@ def _f_upper_tail(ratio: float, freedom: int) -> float:
 
 
 def arrhenius_two_step(
-    observed: Sequence[Observed], law: str, *, level: float = 0.95, **options: Any
+    observed: Sequence[Observed],
+    law: str,
+    *,
+    level: float = 0.95,
+    whole: FitResult | None = None,
+    **options: Any,
 ) -> TwoStepArrhenius:
     """Return activation energies by a fit a temperature and a line, beside the global fit.
 
@@ -201,6 +206,8 @@ def arrhenius_two_step(
         Tests of one ore and one metal at two temperatures or more.
     law : str
     level : float
+    whole : FitResult, optional
+        The fit of all tests together, where it is there already.
     options
         Of :func:`fit_tests`, used for every fit.
 
@@ -225,7 +232,8 @@ def arrhenius_two_step(
             "observed", "tests at one temperature", "two temperatures or more",
             "give the activation energy from print as an assumed value",
         )  # fmt: skip
-    whole = fit_tests(observed, law, level=level, **options)
+    if whole is None:
+        whole = fit_tests(observed, law, level=level, **options)
     reference = whole.law.reference
     fits = tuple(
         fit_tests(

@@ -9,15 +9,18 @@ import numpy as np
 from numpy.typing import NDArray
 
 from leachkin.campaign import CampaignResult, KineticsStage
-from leachkin.kinetics import FitResult, Parameter, RateLaw
+from leachkin.kinetics import FitResult, RateLaw
+from leachkin.report.diagnostic_figures import (
+    forest_figure,
+    further_figures,
+    residual_figure,
+)
 from leachkin.report.figures.evidence import closure_plot
 from leachkin.report.figures.kinetics import (
     Panel,
     TemperatureLine,
     arrhenius_plot,
     extraction_panels,
-    parameter_forest,
-    residual_plot,
 )
 from leachkin.report.figures.style import ReportFigure
 from leachkin.report.words import celsius, file_word, size_words
@@ -36,7 +39,7 @@ _NAMES = {
 
 
 def kinetics_figures(result: CampaignResult) -> Iterator[ReportFigure]:
-    """Yield closure, extraction against time, residuals, parameters and temperature."""
+    """Yield closure, extraction, residuals, parameters, temperature, and what stands folded."""
     for key, balances in result.balances.items():
         if any(balance.closure is not None for balance in balances):
             yield _closure(key, balances)
@@ -44,9 +47,12 @@ def kinetics_figures(result: CampaignResult) -> Iterator[ReportFigure]:
         if stage.observed:
             yield _extraction(result, key, stage)
         if stage.fit is not None and stage.fit.converged:
-            yield _residuals(key, stage.fit)
-            yield _parameters(key, stage.fit)
+            if stage.diagnostics is not None:
+                yield residual_figure(key, stage.diagnostics)
+            yield forest_figure(key, stage, stage.fit)
             yield from _temperature(result, key, stage)
+            if stage.diagnostics is not None:
+                yield from further_figures(key, stage, stage.fit, stage.diagnostics)
 
 
 def _closure(key: str, balances: Sequence[MetalBalance]) -> ReportFigure:
@@ -156,53 +162,6 @@ def _ends(fit: FitResult | None) -> tuple[float, float]:
     """Quantiles of the band at the level of the fit."""
     level = fit.level if fit is not None else 0.95
     return 0.5 * (1.0 - level), 0.5 * (1.0 + level)
-
-
-def _residuals(key: str, fit: FitResult) -> ReportFigure:
-    name = f"residuals_{file_word(key)}"
-    shown = [row for row in fit.residuals if row.bound == 0 and row.time > 0]
-    time_h = np.array([row.time for row in shown])
-    stated = fit.estimate.stated
-    scatter = 1.0 if stated else fit.residual_sd
-    residual = np.array([row.in_sd / scatter if scatter > 0 else 0.0 for row in shown])
-    what = "sd of each measurement" if stated else "sd of all residuals"
-    svg = residual_plot(name, time_h, residual, [row.test for row in shown], what)
-    caption = (
-        f"Fitted less measured, over the {what.replace('sd', 'standard deviation')}, {key}. "
-        "About 95 % "
-        "belong in the grey band and no test should lie on one side; a tail stands at the last "
-        "time. Values below a limit are not shown."
-    )
-    return ReportFigure(name, "kinetics", f"What the law leaves over, {key}", caption, svg)
-
-
-def _parameters(key: str, fit: FitResult) -> ReportFigure:
-    name = f"parameters_{file_word(key)}"
-    shown = [p for p in fit.parameters if not p.name.startswith("head_") and _closed(p)]
-    svg = parameter_forest(
-        name,
-        [_label(p) for p in shown],
-        [(p.low or 0.0) / p.value for p in shown],
-        [(p.high or 0.0) / p.value for p in shown],
-    )
-    level = shown[0].level if shown else 0.95
-    caption = (
-        f"Intervals of the fitted parameters at {100 * level:g} %, each divided by its estimate, "
-        f"{key}: long bars are what the tests do not settle. {fit.degrees_of_freedom} degrees of "
-        "freedom. The heads of the tests are fitted too and stand in the table."
-    )
-    return ReportFigure(name, "kinetics", f"How well each constant is known, {key}", caption, svg)
-
-
-def _closed(parameter: Parameter) -> bool:
-    """Whether both ends of the interval are there and above 0."""
-    low, high = parameter.low, parameter.high
-    return low is not None and high is not None and min(low, parameter.value) > 0
-
-
-def _label(parameter: Parameter) -> str:
-    words = parameter.name.replace("_", " ")
-    return f"{words} ({parameter.unit})" if parameter.unit else words
 
 
 def _temperature(result: CampaignResult, key: str, stage: KineticsStage) -> Iterator[ReportFigure]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from importlib import resources
 from typing import Any
 
@@ -38,6 +38,16 @@ class _Shown:
     text: tuple[str, ...]
     figures: tuple[ReportFigure, ...]
     tables: tuple[_ShownTable, ...]
+
+    @property
+    def open_figures(self) -> list[ReportFigure]:
+        """Those that everybody sees."""
+        return [figure for figure in self.figures if not figure.folded]
+
+    @property
+    def folded_figures(self) -> list[ReportFigure]:
+        """Those for who checks the fit."""
+        return [figure for figure in self.figures if figure.folded]
 
 
 def report_page(result: CampaignResult, figures: Sequence[ReportFigure]) -> str:
@@ -93,9 +103,7 @@ def _page(result: CampaignResult, figures: Sequence[ReportFigure]) -> dict[str, 
 def _shown(section: Section) -> _Shown:
     from markupsafe import Markup
 
-    figures = tuple(
-        ReportFigure(f.name, f.section, f.title, f.caption, Markup(f.svg)) for f in section.figures
-    )
+    figures = tuple(replace(f, svg=Markup(f.svg)) for f in section.figures)
     tables = tuple(_as_html(section.tables))
     return _Shown(section.key, section.title, section.text, figures, tables)
 

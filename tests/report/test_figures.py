@@ -6,7 +6,7 @@ import xml.etree.ElementTree as ElementTree
 import numpy as np
 import pytest
 
-from leachkin.report.figures import evidence, kinetics, money, plant
+from leachkin.report.figures import checks, constants, evidence, kinetics, money, plant
 from leachkin.report.figures.style import SERIES
 
 TIME = np.array([2.0, 6.0, 24.0, 72.0, 240.0])
@@ -38,6 +38,49 @@ def heap():
     return plant.HeapCurves(days, days / 50, curves, 0.9 * curve, 1.1 * curve, rules)
 
 
+LAWS = {"film": "film", "ash_layer": "ash (product) layer", "chemical": "chemical reaction"}
+
+
+def forest():
+    row = constants.ForestRow
+    return [
+        row("time (h)", "tau ash", "ash_layer+chemical", 7.0, 6.5, 7.6, True),
+        row("time (h)", "tau ash", "series", 300.0, 100.0, None, True),
+        row("ultimate extraction (%)", "ultimate", "series", 80.0, None, None),
+    ]
+
+
+def straight(test, size):
+    g = {law: np.array([0.1, 0.3, 0.6, np.nan, np.nan]) for law in LAWS}
+    return checks.StraightPanel(test, size, "25 \u00b0C", TIME, g, dict.fromkeys(LAWS, 0.02))
+
+
+def rates():
+    at = np.array([2.0, 2.0, 6.0])
+    rate = 0.1 / at
+    grid = np.linspace(1.5, 8.0, 10)
+    low = np.array([0.04, np.nan, 0.015])
+    return constants.RatePoints(("25", "40", "25"), at, rate, low, 2 * rate, grid, 0.1 / grid)
+
+
+def ways():
+    temperature = np.array([298.15, 313.15, 328.15])
+    grid = np.linspace(290, 330, 20)
+    two = "two steps: 48 kJ/mol (10 to 90)\n1 degree of freedom, t = 12.7"
+    one = "all tests: 47 kJ/mol (44 to 50)\n89 degrees of freedom, normal factor 1.96"
+    return constants.WaysPanel(
+        "1/tau, chemical reaction",
+        two,
+        one,
+        temperature,
+        16 - 5800 / temperature,
+        np.array([0.1, 0.2, np.nan]),
+        grid,
+        16 - 5800 / grid,
+        16.1 - 5800 / grid,
+    )
+
+
 def every_figure():
     days = np.linspace(0, 120, 61)
     temperature = np.linspace(290, 330, 20)
@@ -46,8 +89,26 @@ def every_figure():
     nine = [panel(f"{a}{t}", a, f"{t} \u00b0C") for t in (25, 40, 55) for a in "ABC"]
     return {
         "panels": kinetics.extraction_panels("panels", nine, "Cu", "band"),
-        "residuals": kinetics.residual_plot("residuals", TIME, TIME / 100, list("ABABA"), "sd"),
-        "forest": kinetics.parameter_forest("forest", ["tau (h)", "Ea"], [0.8, 0.9], [1.2, 1.1]),
+        "residuals": checks.residual_pair(
+            "residuals", TIME, TIME / 300, TIME / 100 - 1.0, list("ABABA")
+        ),
+        "forest": constants.value_forest("forest", forest(), ["ash_layer+chemical", "series"]),
+        "leverage": checks.leverage_strips(
+            "leverage",
+            list("AAABB"),
+            ["solution", "solution", "tail", "solution", "head"],
+            np.array([2.0, 6.0, 24.0, 2.0, np.nan]),
+            np.array([0.1, 0.3, 0.7, 0.2, 0.05]),
+            0.27,
+        ),
+        "correlation": checks.correlation_squares(
+            "correlation", ["tau", "Ea"], np.array([[1.0, -0.93], [-0.93, 1.0]])
+        ),
+        "straightened": checks.straightened_panels(
+            "straightened", [straight("A", "2 mm"), straight("B", "6 mm")], LAWS
+        ),
+        "size": constants.rate_loglog("size", rates(), "size (mm)", [(-1.0, "slope 1")]),
+        "ways": constants.arrhenius_ways("ways", [ways()]),
         "arrhenius": kinetics.arrhenius_plot(
             "arrhenius", temperature, [line], [298.15, 313.15], [("heap", 291.0)]
         ),
@@ -110,6 +171,25 @@ def test_plant_figures_carry_their_grade(name):
         ("cost", "INCOMPLETE: no cost for antiscalant"),
         ("closure", "no tail"),
         ("arrhenius", "30 \u00b0C"),
+        ("straightened", "diagnostic only: not used for the choice"),
+        ("straightened", "straightened conversion g(X) (-)"),
+        ("straightened", "ash (product) layer"),
+        ("residuals", "standardised residual (-)"),
+        ("residuals", "fitted extraction (% of total metal)"),
+        ("residuals", "time (h), logarithmic"),
+        ("leverage", "leverage (-)"),
+        ("leverage", "twice the mean"),
+        ("leverage", "24 h"),
+        ("correlation", "-0.93"),
+        ("correlation", "hollow ones against each other"),
+        ("forest", "time (h)"),
+        ("forest", "no end on that side"),
+        ("forest", "no interval"),
+        ("size", "rate constant (1/h), logarithmic"),
+        ("size", "slope 1"),
+        ("ways", "1 degree of freedom, t = 12.7"),
+        ("ways", "1000 / T (1/K)"),
+        ("ways", "ln(rate constant / (1/h))"),
     ],
 )
 def test_axes_say_denominator_and_unit(name, words):
@@ -124,7 +204,7 @@ def test_bars_stand_largest_first_with_their_share():
 
 
 def test_tests_without_a_grid_are_laid_out_in_rows_of_three():
-    places, rows, columns = kinetics._grid([panel(str(i), "", "25") for i in range(7)])
+    places, rows, columns = kinetics.panel_grid([panel(str(i), "", "25") for i in range(7)])
     assert (rows, columns) == (3, 3)
     assert len(set(places)) == 7
 
@@ -137,3 +217,38 @@ def lightness(color):
 def test_the_first_three_colours_differ_in_grey_print():
     shades = sorted(lightness(color) ** (1 / 2.2) for color in SERIES[:3])
     assert np.diff(shades).min() > 0.07
+
+
+def test_tests_beyond_the_sixth_keep_a_marker_and_fill_of_their_own():
+    names = [f"T{i}" for i in range(20)]
+    svg = checks.residual_pair(
+        "many", np.arange(1.0, 21), np.linspace(0, 1, 20), np.ones(20), names
+    )
+    assert all(name in words_of(svg) for name in names)
+    looks = {(checks.MARKERS[i % 6], checks.FILLS[(i // 6) % 4]) for i in range(20)}
+    assert len(looks) == 20
+
+
+def test_long_names_take_fewer_columns_of_a_legend():
+    assert checks.legend_columns(["A25", "B25"]) == 2
+    assert checks.legend_columns(["x" * 30] * 12) == 2
+    assert checks.legend_columns(["x" * 300] * 12) == 1
+
+
+@pytest.mark.parametrize("name", FIGURES)
+def test_no_text_is_cut_off(name):
+    """Every text begins within the picture, and by its letters ends there."""
+    root = ElementTree.fromstring(FIGURES[name])
+    width = float(root.get("viewBox").split()[2])
+    for element in root.iter():
+        if not element.tag.endswith("}text"):
+            continue
+        place = re.search(r"translate\(([-\d.]+) [-\d.]+\)", element.get("transform", ""))
+        turned = re.search(r"rotate\(-?(?!0\b)\d", element.get("transform", ""))
+        x = float(place.group(1)) if place else float(element.get("x", 0))
+        assert -1.0 <= x <= width, "".join(element.itertext())
+        style = element.get("style", "")
+        if not turned and "anchor: middle" not in style and "anchor: end" not in style:
+            size = float(re.search(r"([\d.]+)px", style).group(1))
+            letters = len("".join(element.itertext()).strip())
+            assert x + 0.4 * size * letters <= width + 1.0, "".join(element.itertext())

@@ -104,9 +104,8 @@ def test_plant_figures_are_stamped_and_say_what_their_band_holds(copper_figures)
         assert ">SCOPING</text>" in figure.svg
 
 
-def test_nine_figures_for_the_whole_chain(copper_figures):
-    names = [figure.name for figure in copper_figures]
-    assert names == [
+def test_the_figures_of_the_whole_chain_and_those_that_stand_folded(copper_figures):
+    assert [figure.name for figure in copper_figures if not figure.folded] == [
         "closure_oxide_Cu",
         "extraction_oxide_Cu",
         "residuals_oxide_Cu",
@@ -117,6 +116,27 @@ def test_nine_figures_for_the_whole_chain(copper_figures):
         "precipitant_sinks",
         "cost",
     ]
+    assert [figure.name for figure in copper_figures if figure.folded] == [
+        "straightened_oxide_Cu",
+        "leverage_oxide_Cu",
+        "correlation_oxide_Cu",
+        "size_oxide_Cu",
+        "arrhenius_oxide_Cu",
+    ]
+
+
+def test_figures_for_checking_a_fit_stand_in_a_part_that_is_opened(copper_page, copper_figures):
+    kinetics = copper_page[copper_page.index('<section id="kinetics">') :]
+    kinetics = kinetics[: kinetics.index("</section>")]
+    before, _, inside = kinetics.partition('<details class="more">')
+    assert "More figures: 5 for checking the fit" in inside
+    assert "<details open" not in copper_page and copper_page.count("<details") == 1
+    for figure in copper_figures:
+        if figure.section == "kinetics":
+            assert (figure.title in inside) == figure.folded
+            assert (figure.title in before) != figure.folded
+    first = copper_page[: copper_page.index('<nav class="contents">')]
+    assert "<figure" not in first and "<details" not in first
 
 
 def test_bottles_alone_give_a_page_without_plant_and_money(bottles):

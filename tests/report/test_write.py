@@ -27,7 +27,7 @@ def test_everything_is_there(copper, folder):
     assert {"results.json", "report.html", "results.xlsx"} <= set(files)
     tables = {name for name in files if name.startswith("tables/")}
     assert tables == {f"tables/{name}.csv" for name in file_names(copper.tables())}
-    assert sum(name.startswith("figures/") for name in files) == 9
+    assert sum(name.startswith("figures/") for name in files) == 14
 
 
 def test_results_come_back(copper, folder):

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -15,8 +15,6 @@ from leachkin.report.figures.style import (
     GREY,
     INK,
     LINES,
-    MARKERS,
-    PALE,
     SERIES,
     band,
     draw,
@@ -59,7 +57,7 @@ def extraction_panels(name: str, panels: Sequence[Panel], metal: str, band_label
 
     Tests without a size and temperature grid are laid out in rows of three.
     """
-    places, rows, columns = _grid(panels)
+    places, rows, columns = panel_grid(panels)
 
     def paint(figure: Any) -> None:
         all_axes = figure.subplots(rows, columns, sharex=False, sharey=True, squeeze=False)
@@ -76,61 +74,6 @@ def extraction_panels(name: str, panels: Sequence[Panel], metal: str, band_label
         figure_legend(figure, all_axes[places[0]])
 
     return draw(name, 0.75 + 1.75 * rows, paint)
-
-
-def residual_plot(
-    name: str, time_h: Array, residual: Array, group: Sequence[str], unit: str
-) -> str:
-    """Return the SVG of standardised residuals against time on a logarithmic axis."""
-    names = list(dict.fromkeys(group))
-
-    def paint(figure: Any) -> None:
-        axes = figure.subplots()
-        axes.axhspan(-2, 2, color=PALE, linewidth=0)
-        axes.axhline(0.0, color=GREY, linewidth=0.8)
-        for i, label in enumerate(names):
-            chosen = np.array([g == label for g in group])
-            axes.plot(
-                time_h[chosen],
-                residual[chosen],
-                linestyle="none",
-                marker=MARKERS[i % len(MARKERS)],
-                color=SERIES[i % len(SERIES)],
-                markerfacecolor="none" if i >= len(SERIES) else None,
-                label=label,
-            )
-        axes.set_xscale("log")
-        axes.xaxis.set_major_formatter(_plain_ticks())
-        axes.set_xlabel("time (h), logarithmic")
-        axes.set_ylabel(f"(fitted - measured) /\n{unit}")
-        figure_legend(figure, axes, columns=min(len(names), 9))
-
-    return draw(name, 2.7, paint)
-
-
-def parameter_forest(
-    name: str, labels: Sequence[str], ratio_low: Sequence[float], ratio_high: Sequence[float]
-) -> str:
-    """Return the SVG of intervals as a ratio to each estimate, logarithmic where they are wide."""
-
-    def paint(figure: Any) -> None:
-        axes = figure.subplots()
-        place = np.arange(len(labels))[::-1]
-        axes.axvline(1.0, color=GREY, linewidth=0.8)
-        for y, low, high in zip(place, ratio_low, ratio_high, strict=True):
-            axes.plot([low, high], [y, y], color=SERIES[0], linewidth=2.2, solid_capstyle="butt")
-            axes.plot([1.0], [y], marker="o", color=SERIES[0])
-        axes.set_yticks(place, labels)
-        wide = min(ratio_low, default=1.0) < 0.4 or max(ratio_high, default=1.0) > 2.5
-        if wide:
-            axes.set_xscale("log")
-            axes.xaxis.set_major_formatter(_plain_ticks())
-        scale = "logarithmic; 1 is the estimate" if wide else "1 is the estimate"
-        axes.set_xlabel(f"interval / estimate ({scale})")
-        axes.grid(visible=False, axis="y")
-        axes.set_ylim(-0.7, len(labels) - 0.3)
-
-    return draw(name, 0.9 + 0.26 * len(labels), paint)
 
 
 @dataclass(frozen=True)
@@ -181,7 +124,7 @@ def arrhenius_plot(
             axes.axvline(1000 / kelvin, color=SERIES[1], linewidth=1.1, linestyle="--", label=label)
         axes.set_xlabel("1000 / T (1/K)")
         axes.set_ylabel("ln(time for complete conversion / h)")
-        _celsius_axis(axes)
+        celsius_axis(axes)
         figure_legend(figure, axes)
 
     return draw(name, 3.0, paint)
@@ -213,9 +156,22 @@ def _paint_panel(axes: Any, panel: Panel, band_label: str) -> None:
     axes.set_title(", ".join(word for word in (panel.test, panel.size, panel.temperature) if word))
     axes.set_ylim(0, 105)
     axes.set_xlim(left=0)
+    axes.locator_params(axis="x", nbins=5)
 
 
-def _grid(panels: Sequence[Panel]) -> tuple[list[tuple[int, int]], int, int]:
+class Placed(Protocol):
+    """Anything that says in which column and row of panels it stands."""
+
+    @property
+    def size(self) -> str:
+        """Name of its column."""
+
+    @property
+    def temperature(self) -> str:
+        """Name of its row."""
+
+
+def panel_grid(panels: Sequence[Placed]) -> tuple[list[tuple[int, int]], int, int]:
     """Place of each panel, rows and columns: temperatures by sizes where that holds one each."""
     rows = list(dict.fromkeys(panel.temperature for panel in panels))
     columns = list(dict.fromkeys(panel.size for panel in panels))
@@ -227,13 +183,20 @@ def _grid(panels: Sequence[Panel]) -> tuple[list[tuple[int, int]], int, int]:
     return [divmod(i, across) for i in range(len(panels))], math.ceil(len(panels) / across), across
 
 
-def _plain_ticks() -> Any:
-    from matplotlib.ticker import FuncFormatter
+def plain_logarithmic(axis: Any) -> None:
+    """Write plain numbers along a logarithmic axis, more of them where it is short."""
+    from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
 
-    return FuncFormatter(lambda value, _: f"{value:g}")
+    low, high = axis.get_view_interval()
+    decades = float(np.log10(high / low))
+    if decades < 2.0:
+        subs = (1.0, 2.0, 5.0) if decades > 0.7 else (1.0, 1.5, 2.0, 3.0, 4.0, 6.0, 8.0)
+        axis.set_major_locator(LogLocator(subs=subs))
+    axis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
+    axis.set_minor_formatter(NullFormatter())
 
 
-def _celsius_axis(axes: Any) -> None:
+def celsius_axis(axes: Any) -> None:
     """Degrees Celsius above, where a person looks first."""
     low, high = sorted(1000.0 / edge - ZERO_CELSIUS_K for edge in axes.get_xlim())
     step = 10 if high - low > 25 else 5

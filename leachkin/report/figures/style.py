@@ -52,6 +52,7 @@ _SETTINGS: dict[str, Any] = {
     "axes.facecolor": "none",
 }
 _PAGE_WIDTH_IN = 7.1
+_POINTS_PER_IN = 72
 
 
 @dataclass(frozen=True)
@@ -68,6 +69,8 @@ class ReportFigure:
         The caption says denominator, basis, grade of evidence and what a band holds.
     svg : str
         The SVG text, without an XML declaration.
+    folded : bool
+        Shown on the page only when the reader opens the part "More figures".
     """
 
     name: str
@@ -75,6 +78,7 @@ class ReportFigure:
     title: str
     caption: str
     svg: str
+    folded: bool = False
 
 
 def draw(name: str, height_in: float, paint: Any, width_in: float = _PAGE_WIDTH_IN) -> str:
@@ -89,15 +93,26 @@ def draw(name: str, height_in: float, paint: Any, width_in: float = _PAGE_WIDTH_
         Takes a matplotlib Figure.
     """
     import matplotlib
+    from matplotlib.backends.backend_svg import FigureCanvasSVG
     from matplotlib.figure import Figure
 
     settings: Any = {**_SETTINGS, "svg.hashsalt": name}
     with matplotlib.rc_context(settings):
-        figure = Figure(figsize=(width_in, height_in), layout="constrained")
+        figure = Figure(figsize=(width_in, height_in), dpi=_POINTS_PER_IN, layout="constrained")
+        canvas: Any = FigureCanvasSVG(figure)
         paint(figure)
+        _lay_out_once(figure)
         buffer = io.StringIO()
-        figure.savefig(buffer, format="svg", metadata={"Date": None, "Creator": None})
+        canvas.print_svg(buffer, metadata={"Date": None, "Creator": None})
     return _own_ids(buffer.getvalue(), name)
+
+
+def _lay_out_once(figure: Figure) -> None:
+    """Place the axes now: saving would draw everything a second time for it."""
+    engine = figure.get_layout_engine()
+    if engine is not None:
+        engine.execute(figure)
+    figure.set_layout_engine("none")
 
 
 def band(axes: Axes, x: Any, low: Any, high: Any, color: str, label: str = "") -> None:
