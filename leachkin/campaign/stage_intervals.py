@@ -97,7 +97,7 @@ def _alternatives(stage: KineticsStage, method: str) -> tuple[FitResult, ...]:
         for row in stage.ranking.rows
         if row.law in stage.ranking.indistinguishable
         and row.fit is not None
-        and row.fit is not stage.fit
+        and row.law != stage.law.name
         and row.fit.converged
     )
 

@@ -78,3 +78,23 @@ def test_a_backslash_in_a_path_is_told(invoke):
     assert result.exit_code == 1
     assert "\\" in result.stderr
     assert "Traceback" not in result.output
+
+
+@pytest.mark.parametrize(
+    ("asked", "words"), [("linearised", "linearised"), ("profile", "profile likelihood")]
+)
+def test_the_method_of_the_intervals_is_asked_for_and_named(invoke, csv_of, asked, words):
+    result = invoke("fit", csv_of(uo3()), "--intervals", asked, "--json")
+    assert result.exit_code == 0
+    (stage,) = json.loads(result.stdout)["kinetics"].values()
+    assert stage["intervals"] == asked
+    methods = [p["method"] for p in stage["parameters"] if p["low"] is not None]
+    assert methods and all(words in method for method in methods)
+    table = invoke("fit", csv_of(uo3()), "--intervals", asked).stdout
+    assert words in table
+
+
+def test_an_unknown_method_of_intervals_is_wrong_usage(invoke, csv_of):
+    result = invoke("fit", csv_of(uo3()), "--intervals", "jackknife")
+    assert result.exit_code == 2
+    assert "linearised" in result.stderr
