@@ -1,6 +1,32 @@
-"""Chemistry: formulas, stoichiometry, potentials, cells and cyanide; no ore and no plant in it."""
+"""Chemistry: formulas, stoichiometry, potentials, cells and cyanide; no ore and no plant in it.
 
+Water, activities, speciation, diffusion and transfer to metal stand here too.
+"""
+
+from leachkin.chemistry.activity import (
+    DAVIES_ENDS_mol_per_L,
+    davies_holds,
+    davies_log10_gamma,
+    davies_remark,
+    debye_hueckel_A,
+    ionic_strength_mol_per_L,
+)
+from leachkin.chemistry.aqueous_constants import (
+    SolubilityProduct,
+    formation_constants,
+    log10_water_product,
+    solubility_products,
+)
 from leachkin.chemistry.cells import Cell, cell, cell_from_potentials, residual_mol_per_L
+from leachkin.chemistry.complexes import (
+    PotentialRange,
+    complexed_potential,
+    electrons_of,
+    ion_of,
+    is_complex,
+    is_metal_couple,
+    potential_range,
+)
 from leachkin.chemistry.cyanide import (
     StabilityConstant,
     check_pH,
@@ -9,7 +35,16 @@ from leachkin.chemistry.cyanide import (
     hcn_share,
     stability_constants,
 )
+from leachkin.chemistry.diffusion import diffusion_coefficient_m2_per_s, diffusion_row
 from leachkin.chemistry.formulas import canonical_species, charge_of, molar_mass, parse_formula
+from leachkin.chemistry.liquors import (
+    CYANIDE_IONS,
+    FreeCyanide,
+    acid_pH,
+    ferric_limit_g_per_L,
+    free_cyanide,
+)
+from leachkin.chemistry.mass_balances import Balanced, solve_mass_balances
 from leachkin.chemistry.potentials import (
     SOURCE_ORDER,
     Potential,
@@ -21,6 +56,7 @@ from leachkin.chemistry.potentials import (
     potentials_of,
     standard_potential,
 )
+from leachkin.chemistry.speciation import Speciation, saturation_indices, speciate
 from leachkin.chemistry.stoichiometry import (
     StoichiometricUse,
     electron_factor,
@@ -40,14 +76,41 @@ from leachkin.chemistry.thermodynamics import (
     potential_from_gibbs,
     temperature_coefficient_from_entropies,
 )
+from leachkin.chemistry.transport import (
+    Transfer,
+    apparent_activation_energy_kJ_per_mol,
+    falling_velocity_m_per_s,
+    flat_plate,
+    packed_bed,
+    rotating_cylinder,
+    rotating_disc,
+    suspended_dust,
+    transfer_ratio,
+)
+from leachkin.chemistry.water import (
+    water_density_kg_per_m3,
+    water_kinematic_viscosity_m2_per_s,
+    water_relative_permittivity,
+    water_viscosity_Pa_s,
+)
 
 __all__ = [
+    "CYANIDE_IONS",
+    "DAVIES_ENDS_mol_per_L",
     "SOURCE_ORDER",
+    "Balanced",
     "Cell",
+    "FreeCyanide",
     "Potential",
+    "PotentialRange",
     "PotentialSpread",
+    "SolubilityProduct",
+    "Speciation",
     "StabilityConstant",
     "StoichiometricUse",
+    "Transfer",
+    "acid_pH",
+    "apparent_activation_energy_kJ_per_mol",
     "canonical_couple",
     "canonical_species",
     "cell",
@@ -56,28 +119,60 @@ __all__ = [
     "check_pH",
     "check_temperature",
     "complex_potential",
+    "complexed_potential",
+    "davies_holds",
+    "davies_log10_gamma",
+    "davies_remark",
+    "debye_hueckel_A",
+    "diffusion_coefficient_m2_per_s",
+    "diffusion_row",
     "electron_factor",
+    "electrons_of",
     "factor",
+    "falling_velocity_m_per_s",
+    "ferric_limit_g_per_L",
+    "flat_plate",
+    "formation_constants",
+    "free_cyanide",
     "gibbs_from_potential",
     "hcn_headspace_ppm",
     "hcn_pKa",
     "hcn_share",
     "hydrogen_Nm3_per_kg",
+    "ion_of",
+    "ionic_strength_mol_per_L",
+    "is_complex",
+    "is_metal_couple",
     "known_couples",
     "ln_equilibrium_constant",
+    "log10_water_product",
     "molar_mass",
     "named_factor",
     "nernst",
+    "packed_bed",
     "parse_formula",
     "potential_by_source",
     "potential_from_formation",
     "potential_from_gibbs",
+    "potential_range",
     "potentials_of",
     "residual_mol_per_L",
+    "rotating_cylinder",
+    "rotating_disc",
+    "saturation_indices",
+    "solubility_products",
+    "solve_mass_balances",
+    "speciate",
     "stability_constants",
     "standard_potential",
     "stoichiometric_use",
     "stoichiometric_uses",
     "stoichiometry_table",
+    "suspended_dust",
     "temperature_coefficient_from_entropies",
+    "transfer_ratio",
+    "water_density_kg_per_m3",
+    "water_kinematic_viscosity_m2_per_s",
+    "water_relative_permittivity",
+    "water_viscosity_Pa_s",
 ]
