@@ -11,6 +11,7 @@ from leachkin.campaign.next_tests import (
     stage_behind,
 )
 from leachkin.campaign.next_tests_given import candidate_problems
+from leachkin.campaign.plant_words import outside_words
 from leachkin.campaign.result import SCHEMA_VERSION, CampaignResult
 from leachkin.campaign.run import DEFAULT_DRAWS, DEFAULT_LEVEL, STAGES, run_campaign
 from leachkin.campaign.settings import Assumption, Settings, register_table
@@ -53,6 +54,7 @@ __all__ = [
     "candidate_problems",
     "check_campaign",
     "key_figures",
+    "outside_words",
     "read_campaign",
     "read_leniently",
     "register_table",

@@ -6,6 +6,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from leachkin.campaign.bands import Quantity, in_words, listed
+from leachkin.campaign.plant_words import outside_words
 from leachkin.campaign.result import CampaignResult
 from leachkin.campaign.settings import Assumption
 from leachkin.campaign.stage_results import CementationStage, HeapStage, TankStage
@@ -66,6 +67,11 @@ def _band_words(level: float | None, contains: tuple[str, ...]) -> str:
     return f"; {_PERCENT * level:.3g} % band of {listed(contains)}"
 
 
+def _outside(outside: tuple[str, ...]) -> str:
+    words = outside_words(outside)
+    return f"; {words}" if words else ""
+
+
 def _heap_lines(heap: HeapStage, level: float) -> Iterator[str]:
     del level
     extracted, metal = heap.extracted.at(-1), heap.key.rpartition("/")[2]
@@ -74,7 +80,8 @@ def _heap_lines(heap: HeapStage, level: float) -> Iterator[str]:
         f"{heap.cycle_d:.4g} d and {heap.m3_per_t[-1]:.3g} m3/t"
         f"{_band_words(extracted.level, heap.contains)}; by that day "
         f"{_fraction(heap.recovered.at(-1))} % recovered in solution out of the heap and "
-        f"{_fraction(heap.in_solution.at(-1))} % dissolved in the heap. Basis: dry ore."
+        f"{_fraction(heap.in_solution.at(-1))} % dissolved in the heap. Basis: dry ore"
+        f"{_outside(heap.outside)}."
     )
     yield _what_rules(heap)
     yield from _wide_line(heap)
@@ -116,7 +123,7 @@ def _tank_lines(tank: TankStage, level: float) -> Iterator[str]:
     yield (
         f"{tank.grade}: {_fraction(out)} % of total {metal} extracted in "
         f"{len(tank.residence_times_h)} tanks of {hours:.3g} h in all"
-        f"{_band_words(out.level, tank.contains)}. Basis: dry ore."
+        f"{_band_words(out.level, tank.contains)}. Basis: dry ore{_outside(tank.outside)}."
     )
     yield from _wide_line(tank)
 
@@ -165,7 +172,8 @@ def _budget_lines(result: CampaignResult) -> Iterator[str]:
     per_kg = ""
     if budget.cost_per_kg_metal.value is not None:
         per_kg = f", {in_words(budget.cost_per_kg_metal)} {budget.currency}/kg recovered"
-    yield f"Reagents: {cost}, {per_t}{per_kg}. {' '.join(budget.basis)}"
+    outside = f" Quantities {words}." if (words := outside_words(budget.outside)) else ""
+    yield f"Reagents: {cost}, {per_t}{per_kg}.{outside} {' '.join(budget.basis)}"
 
 
 def _cementation_lines(stage: CementationStage) -> Iterator[str]:

@@ -324,5 +324,6 @@ def _budget(stage: BudgetStage) -> dict[str, Any]:
         },
         "basis": list(stage.basis),
         "band_holds": list(stage.contains),
+        "outside_the_data": list(stage.outside),
         "notes": list(stage.notes),
     }

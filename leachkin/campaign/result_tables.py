@@ -12,6 +12,7 @@ from leachkin.campaign.evidence_tables import (
     evidence_tables,
     other_laws_table,
 )
+from leachkin.campaign.plant_words import outside_words
 from leachkin.campaign.result import CampaignResult
 from leachkin.campaign.settings import register_table
 from leachkin.campaign.stage_results import (
@@ -188,7 +189,9 @@ def tank_table(stage: TankStage) -> ResultTable:
 def _plant_caption(stage: TankStage | HeapStage) -> str:
     level = stage.extraction.level if isinstance(stage, TankStage) else stage.extracted.level
     band = f" {_PERCENT * level:.3g} % band: " if level is not None else " "
-    return f"{stage.grade}; {stage.key}; dry ore, of total metal.{band}{'; '.join(stage.contains)}"
+    held = "; ".join(stage.contains)
+    outside = f". {words.capitalize()}" if (words := outside_words(stage.outside)) else ""
+    return f"{stage.grade}; {stage.key}; dry ore, of total metal.{band}{held}{outside}"
 
 
 def _band_columns(key: str, heading: str, unit: str, band: Band) -> list[Column]:
@@ -338,8 +341,13 @@ def budget_tables(stage: BudgetStage) -> Iterator[ResultTable]:
                 ("Reagents per kilogram of metal recovered", stage.cost_per_kg_metal),
             )
         ),
-        "; ".join((*stage.basis, *stage.contains)),
+        "; ".join((*stage.basis, *stage.contains, *_outside(stage))),
     )
+
+
+def _outside(stage: BudgetStage) -> tuple[str, ...]:
+    words = outside_words(stage.outside)
+    return (f"quantities {words}",) if words else ()
 
 
 def excluded_table(excluded: tuple[str, ...]) -> ResultTable:

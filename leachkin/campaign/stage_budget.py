@@ -325,6 +325,7 @@ def _stage(sources: _Sources, budget: Budget, moving: Budget | None, level: floa
         basis=_basis(sources, budget),
         contains=("quantities as in the plant band; prices are not drawn",) if has else (),
         notes=(*_purity_notes(sources), *budget.notes),
+        outside=() if sources.plant is None else sources.plant.outside,
     )
 
 

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from leachkin.campaign.assumed_values import assumed_in_fit
 from leachkin.campaign.bands import band_of, quantity_of
 from leachkin.campaign.campaign import Campaign
 from leachkin.campaign.plant_ore import SCOPING
@@ -311,6 +312,7 @@ def _outside(
         stated["feed_reagent"],
         cycle * HOURS_PER_DAY,
         "the heap",
+        assumed_in_fit(bed.settings),
     )
 
 

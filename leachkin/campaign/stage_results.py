@@ -415,6 +415,8 @@ class BudgetStage:
         Value None where the budget is incomplete.
     basis : tuple of str
         Dry tonnes, recovered metal, single pass: what the figures rest on.
+    outside : tuple of str
+        Where the plant whose quantities these are lies outside the data.
     contains : tuple of str
     notes : tuple of str
     """
@@ -429,3 +431,4 @@ class BudgetStage:
     basis: tuple[str, ...] = ()
     contains: tuple[str, ...] = ()
     notes: tuple[str, ...] = ()
+    outside: tuple[str, ...] = ()

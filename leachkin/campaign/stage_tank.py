@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from leachkin.campaign.assumed_values import assumed_in_fit
 from leachkin.campaign.bands import band_of, quantity_of
 from leachkin.campaign.campaign import Campaign
 from leachkin.campaign.plant_sizes import plant_sizes
@@ -268,12 +269,20 @@ def _stage(
             ore.law,
             train.sizes,
             stated["temperature"],
-            stated["feed_reagent"],
+            _strengths(stated["feed_reagent"], strengths),
             total_h,
             "the tanks",
+            assumed_in_fit(settings),
         ),
         notes=_notes(train, ore, result),
     )
+
+
+def _strengths(feed_g_per_L: float | None, in_tanks: Array | None) -> Array | None:
+    """Every strength of the train: the law is used at that of each tank."""
+    if feed_g_per_L is None or in_tanks is None:
+        return None
+    return np.append(np.asarray(in_tanks, dtype=float), feed_g_per_L)
 
 
 def _sinks(

@@ -76,5 +76,6 @@ def _sentences(name: str, value: np.ndarray, held: Range, unit: str) -> list[str
     if high > held[1] + _SLACK * abs(held[1]) and high not in found:
         found.append(high)
     shift, shown = (ZERO_CELSIUS_K, "degC") if unit == "K" else (0.0, unit)
-    tested = f"{held[0] - shift:.4g} to {held[1] - shift:.4g} {shown}"
+    ends = dict.fromkeys(f"{end - shift:.4g}" for end in held)
+    tested = f"{' to '.join(ends)} {shown}" + (" only" if len(ends) == 1 else "")
     return [f"{name} {x - shift:.4g} {shown} is outside the tests ({tested})" for x in found]

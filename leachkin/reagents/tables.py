@@ -10,7 +10,7 @@ import numpy as np
 from leachkin.reagents.budget import Budget, BudgetRow, total
 from leachkin.reagents.law import band
 from leachkin.reagents.lines import Array
-from leachkin.result_table import Column, ResultTable
+from leachkin.result_table import Cell, Column, ResultTable
 
 
 def budget_tables(budget: Budget, drawn: Budget | None = None) -> tuple[ResultTable, ...]:
@@ -48,12 +48,18 @@ def _with_ends(table: ResultTable, drawn: ResultTable, budget: Budget) -> Result
     if not ends or len(table.rows) != len(drawn.rows):
         return table
     rows = tuple(
-        tuple(theirs[i] if i in ends else cell for i, cell in enumerate(own))
-        for own, theirs in zip(table.rows, drawn.rows, strict=True)
+        tuple(theirs.get(i, cell) for i, cell in enumerate(own))
+        for own, theirs in zip(table.rows, (_ends(row, ends) for row in drawn.rows), strict=True)
     )
     low = 50 * (1 - budget.level)
     ends_are = f"low is P{low:.3g} of the draws, high is P{100 - low:.4g}"
     return replace(table, rows=rows, caption=f"{table.caption}; {ends_are}")
+
+
+def _ends(row: tuple[Cell, ...], ends: list[int]) -> dict[int, Cell]:
+    """Low and high of a row, nothing where they are one: that figure was not drawn."""
+    pairs = zip(ends[::2], ends[1::2], strict=True)
+    return {i: row[i] for pair in pairs if row[pair[0]] != row[pair[1]] for i in pair}
 
 
 def basis_table(budget: Budget) -> ResultTable:

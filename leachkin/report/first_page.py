@@ -12,8 +12,10 @@ from leachkin.campaign import (
     BudgetStage,
     CampaignResult,
     HeapStage,
+    KineticsStage,
     Quantity,
     TankStage,
+    outside_words,
 )
 from leachkin.hazards import Caution
 from leachkin.report.numbers import format_number
@@ -97,7 +99,7 @@ def first_page(result: CampaignResult) -> FirstPage:
         band=tuple(_band_parts(plant)) if plant is not None else (),
         assumed_count=len(result.assumed),
         assumed_worst=tuple(worst_assumptions(result.assumed)),
-        extrapolated=tuple(plant.outside) if plant is not None else (),
+        extrapolated=tuple(_extrapolated(result)),
         money=tuple(_money(result.budget)),
         hazards=tuple(_hazard(caution) for caution in result.cautions),
         state=result.about.get("status", "draft"),
@@ -215,9 +217,11 @@ def _basis(result: CampaignResult) -> str:
     metal = plant.key.rpartition("/")[2]
     band = plant.extracted if isinstance(plant, HeapStage) else plant.extraction
     words = band_words(band.level, ()) if band.low is not None else "no band"
+    outside = outside_words(plant.outside)
     return (
         f"% of total {metal} in dry ore; extracted, in solution and recovered are three figures; "
         f"reagents at 100 % unless said otherwise. Band: {words}."
+        + (f" {outside[:1].upper()}{outside[1:]}." if outside else "")
     )
 
 
@@ -258,12 +262,32 @@ def _heap_supply(stage: HeapStage, reagent: str) -> str:
 def _undecided(result: CampaignResult) -> Iterator[str]:
     for stage in result.kinetics.values():
         if stage.ranking is not None:
-            yield f"{stage.key}: {stage.ranking.verdict}"
-    if result.heap is None:
-        return
-    for law in result.heap.other_laws:
-        matters = "matters here" if law.changes_the_figure else "does not matter here"
-        yield f"{law.law} would give {100 * law.extraction:.1f} % on the heap: it {matters}."
+            yield f"{stage.key}: {stage.ranking.verdict}{_evidence_words(stage)}"
+    for plant in (result.heap, result.tank):
+        if plant is not None and plant.law_verdict:
+            yield plant.law_verdict
+
+
+def _evidence_words(stage: KineticsStage) -> str:
+    """The independent lines in a sentence: which agree, which contradict, which tell nothing."""
+    lines = None if stage.evidence is None else stage.evidence.lines
+    if lines is None:
+        return ""
+    by_score: dict[str, list[str]] = {}
+    for line in lines.lines:
+        hint = f"{line.line} (a hint)" if line.hint_only else line.line
+        by_score.setdefault(line.score, []).append(hint)
+    said = [f"{score}: {', '.join(names)}" for score, names in sorted(by_score.items())]
+    return f" Evidence {lines.score}; {'; '.join(said)}."
+
+
+def _extrapolated(result: CampaignResult) -> Iterator[str]:
+    """Where each plant leaves its tests; which plant, where there are two."""
+    plants = [("heap", result.heap), ("tanks", result.tank)]
+    done = [(name, plant) for name, plant in plants if plant is not None]
+    for name, plant in done:
+        for line in plant.outside:
+            yield f"{name}: {line}" if len(done) > 1 else line
 
 
 def _next_test(result: CampaignResult) -> Iterator[str]:
@@ -304,16 +328,25 @@ def _band_parts(plant: HeapStage | TankStage) -> Iterator[BandPart]:
     held = plant.contains
     fit = [text for text in held if "fit" in text.split() and not text.startswith("no ")]
     ranges = [text for text in held if "range" in text and not text.startswith("no ")]
-    yield BandPart("fit", bool(fit), ", ".join(fit) or "the fit is not in it")
-    others = getattr(plant, "other_laws", ())
+    fit_words = ", ".join(fit) or "the fit is not in it"
+    yield BandPart("fit", bool(fit), fit_words + _alone(plant, "fit"))
+    others = plant.other_laws
     named = ", ".join(f"{law.law} {100 * law.extraction:.1f} %" for law in others)
-    yield BandPart(
-        "law",
-        False,
-        f"one law; others not rejected: {named}" if named else "one law; no other is left",
-    )
-    yield BandPart("scale-up", bool(ranges), "; ".join(ranges) or "no range was stated")
+    drawn = bool(others and plant.band_parts)
+    among = f"{1 + len(others)} laws by AICc weight" if drawn else "one law"
+    law_words = f"{among}; others not rejected: {named}" if named else "one law; no other is left"
+    yield BandPart("law", drawn, law_words + _alone(plant, "law"))
+    range_words = "; ".join(ranges) or "no range was stated"
+    yield BandPart("scale-up", bool(ranges), range_words + _alone(plant, "scale-up"))
     yield BandPart("ore", False, "one ore as sampled: its variability is not in it")
+
+
+def _alone(plant: HeapStage | TankStage, cause: str) -> str:
+    """The ends that one cause alone would give the figure."""
+    figures = [part.figure for part in plant.band_parts if part.cause == cause]
+    if not figures or figures[0].low is None or figures[0].high is None:
+        return ""
+    return f"; alone {100 * figures[0].low:.1f} to {100 * figures[0].high:.1f} %"
 
 
 def _hazard(caution: Caution) -> HazardLine:
@@ -351,7 +384,8 @@ def _money(stage: BudgetStage | None) -> Iterator[str]:
         (stage.cost_per_kg_metal, "per kg recovered"),
     ]
     words = [f"{_money_words(q)} {stage.currency} {per}" for q, per in costs if q.value is not None]
-    yield f"Reagents cost {', '.join(words)}.{priced}"
+    outside = f" Quantities {text}." if (text := outside_words(stage.outside)) else ""
+    yield f"Reagents cost {', '.join(words)}.{priced}{outside}"
 
 
 def _money_words(quantity: Quantity) -> str:

@@ -92,6 +92,19 @@ _SHOWN_COLUMNS = {
         "pls",
         "rules",
     ),
+    "budget_by_reagent": (
+        "reagent",
+        "net_kg_per_t",
+        "received_t_per_month",
+        "received_t_per_month_low",
+        "received_t_per_month_high",
+        "cost_per_month",
+        "cost_per_month_low",
+        "cost_per_month_high",
+        "cost_per_t",
+        "cost_share",
+        "missing",
+    ),
     "parameters": (
         "name",
         "parameter",
@@ -115,8 +128,8 @@ def sections(result: CampaignResult, figures: Sequence[ReportFigure]) -> tuple[S
     """Return the sections of the page that have anything in them."""
     tables = result.tables()
     found = []
-    for key, title, names in _SECTIONS:
-        own = tuple(for_people(t) for t in tables if t.rows and _begins(t, names))
+    for key, title, _ in _SECTIONS:
+        own = tuple(for_people(t) for t in tables if t.rows and _home(t) == key)
         pictures = tuple(figure for figure in figures if figure.section == key)
         if own or pictures or (key == "hazards" and result.cautions):
             found.append(Section(key, title, _left_out(tables, own), pictures, own))
@@ -204,6 +217,14 @@ def _round_days(table: ResultTable) -> Rows:
         for i, (row, day) in enumerate(zip(table.rows, days, strict=True))
         if i == last or day % steps[0] == 0
     )
+
+
+def _home(table: ResultTable) -> str | None:
+    """The section of a table: that of the longest start of its name."""
+    starts = [
+        (len(name), key) for key, _, names in _SECTIONS for name in names if _begins(table, (name,))
+    ]
+    return max(starts)[1] if starts else None
 
 
 def _begins(table: ResultTable, names: Sequence[str]) -> bool:

@@ -1,8 +1,12 @@
+from dataclasses import replace
+
 import pytest
 
-from leachkin.campaign import Assumption
+from leachkin.campaign import Assumption, LawElsewhere, Quantity
+from leachkin.campaign.stage_results import BandPart
 from leachkin.report import for_people, stage_tables, worst_assumptions
-from leachkin.report.first_page import rule_words
+from leachkin.report.first_page import first_page, rule_words
+from leachkin.report.sections import sections
 from leachkin.report.words import band_words, celsius, file_word
 from leachkin.result_table import Column, ResultTable
 
@@ -56,3 +60,44 @@ def test_words():
     assert celsius(290.15) == "17 \u00b0C"
     assert file_word("ore body/Cu") == "ore_body_Cu"
     assert rule_words("reagent", "H2SO4") == "H2SO4 supply"
+
+
+def test_the_first_page_says_where_the_plant_leaves_its_tests(copper):
+    page = first_page(copper)
+    words = "utside the tests in temperature, size and time."
+    assert f"O{words}" in page.basis
+    assert f"Quantities o{words}" in page.money[0]
+    assert page.extrapolated == copper.heap.outside
+
+
+def test_each_part_of_the_band_alone_stands_on_the_first_page(copper):
+    parts = {part.name: part for part in first_page(copper).band}
+    alone = {part.cause: part.figure for part in copper.heap.band_parts}
+    for cause in ("fit", "scale-up"):
+        ends = [100 * end for end in (alone[cause].low, alone[cause].high)]
+        assert parts[cause].text.endswith(f"; alone {ends[0]:.1f} to {ends[1]:.1f} %")
+        assert parts[cause].inside
+    assert parts["law"].text == "one law; no other is left"
+
+
+def test_a_law_beside_it_is_in_the_band_and_its_figure_shown(copper):
+    other = LawElsewhere("chemical", 0.655, True, 0.3)
+    law = BandPart("law", Quantity(0.70, "1", 0.655, 0.70), "both")
+    parts = tuple(law if part.cause == "law" else part for part in copper.heap.band_parts)
+    verdict = "The choice of law does change your plant figure: both."
+    heap = replace(copper.heap, other_laws=(other,), band_parts=parts, law_verdict=verdict)
+    page = first_page(replace(copper, heap=heap))
+    said = next(part for part in page.band if part.name == "law")
+    assert said.inside
+    assert said.text == (
+        "2 laws by AICc weight; others not rejected: chemical 65.5 %; alone 65.5 to 70.0 %"
+    )
+    assert page.undecided[-1] == verdict
+
+
+def test_a_table_stands_in_one_section(copper):
+    shown = [table.name for section in sections(copper, ()) for table in section.tables]
+    assert len(shown) == len(set(shown))
+    by_key = {section.key: section for section in sections(copper, ())}
+    names = {table.name for table in by_key["mechanism"].tables}
+    assert {"mechanism_oxide_Cu", "tests_of_need_oxide_Cu", "residual_checks_oxide_Cu"} <= names
