@@ -182,9 +182,19 @@ def at_temperature(law: RateLaw, temperature_K: Array | float) -> RateLaw:
 
 
 def lengthened(law: RateLaw, factor: Array | float) -> RateLaw:
-    """Return the law with its diffusion length multiplied by the heap's length factor."""
+    """Return the law with its diffusion length multiplied by the heap's length factor.
+
+    A law without an ash layer has no such length and stays as it is.
+    """
+    if not has_ash_layer(law):
+        return law
     longer = lengthen(law, factor)
     return longer if isinstance(longer, RateLaw) else law
+
+
+def has_ash_layer(law: RateLaw) -> bool:
+    """Return whether a length of diffusion means anything to a law."""
+    return any(one.kind == "ash_layer" for one in law.resistances)
 
 
 def with_ultimate_knots(

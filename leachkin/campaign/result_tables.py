@@ -213,7 +213,7 @@ def _band_cells(key: str, band: Band, index: int, scale: float) -> dict[str, Cel
 
 
 def heap_tables(stage: HeapStage) -> Iterator[ResultTable]:
-    """Yield the heap by day, its key figures, and the other laws carried to it."""
+    """Yield the heap by day and its key figures."""
     percent = "% of total metal"
     parts: tuple[tuple[str, str, str, Band, float], ...] = (
         ("extracted", "Extracted", percent, stage.extracted, _PERCENT),
@@ -247,8 +247,6 @@ def heap_tables(stage: HeapStage) -> Iterator[ResultTable]:
         records.append(record)
     yield ResultTable.from_records("heap", columns, records, _plant_caption(stage))
     yield figures_table("heap_figures", _heap_figures(stage), _plant_caption(stage))
-    if stage.other_laws:
-        yield _other_laws(stage)
 
 
 def _heap_figures(stage: HeapStage) -> Iterator[tuple[str, Quantity]]:
@@ -288,19 +286,6 @@ def figures_table(
     )
     records = [{"figure": words, **quantity.to_dict()} for words, quantity in figures]
     return ResultTable.from_records(name, columns, records, caption)
-
-
-def _other_laws(stage: HeapStage) -> ResultTable:
-    columns = (
-        Column("law", "Law that the data do not reject"),
-        Column("extraction", "Extracted at the end of the cycle", "% of total metal"),
-        Column("changes", "Changes the plant figure"),
-    )
-    records = [
-        {"law": one.law, "extraction": one.extraction * _PERCENT, "changes": one.changes_the_figure}
-        for one in stage.other_laws
-    ]
-    return ResultTable.from_records("heap_other_laws", columns, records)
 
 
 def cementation_tables(stage: CementationStage) -> Iterator[ResultTable]:

@@ -16,7 +16,12 @@ from leachkin.campaign.plant_ore import SCOPING
 from leachkin.campaign.plant_sizes import plant_sizes
 from leachkin.campaign.plant_split import End, band_parts, other_laws, plant_verdict
 from leachkin.campaign.plant_words import band_contents, outside_the_data, ultimate_note
-from leachkin.campaign.printed_law import at_temperature, lengthened, with_ultimate_knots
+from leachkin.campaign.printed_law import (
+    at_temperature,
+    has_ash_layer,
+    lengthened,
+    with_ultimate_knots,
+)
 from leachkin.campaign.settings import Settings, is_drawn
 from leachkin.campaign.stage_gangue import demand_at, gangue_draws
 from leachkin.campaign.stage_results import BandPart, GangueStage, HeapStage, PlantOre
@@ -322,6 +327,15 @@ def _notes(bed: _Bed, ore: PlantOre, result: HeapResult) -> tuple[str, ...]:
         notes.append(
             "SCOPING: only bottles stand behind this heap; contact, delivery and diffusion "
             "length are judgements until columns are run."
+        )
+    factor = bed.settings.values.get("heap.length_factor")
+    if (
+        factor is not None
+        and not has_ash_layer(ore.law)
+        and (factor.has_range or factor.value != 1)
+    ):
+        notes.append(
+            f"length_factor has no effect: {ore.law.name} has no ash layer to diffuse through."
         )
     if bed.gangue is None:
         notes.append(

@@ -241,3 +241,28 @@ def test_what_speaks_for_a_law_is_in_the_tables_and_the_numbers():
     best = evidence["left_out"][0]
     assert best["law"] == "ash_layer+chemical"
     assert 0.7 < best["error"] < 1.5
+
+
+def test_a_length_factor_acts_on_the_laws_that_have_an_ash_layer(tmp_path):
+    """The chemical law beside it knows no length: it stays, and the heap is still done."""
+    longer = HEAP.replace("delivery_factor = 2", "delivery_factor = 2\nlength_factor = 2")
+    both = '["chemical", "ash_layer"]'
+    found = {}
+    for name, heap_text in (("own", HEAP), ("longer", longer)):
+        path = bottles(tmp_path, heap_text, times=ONE_TIME, laws=both)
+        result = run_campaign(read_campaign(path), draws=50)
+        names = [table.name for table in result.tables()]
+        assert len(names) == len(set(names))
+        carried = result.heap.other_laws[0]
+        values = {carried.law: carried.extraction}
+        values[result.kinetics["pit/Cu"].law.name] = result.heap.extracted.at(-1).value
+        found[name] = values
+    assert found["longer"]["chemical"] == pytest.approx(found["own"]["chemical"], rel=1e-9)
+    assert found["longer"]["ash_layer"] < found["own"]["ash_layer"] - 0.05
+
+
+def test_a_length_factor_without_an_ash_layer_is_said_to_do_nothing(tmp_path):
+    longer = HEAP.replace("delivery_factor = 2", "delivery_factor = 2\nlength_factor = 2")
+    path = bottles(tmp_path, longer, times=ONE_TIME, laws='["chemical"]')
+    heap = run_campaign(read_campaign(path), draws=0).heap
+    assert any("length_factor has no effect: chemical has no ash layer" in n for n in heap.notes)
