@@ -23,6 +23,12 @@ from leachkin.report.words import band_words
 from leachkin.testwork import MetalBalance
 
 _WORST = 3
+#: Scores of the lines of evidence in words.
+_SCORES = {
+    "consistent": "agree",
+    "conflicting": "contradict",
+    "undetermined": "cannot tell",
+}
 _GRADE_TEXT = {
     "SCOPING": "Bottles alone stand behind the plant figures: they rank and scope. Columns are "
     "the design test of a heap.",
@@ -273,12 +279,11 @@ def _evidence_words(stage: KineticsStage) -> str:
     lines = None if stage.evidence is None else stage.evidence.lines
     if lines is None:
         return ""
-    by_score: dict[str, list[str]] = {}
+    by_score: dict[str, list[str]] = {score: [] for score in _SCORES}
     for line in lines.lines:
-        hint = f"{line.line} (a hint)" if line.hint_only else line.line
-        by_score.setdefault(line.score, []).append(hint)
-    said = [f"{score}: {', '.join(names)}" for score, names in sorted(by_score.items())]
-    return f" Evidence {lines.score}; {'; '.join(said)}."
+        by_score[line.score].append(f"{line.line} (a hint)" if line.hint_only else line.line)
+    said = [f"{_SCORES[score]}: {', '.join(names)}" for score, names in by_score.items() if names]
+    return f" Evidence {lines.score}: {'; '.join(said)}."
 
 
 def _extrapolated(result: CampaignResult) -> Iterator[str]:

@@ -119,6 +119,8 @@ _SHOWN_COLUMNS = {
     ),
 }
 _MOST_ROWS = 40
+#: A smaller chance is shown as below it.
+_LEAST_CHANCE = 0.001
 #: Steps in days between the rows that are shown, and about how many rows.
 _DAY_STEPS = (1, 2, 5, 10, 15, 30, 60, 90, 180)
 _SHOWN_DAYS = 12
@@ -132,8 +134,19 @@ def sections(result: CampaignResult, figures: Sequence[ReportFigure]) -> tuple[S
         own = tuple(for_people(t) for t in tables if t.rows and _home(t) == key)
         pictures = tuple(figure for figure in figures if figure.section == key)
         if own or pictures or (key == "hazards" and result.cautions):
-            found.append(Section(key, title, _left_out(tables, own), pictures, own))
+            text = (*_verdicts(result, key), *_left_out(tables, own))
+            found.append(Section(key, title, text, pictures, own))
     return tuple(found)
+
+
+def _verdicts(result: CampaignResult, key: str) -> tuple[str, ...]:
+    """What the tests say of the mechanism, and whether it matters to the plant, first of all."""
+    if key != "mechanism":
+        return ()
+    rankings = [(k, stage.ranking) for k, stage in result.kinetics.items() if stage.ranking]
+    said = [f"{name}: {ranking.verdict}" for name, ranking in rankings]
+    plants = [plant for plant in (result.heap, result.tank) if plant is not None]
+    return (*said, *(plant.law_verdict for plant in plants if plant.law_verdict))
 
 
 def stage_tables(result: CampaignResult, stage: str) -> tuple[ResultTable, ...]:
@@ -160,7 +173,7 @@ def first_tables(result: CampaignResult) -> tuple[ResultTable, ...]:
 
 def for_people(table: ResultTable) -> ResultTable:
     """Return a table with the columns and rows that people are shown; files hold all."""
-    shown = _without_empty_columns(_without_equal_end(_with_columns(table)))
+    shown = _without_empty_columns(_without_equal_end(_with_columns(_with_least_chance(table))))
     if shown.name == "heap":
         return replace(shown, rows=_round_days(shown))
     if len(shown.rows) > _MOST_ROWS:
@@ -168,6 +181,19 @@ def for_people(table: ResultTable) -> ResultTable:
         caption = f"{shown.caption} ({more})" if shown.caption else more
         return replace(shown, rows=shown.rows[:_MOST_ROWS], caption=caption)
     return shown
+
+
+def _with_least_chance(table: ResultTable) -> ResultTable:
+    """A table whose chances near nothing say no more than that."""
+    at = [i for i, column in enumerate(table.columns) if column.key == "chance"]
+
+    def cell(i: int, value: Cell) -> Cell:
+        if i not in at or not isinstance(value, float) or value >= _LEAST_CHANCE:
+            return value
+        return f"< {_LEAST_CHANCE:g}"
+
+    rows = tuple(tuple(cell(i, v) for i, v in enumerate(row)) for row in table.rows)
+    return replace(table, rows=rows) if at else table
 
 
 def _with_columns(table: ResultTable) -> ResultTable:

@@ -101,3 +101,18 @@ def test_a_table_stands_in_one_section(copper):
     by_key = {section.key: section for section in sections(copper, ())}
     names = {table.name for table in by_key["mechanism"].tables}
     assert {"mechanism_oxide_Cu", "tests_of_need_oxide_Cu", "residual_checks_oxide_Cu"} <= names
+
+
+def test_the_mechanism_opens_with_what_is_known_and_whether_it_matters(copper):
+    by_key = {section.key: section for section in sections(copper, ())}
+    verdict = copper.kinetics["oxide/Cu"].ranking.verdict
+    assert by_key["mechanism"].text[:2] == (f"oxide/Cu: {verdict}", copper.heap.law_verdict)
+    said = first_page(copper).undecided[0]
+    assert "Evidence undetermined" in said or "Evidence consistent" in said
+    assert "activation energy (a hint)" in said
+
+
+def test_a_chance_near_nothing_is_no_more_than_that():
+    columns = (Column("larger", "Larger law"), Column("chance", "Chance"))
+    shown = for_people(ResultTable("nested_tests_x", columns, (("a", 3e-160), ("b", 0.56))))
+    assert shown.column("chance") == ["< 0.001", 0.56]
