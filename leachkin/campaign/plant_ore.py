@@ -58,6 +58,7 @@ def plant_ore(
         ()
         if ranking is None
         else tuple(law for law in ranking.indistinguishable if not is_particle(law)),
+        ranking is None or bool(ranking.mechanisms),
     )
 
 

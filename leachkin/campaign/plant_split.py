@@ -67,7 +67,8 @@ def band_parts(
         names = listed([ore.carried[0].name, *(one.law for one in others)])
         parts.append(BandPart("law", figure, f"from one to the other: {names}"))
     else:
-        parts.append(BandPart("law", Quantity(value, "1"), "no other law is left"))
+        why = "no other law is left" if ore.described else "no law describes the tests"
+        parts.append(BandPart("law", Quantity(value, "1"), why))
     drawn = end(ore.law, True) if scale_up else None
     words = f"ranges of {', '.join(scale_up)}" if scale_up else "no scale-up range is stated"
     parts.append(BandPart("scale-up", quantity_of(value, drawn, "1", level), words))
@@ -85,6 +86,11 @@ def plant_verdict(
     if ore.not_carried:
         names = listed(list(ore.not_carried))
         rest = f" Not rejected either, but without a theory that carries it to a plant: {names}."
+    if not ore.described:
+        return (
+            f"No law that can be carried to a plant describes these tests: the plant figure rests "
+            f"on {ore.law.name}, for want of a better one, and no band holds that.{rest}"
+        )
     if not others:
         if not ore.carried:
             return ""

@@ -163,6 +163,8 @@ class PlantOre:
         Every law that the data do not reject and that may be carried to the plant, ``law`` first.
     not_carried : tuple of str
         Laws not rejected either, without a theory of size and strength.
+    described : bool
+        False where no law that may be carried describes the tests.
     """
 
     key: str
@@ -177,6 +179,7 @@ class PlantOre:
     fit_draws: RateLaw | None = None
     carried: tuple[CarriedLaw, ...] = ()
     not_carried: tuple[str, ...] = ()
+    described: bool = True
 
     @property
     def metal(self) -> str:

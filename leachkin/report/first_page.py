@@ -339,7 +339,10 @@ def _band_parts(plant: HeapStage | TankStage) -> Iterator[BandPart]:
     named = ", ".join(f"{law.law} {100 * law.extraction:.1f} %" for law in others)
     drawn = bool(others and plant.band_parts)
     among = f"{1 + len(others)} laws by AICc weight" if drawn else "one law"
-    law_words = f"{among}; others not rejected: {named}" if named else "one law; no other is left"
+    alone = next((part.holds for part in plant.band_parts if part.cause == "law"), "")
+    law_words = f"one law; {alone or 'no draws were made'}"
+    if named:
+        law_words = f"{among}; others not rejected: {named}"
     yield BandPart("law", drawn, law_words + _alone(plant, "law"))
     range_words = "; ".join(ranges) or "no range was stated"
     yield BandPart("scale-up", bool(ranges), range_words + _alone(plant, "scale-up"))

@@ -266,3 +266,20 @@ def test_a_length_factor_without_an_ash_layer_is_said_to_do_nothing(tmp_path):
     path = bottles(tmp_path, longer, times=ONE_TIME, laws='["chemical"]')
     heap = run_campaign(read_campaign(path), draws=0).heap
     assert any("length_factor has no effect: chemical has no ash layer" in n for n in heap.notes)
+
+
+def test_a_law_that_does_not_describe_the_tests_is_said_to_carry_the_plant(tmp_path):
+    """Half of the metal fast, half slow: no shrinking core, whatever rules it."""
+    path = bottles(tmp_path, HEAP, laws='["film", "chemical"]')
+    E = 0.85 * (1.0 - 0.5 * np.exp(-TIME_H / 1.0) - 0.5 * np.exp(-TIME_H / 200.0))
+    rows = [f"B{i},{t:g},20,{3 * e:.5f}" for i in range(5) for t, e in zip(TIME_H, E, strict=True)]
+    (tmp_path / "readings.csv").write_text(
+        "test,time (h),aliquot (mL),Cu (g/L)\n" + "\n".join(rows)
+    )
+    result = run_campaign(read_campaign(path), draws=50)
+    assert not result.kinetics["pit/Cu"].ranking.mechanisms
+    verdict = result.heap.law_verdict
+    assert verdict.startswith("No law that can be carried to a plant describes these tests")
+    law = result.kinetics["pit/Cu"].law.name
+    assert f"rests on {law}, for want of a better one" in verdict
+    assert verdict in result.headline()

@@ -77,7 +77,7 @@ def test_each_part_of_the_band_alone_stands_on_the_first_page(copper):
         ends = [100 * end for end in (alone[cause].low, alone[cause].high)]
         assert parts[cause].text.endswith(f"; alone {ends[0]:.1f} to {ends[1]:.1f} %")
         assert parts[cause].inside
-    assert parts["law"].text == "one law; no other is left"
+    assert parts["law"].text == "one law; no other law is left"
 
 
 def test_a_law_beside_it_is_in_the_band_and_its_figure_shown(copper):
