@@ -8,6 +8,7 @@ import numpy as np
 
 from leachkin.campaign.campaign import Campaign
 from leachkin.campaign.carried_laws import carried_fits, drawn_laws, is_particle, own_draws
+from leachkin.campaign.plant_solution import in_solution
 from leachkin.campaign.printed_law import law_from_print
 from leachkin.campaign.settings import draw_setting
 from leachkin.campaign.stage_gangue import reagent_per_metal
@@ -43,7 +44,7 @@ def plant_ore(
     law_draws = _law_draws(campaign, law_stage, draws, seed)
     ranking = law_stage.ranking
     carried = carried_fits(law_stage)
-    return PlantOre(
+    ore = PlantOre(
         law_stage.key,
         law_stage.law,
         law_draws,
@@ -60,6 +61,7 @@ def plant_ore(
         else tuple(law for law in ranking.indistinguishable if not is_particle(law)),
         ranking is None or bool(ranking.mechanisms),
     )
+    return in_solution(ore, campaign.settings, stage, draws, seed)
 
 
 def _law_stage(

@@ -124,6 +124,14 @@ HEAP = TableSchema(
     ),
 )
 
+_SPECIES = (
+    ("reagent", "Strength of the reagent, where it is held"),
+    ("second", "Second reagent, as oxygen"),
+    ("oxidised", "Oxidised species, as Fe3+"),
+    ("reduced", "Reduced species, as Fe2+"),
+    ("metal", "Metal in solution, for a drive near its solubility"),
+)
+
 TANK = TableSchema(
     "tank",
     "Stirred tanks in series, each ideally mixed.",
@@ -179,6 +187,23 @@ TANK = TableSchema(
         Key("metal", "text", "Metal; left out, the first of campaign.metals"),
     ),
 )
+
+
+def solution_table(stage: str) -> TableSchema:
+    """Return the table of the solution that a plant holds, for laws with a drive of their own."""
+    where = "the reference of the law where left out"
+    return TableSchema(
+        f"{stage}.solution",
+        "The solution of the plant as the drive of the law reads it, where that is more than one "
+        "reagent to a power.",
+        (
+            *(
+                Key(name, "quantity", f"{meaning}; {where}", "g/L", at_least=0.0, ranged=True)
+                for name, meaning in _SPECIES
+            ),
+            Key("pH", "number", f"pH; {where}", ranged=True),
+        ),
+    )
 
 
 def size_tables(stage: str) -> tuple[TableSchema, ...]:

@@ -26,7 +26,7 @@ from leachkin.campaign.schema_money import (
     CEMENTATION,
     CEMENTATION_METALS,
 )
-from leachkin.campaign.schema_plant import HEAP, TANK, size_tables
+from leachkin.campaign.schema_plant import HEAP, TANK, size_tables, solution_table
 from leachkin.campaign.schema_print import RATE_LAW, RATE_LAW_ULTIMATE
 from leachkin.campaign.schema_sheets import ALL as SHEETS
 
@@ -46,8 +46,10 @@ SCHEMA = Schema(
         RATE_LAW_ULTIMATE,
         TANK,
         *size_tables("tank"),
+        solution_table("tank"),
         HEAP,
         *size_tables("heap"),
+        solution_table("heap"),
         CEMENTATION,
         CEMENTATION_METALS,
         BUDGET,

@@ -26,7 +26,8 @@ from leachkin.kinetics import (
     tests_of_need,
 )
 
-#: Leaving one test out costs a fit a test: done for so many tests and laws at most.
+#: Leaving one test out costs a fit a test: done for so many tests and laws at most, and not where
+#: a reagent is followed by its balance, whose fits take seconds.
 MOST_TESTS, MOST_LAWS = 40, 3
 #: Terms whose need is tested where nothing is said; a slow fraction is tried on request.
 USUAL_TERMS = ("lag", "soluble", "fade", "loss", "reagent order", "size exponents")
@@ -90,7 +91,7 @@ def _nested(ranking: Ranking) -> tuple[NestedTest, ...]:
 
 
 def _left_out(stage: KineticsStage, same: Mapping[str, Any]) -> tuple[LeftOut, ...]:
-    if not 3 <= len(stage.observed) <= MOST_TESTS:
+    if not 3 <= len(stage.observed) <= MOST_TESTS or same.get("balances"):
         return ()
     names = [fit.law_name for fit, _ in carried_fits(stage)]
     ranked = () if stage.ranking is None else stage.ranking.rows

@@ -24,6 +24,7 @@ RESAMPLES_BEYOND = 20
 MOST_STEPS = 20000
 #: Where none is asked for, where one cannot be had, and for laws beside the one that is used.
 INSTEAD = "profile"
+_NONE: tuple[Problem, ...] = ()
 
 
 def with_intervals(
@@ -36,7 +37,7 @@ def with_intervals(
     stage : KineticsStage
         From tests.
     asked : "linearised", "profile", "bootstrap", "posterior" or None
-        None for profile.
+        None for profile, or linearised where a reagent is followed by its balance.
     seed : int
         Of the run.
     balances : mapping of test to ReagentBalance
@@ -50,8 +51,10 @@ def with_intervals(
     """
     if stage.fit is None or not stage.fit.converged:
         return stage, ()
-    method = asked or INSTEAD
-    fit, problems = _fit_by(stage.fit, method, stage_seed(seed, f"intervals {stage.key}"))
+    method = asked or ("linearised" if balances else INSTEAD)
+    fit, problems = stage.fit, _NONE
+    if asked or not balances:  # fits by balance take seconds: as they are unless asked for
+        fit, problems = _fit_by(stage.fit, method, stage_seed(seed, f"intervals {stage.key}"))
     two_step = stage.two_step
     if two_step is not None:
         two_step = replace(two_step, whole=fit)
@@ -60,7 +63,7 @@ def with_intervals(
         fit=fit,
         two_step=two_step,
         intervals=INSTEAD if problems else method,
-        alternatives=_alternatives(stage, method),
+        alternatives=_alternatives(stage, method if asked or not balances else ""),
         notes=(*stage.notes, *_differing(fit)),
     )
     try:
@@ -88,12 +91,12 @@ def _instead(method: str, why: str) -> Problem:
 
 
 def _alternatives(stage: KineticsStage, method: str) -> tuple[FitResult, ...]:
-    """Return the other laws that the data do not reject, with intervals."""
+    """Return the other laws that the data do not reject, with intervals by a method, if any."""
     if stage.ranking is None:
         return ()
     own = method if method in ("linearised", INSTEAD) else INSTEAD
     return tuple(
-        fit_with_intervals(row.fit, own)
+        fit_with_intervals(row.fit, own) if method else row.fit
         for row in stage.ranking.rows
         if row.law in stage.ranking.indistinguishable
         and row.fit is not None

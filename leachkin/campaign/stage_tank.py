@@ -13,6 +13,7 @@ from leachkin.campaign.assumed_values import assumed_in_fit
 from leachkin.campaign.bands import band_of, quantity_of
 from leachkin.campaign.campaign import Campaign
 from leachkin.campaign.plant_sizes import plant_sizes
+from leachkin.campaign.plant_solution import holds_no_order
 from leachkin.campaign.plant_split import End, band_parts, other_laws, plant_verdict
 from leachkin.campaign.plant_words import band_contents, outside_the_data, ultimate_note
 from leachkin.campaign.printed_law import with_ultimate_knots
@@ -142,7 +143,7 @@ def _stated_train(
     settings = campaign.settings
     times = residence_times(settings)
     sizes = plant_sizes(settings, "tank") or SizeDistribution.single(ore.law.reference.size_mm)
-    with_balance = settings.get("tank.feed_reagent") is not None
+    with_balance = settings.get("tank.feed_reagent") is not None and not holds_no_order(ore.law)
     if with_balance and settings.get("tank.solids") is None:
         raise _ask(
             "tank.solids",
@@ -323,7 +324,11 @@ def _notes(train: _Train, ore: PlantOre, result: TankTrain) -> tuple[str, ...]:
             f"No [tank.sizes]: all the ore is taken at the reference size of the law, "
             f"{ore.law.reference.size_mm:.3g} mm."
         )
-    if not train.with_balance:
+    if holds_no_order(ore.law):
+        notes.append(
+            "The solution is held as [tank.solution] says in every tank: no reagent balance."
+        )
+    elif not train.with_balance:
         notes.append(
             "No feed_reagent: the strength is held at the reference of the law in every tank."
         )

@@ -22,6 +22,7 @@ from leachkin.kinetics.diagnostics import (
     kinetic_diagnostics,
 )
 from leachkin.kinetics.drive import DRIVES, Drive, DriveForm, ln_drive
+from leachkin.kinetics.drive import READS as DRIVE_READS
 from leachkin.kinetics.evidence import Evidence, EvidenceLine, gather_evidence, stirring_power
 from leachkin.kinetics.fit_curve import fit_curve, straightened_time
 from leachkin.kinetics.fit_layout import Layout, Quantity
@@ -137,6 +138,7 @@ __all__ = [
     "fit_gangue",
     "DEFAULT_LAWS",
     "DRIVES",
+    "DRIVE_READS",
     "Drive",
     "DriveForm",
     "ln_drive",

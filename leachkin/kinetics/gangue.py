@@ -127,6 +127,7 @@ class GangueFit:
     warnings: tuple[str, ...]
     estimate: Estimate
     energy_known: bool
+    bounds: tuple[Array, Array]
 
     def parameter(self, name: str) -> Parameter:
         """Return a parameter by name: fast, fast_h, slow, slow_h, activation_energy."""
@@ -151,6 +152,8 @@ class GangueFit:
             seed,
             None if freedom is None else max(freedom, 1),
         )
+        low, high = self.bounds  # what the readings do not hold would run to any power of ten
+        draws = np.clip(draws, low, high)
         return _law(draws, self.law.reference_temperature_K, self.law.activation_energy_kJ_per_mol)
 
     def table(self) -> ResultTable:
@@ -216,6 +219,7 @@ def fit_gangue(
         warnings=_warnings(arrays, found, fitted, activation_energy_kJ_per_mol),
         estimate=found,
         energy_known=fitted or activation_energy_kJ_per_mol is not None,
+        bounds=_bounds(arrays, fitted),
     )
 
 
@@ -257,13 +261,20 @@ class _Arrays:
         return residuals, np.stack(columns, axis=1) / self.sd[:, None]
 
 
+def _bounds(arrays: _Arrays, fitted: bool) -> tuple[Array, Array]:
+    """Return the bounds of the fitted quantities, from what was taken and when."""
+    top = max(float(arrays.taken.max()), 1e-6)
+    first, last = arrays.time_h[arrays.time_h > 0].min(), arrays.time_h.max()
+    low = np.log([1e-4 * top, first / 100, 1e-4 * top, first / 2])
+    high = np.log([5 * top, last / 2, 50 * top, last * 1000])
+    ends = (np.array([-50.0]), np.array([200.0])) if fitted else (np.zeros(0), np.zeros(0))
+    return np.concatenate([low, ends[0]]), np.concatenate([high, ends[1]])
+
+
 def _best(arrays: _Arrays, fitted: bool, held: float) -> Estimate:
     """Return the best estimate over a grid of starts taken from the data."""
     top = max(float(arrays.taken.max()), 1e-6)
     times = np.sort(arrays.time_h[arrays.time_h > 0])
-    low = np.log([1e-4 * top, times[0] / 100, 1e-4 * top, times[0] / 2])
-    high = np.log([5 * top, times[-1] / 2, 50 * top, times[-1] * 1000])
-    ends = [np.array([-50.0]), np.array([200.0])] if fitted else [np.zeros(0), np.zeros(0)]
     starts = [
         np.concatenate([np.log([s * top, f, (1 - s) * top * 1.2, g]), [30.0] if fitted else []])
         for s in (0.2, 0.5)
@@ -281,8 +292,7 @@ def _best(arrays: _Arrays, fitted: bool, held: float) -> Estimate:
             LeastSquaresProblem(
                 NAMES[:p],
                 start,
-                np.concatenate([low, ends[0]]),
-                np.concatenate([high, ends[1]]),
+                *_bounds(arrays, fitted),
                 evaluate,
                 SCALES[:p],
                 arrays.stated,

@@ -107,3 +107,48 @@ def test_the_reagent_by_balance_where_nobody_titrated(tmp_path):
     assert (
         by_balance.fit.parameter("tau_chemical").value != held.fit.parameter("tau_chemical").value
     )
+
+
+TANK = """
+[tank]
+residence_times = ["6 h", "6 h", "6 h"]
+temperature = "25 degC"
+"""
+
+
+def test_a_plant_says_what_its_solution_holds(tmp_path):
+    """The scarcer reagent rules: less oxygen, less gold; without a word, it is asked for."""
+    asked = run_campaign(read_campaign(write(tmp_path, 'drive = "either"\n' + TANK)), draws=0)
+    assert asked.tank is None
+    assert any("does not say reagent, second" in p.found for p in asked.problems)
+
+    def gold(oxygen: str) -> float:
+        held = f'[tank.solution]\nreagent = "0.5 g/L"\nsecond = "{oxygen}"\n'
+        path = write(tmp_path, 'drive = "either"\n' + TANK + held)
+        result = run_campaign(read_campaign(path), draws=20)
+        assert result.tank is not None, result.problems
+        assert any("held as [tank.solution] says" in note for note in result.tank.notes)
+        return result.tank.extraction.at(-1).value
+
+    poor, rich = gold("2 mg/L"), gold("16 mg/L")
+    assert rich > poor + 0.05
+    # by hand: one resistance, the pace is the drive at that solution
+    drive = Drive("either", {"reagent": 0.5, "second": 0.008}, {"preference": 2.0})
+    nodes, weights = np.polynomial.laguerre.laggauss(80)
+    pace = float(drive.rate({"second": 0.002}))
+    law = ParticleLaw(chemical=12.0)
+    # three tanks of 6 h: gamma-distributed hours, by the law of one tank convolved three times
+    hours = 6.0 * nodes
+    three = weights * nodes**2 / 2.0
+    assert poor == pytest.approx(0.9 * three @ law.conversion(pace * hours), abs=0.02)
+
+
+def test_an_order_is_kept_where_the_rest_of_the_solution_is_held(tmp_path):
+    plant = (
+        TANK.replace("temperature", 'feed_reagent = "1 g/L"\nsolids = "500 kg/m3"\ntemperature')
+        + '[tank.solution]\nsecond = "8 mg/L"\n'
+    )
+    path = write(tmp_path, 'drive = "two_reagents"\nreagent_order = "free"\n' + plant)
+    tank = run_campaign(read_campaign(path), draws=20).tank
+    assert tank is not None
+    assert tank.reagent_g_per_L is not None

@@ -91,3 +91,19 @@ def test_bad_readings_are_refused():
         fit_gangue([GangueReadings("G", HOURS[:3], HOURS[:3], 298.15)])
     with pytest.raises(InputProblems, match="do not fit together"):
         fit_gangue([GangueReadings("G", HOURS, HOURS * np.nan, 298.15)])
+
+
+def test_draws_of_what_the_readings_do_not_hold_stay_within_reach():
+    """Ore without gangue: the times of its two parts may be anything, the draws may not."""
+    generator = np.random.default_rng(0)
+    hours = np.array([1.0, 2.0, 4.0, 8.0, 24.0, 48.0])
+    readings = [
+        GangueReadings(f"t{i}", hours, 1e-3 * np.abs(generator.standard_normal(6)), 298.15)
+        for i in range(3)
+    ]
+    fit = fit_gangue(readings)
+    drawn = fit.draw(500, 1)
+    taken = drawn.taken_kg_per_t(np.array([48.0]), 298.15)
+    assert np.isfinite(taken).all()
+    top = max(float(r.taken_kg_per_t.max()) for r in readings)
+    assert float(taken.max()) < 56.0 * top
