@@ -13,11 +13,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from leachkin.kinetics.gangue import GangueLaw
+from leachkin.kinetics.grain_path import extraction_along
 from leachkin.kinetics.rate_law import RateLaw
 from leachkin.problems import argument_error
-from leachkin.testwork import AliquotPolicy, Observed, SizeDistribution
+from leachkin.testwork import AliquotPolicy, History, Observed, SizeDistribution
 
 Array = NDArray[np.float64]
+#: Steps between readings along a history.
+HISTORY_STEPS = 40
 
 
 @dataclass(frozen=True)
@@ -36,6 +39,8 @@ class Bottle:
     aliquots : str
         "replaced by reagent solution", "replaced by water", "not replaced", "returned".
     domain : str
+    history : History or None
+        Temperature and strength that change along the test; both are held without one.
     """
 
     name: str
@@ -48,6 +53,7 @@ class Bottle:
     aliquot_mL: float = 20.0
     aliquots: AliquotPolicy = "replaced by reagent solution"
     domain: str = ""
+    history: History | None = None
 
 
 @dataclass(frozen=True)
@@ -196,12 +202,37 @@ def observed_of(test: SimulatedTest, noise: Noise) -> Observed:
         sizes=bottle.sizes,
         temperature_K=bottle.temperature_K,
         reagent_g_per_L=bottle.reagent_g_per_L,
+        history=bottle.history,
     )
 
 
 def _floored(sd: Array | float) -> Array:
     """Keep a standard deviation above 0 where the noise is switched off."""
     return np.asarray(np.maximum(sd, 1e-6))
+
+
+def true_extraction(law: RateLaw, bottle: Bottle) -> Array:
+    """Return the extraction of a bottle under a law, shape (m,), along its history if it has one.
+
+    Any law: film, ash layer, chemical step, one clock, with a lag, a fade, a soluble share or a
+    second fraction; a lag or a fade needs conditions that are held.
+    """
+    conditions = (bottle.temperature_K, bottle.reagent_g_per_L)
+    history = bottle.history
+    if history is None:
+        return np.asarray(law.extraction(bottle.time_h, bottle.sizes, *conditions))
+    strength = history.reagent_g_per_L
+    if strength is None:
+        strength = np.full(history.time_h.size, bottle.reagent_g_per_L)
+    at = history.time_h
+    return extraction_along(
+        law,
+        bottle.sizes,
+        bottle.time_h,
+        lambda t: float(np.interp(t, at, history.temperature_K)),
+        lambda t: float(np.interp(t, at, strength)),
+        HISTORY_STEPS,
+    )
 
 
 def _one(
@@ -216,9 +247,7 @@ def _one(
     generator = np.random.default_rng([seed, zlib.crc32(bottle.name.encode())])
     m = bottle.time_h.size
     head = head_kg_per_t * (1.0 + noise.head * generator.standard_normal())
-    E = np.asarray(
-        law.extraction(bottle.time_h, bottle.sizes, bottle.temperature_K, bottle.reagent_g_per_L)
-    )
+    E = true_extraction(law, bottle)
     solution = head * (solution_operator(bottle) @ E)
     measured = solution * (1.0 + noise.solution * generator.standard_normal(m))
     residue = bottle.solids_g * (1.0 - noise.mass_loss)

@@ -12,6 +12,7 @@ from leachkin.kinetics import (
     RateLaw,
     Reference,
     Resistance,
+    fit_tests,
     observed_of,
     simulate_observed,
     simulate_tests,
@@ -123,3 +124,32 @@ def test_noise_has_the_stated_size_and_repeats():
 def test_two_bottles_of_one_name_are_refused():
     with pytest.raises(InputProblems, match="a name of its own"):
         simulate_tests(LAW, [BOTTLE, BOTTLE], head_kg_per_t=6.8, seed=1)
+
+
+@pytest.mark.parametrize("name", ["ash_layer+chemical", "first_order"])
+def test_a_campaign_along_histories_gives_its_law_back(name):
+    """Temperature and strength that change, any law, seeded noise: fitted along the same logs."""
+    kinds = {"ash_layer+chemical": ("ash_layer", "chemical"), "first_order": ("clock",)}[name]
+    parts = tuple(Resistance(k, np.log(30.0), 30.0, size_exponent=1.0) for k in kinds)
+    truth = RateLaw(name, parts, Reference(298.15, 10.0, 2.0), [2.0], [0.85])
+    at = np.array([0.0, 10.0, 40.0, 100.0])
+    bottles = [
+        Bottle(
+            f"{kelvin:g}",
+            SizeDistribution.single(2.0),
+            kelvin,
+            np.array([1.0, 3.0, 8.0, 20.0, 45.0, 90.0]),
+            10.0,
+            history=History(at, kelvin + np.array([0.0, 6.0, 12.0, 4.0]), 10.0 - 0.05 * at),
+        )
+        for kelvin in (288.15, 303.15)
+    ]
+    tests = simulate_observed(truth, bottles, head_kg_per_t=5.0, seed=11)
+    fit = fit_tests(tests, name, ultimate="one", reference=truth.reference)
+    ultimate = fit.parameter("ultimate")
+    assert abs(ultimate.value - 0.85) < 3.5 * ultimate.standard_error
+    for kind in kinds:
+        time = "k" if kind == "clock" else f"tau_{kind}"
+        value = 1.0 / 30.0 if kind == "clock" else 30.0
+        found = fit.parameter(time)
+        assert abs(np.log(found.value / value)) < 3.5 * found.standard_error / found.value
