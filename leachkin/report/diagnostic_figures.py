@@ -221,7 +221,7 @@ def _by_size(key: str, fit: FitResult, plot: RatePlot) -> ReportFigure:
         f"Rate constant of each test alone against its size, {key}, carried to "
         f"{celsius(at.temperature_K)} and {at.reagent_g_per_L:.3g} g/L by the fit; bars: "
         f"{100 * fit.level:g} % of that test. Law: {fit.law.name}. Between the two slopes both "
-        f"resistances count.{_left_out(plot)}"
+        f"resistances count; tests of one size stand side by side.{_left_out(plot)}"
     )
     title = f"Rate against size, {key}"
     return ReportFigure(name, "kinetics", title, caption, svg, folded=True)

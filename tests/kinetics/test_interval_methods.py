@@ -269,3 +269,20 @@ def test_the_fast_rate_of_two_fractions_has_an_interval_of_its_own():
     assert_allclose([p.low, p.high], [line.low, line.high], rtol=0.1)
     with pytest.raises(InputProblems, match="k_fast"):
         posterior.parameter("k_fas")
+
+
+@pytest.mark.parametrize("method", ["linearised", "profile", "posterior"])
+def test_an_ultimate_extraction_at_the_end_of_its_range_is_one_sided(method):
+    """A curve that ends a little above all of the metal: the best ultimate extraction is all."""
+    hours = np.array([2.0, 4.0, 8.0, 12.0, 20.0, 30.0, 40.0])
+    E = (
+        1
+        - (1 - np.minimum(hours / 20.0, 1.0)) ** 3
+        + 0.01 * np.array([1, -1, 1, -1, 1.5, 1.5, 1.5])
+    )
+    fit = fit_curve(hours, E, "chemical", errors=0.01)
+    assert fit.estimate.states[fit.names.index("ultimate")] == "at its high bound"
+    p = by(fit, method, most_steps=2000).parameter("ultimate")
+    assert p.high is None and 0.98 < p.low < 1.0
+    assert p.method.startswith("one-sided")
+    assert "end of its range" in p.why_no_interval

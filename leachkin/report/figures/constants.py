@@ -23,6 +23,8 @@ Array = NDArray[np.float64]
 
 #: An axis whose values spread further than this is logarithmic.
 LOGARITHMIC_BEYOND = 20.0
+#: Groups of points at one place stand so far apart, relative.
+BESIDE = 0.03
 
 
 @dataclass(frozen=True)
@@ -218,7 +220,8 @@ def rate_loglog(
 def _rate_points(axes: Any, points: RatePoints, chosen: Any, i: int, label: str) -> None:
     rate = points.rate[chosen]
     spread = np.array([rate - points.low[chosen], points.high[chosen] - rate])
-    shift = 1.0 + 0.012 * i  # so that tests of one size do not hide each other
+    # so that tests of one size do not hide each other
+    shift = 1.0 + BESIDE * (i - 0.5 * (len(set(points.group)) - 1))
     axes.errorbar(
         points.at[chosen] * shift,
         rate,
