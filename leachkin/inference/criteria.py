@@ -20,15 +20,17 @@ def _fit_term(sum_of_squares: float, points: int) -> float:
     return points * math.log(max(sum_of_squares, floor) / points)
 
 
-def corrected_aic(sum_of_squares: float, points: int, fitted: int) -> float:
+def corrected_aic(sum_of_squares: float, points: int, fitted: float) -> float:
     """Return AICc; infinite where there are too few points for the correction.
 
     Parameters
     ----------
     sum_of_squares : float
         Weighted sum of squares.
-    points, fitted : int
-        Residuals, and quantities fitted (the variance is added here).
+    points : int
+        Residuals.
+    fitted : float
+        Quantities fitted (the variance is added here); one that is half known beforehand is half.
 
     Examples
     --------
@@ -41,7 +43,7 @@ def corrected_aic(sum_of_squares: float, points: int, fitted: int) -> float:
     return _fit_term(sum_of_squares, points) + 2 * k + 2 * k * (k + 1) / (points - k - 1)
 
 
-def schwarz_bic(sum_of_squares: float, points: int, fitted: int) -> float:
+def schwarz_bic(sum_of_squares: float, points: int, fitted: float) -> float:
     """Return BIC; see :func:`corrected_aic` for the arguments."""
     return _fit_term(sum_of_squares, points) + (fitted + 1) * math.log(points)
 

@@ -68,6 +68,19 @@ class Residual:
     in_sd: float
 
 
+def shares_told(layout: Layout, covariance: Array) -> tuple[float, ...]:
+    """Return how far the tests tell each quantity that has a prior of its own, heads left out.
+
+    One less the variance over that of the prior: 0 where the tests tell nothing, near 1 where the
+    prior hardly counts.
+    """
+    return tuple(
+        float(np.clip(1.0 - covariance[j, j] / q.prior_sd**2, 0.0, 1.0))
+        for j, q in enumerate(layout.free)
+        if q.prior_sd is not None and q.role != "head"
+    )
+
+
 @dataclass(frozen=True)
 class FitResult:
     """A fitted rate law.
@@ -84,6 +97,8 @@ class FitResult:
     sum_of_squares : float
         Of the residuals in standard deviations; of plain residuals where no precision was given.
     aicc, bic : float
+        Of ``criterion_points`` rows and ``criterion_quantities``: what is known of a parameter
+        beforehand is no row, and a parameter counts as far as the tests tell it.
     degrees_of_freedom : int
     n_tests, n_points : int
         Tests, and measured values (head assays not counted).
@@ -127,6 +142,13 @@ class FitResult:
     estimate: Estimate
     design: FitDesign | None = None
     sampled: Posterior | None = None
+    criterion_points: int = 0
+    criterion_quantities: float = 0.0
+
+    @property
+    def informed(self) -> float:
+        """How many quantities the tests tell; one as wide as its prior counts nothing."""
+        return len(self.names) - sum(1.0 - s for s in shares_told(self.layout, self.covariance))
 
     @property
     def law_name(self) -> str:

@@ -24,7 +24,7 @@ from leachkin.kinetics.fit_layout import Layout, Quantity
 from leachkin.kinetics.fit_open import Side, open_sides
 from leachkin.kinetics.fit_options import FitOptions
 from leachkin.kinetics.fit_remarks import remarks, what_to_look_at
-from leachkin.kinetics.fit_result import FitResult, Parameter, Residual
+from leachkin.kinetics.fit_result import FitResult, Parameter, Residual, shares_told
 from leachkin.kinetics.fit_setup import layout_of
 from leachkin.kinetics.fit_start import several_minima, start_vectors
 from leachkin.kinetics.reagent_balance import ReagentBalance
@@ -160,7 +160,7 @@ def fit_with_options(observed: Sequence[Observed], options: FitOptions) -> FitRe
         assumed = (*assumed, _less_sure(estimate.widening))
         design = FitDesign.of(layout, tests, options.balances)
         estimate = least_squares(_problem(design, estimate.vector, stated))
-    asked = len(layout.free)
+    asked = len(layout.free) - _with_own_prior(layout)
     dropped = _not_needed(design, estimate)
     if dropped:
         layout = _without(layout, dropped, design, estimate)
@@ -298,6 +298,11 @@ def _within(layout: Layout, estimate: Estimate) -> Array:
     return np.array([values[q.name] for q in layout.free])
 
 
+def _with_own_prior(layout: Layout) -> int:
+    """How many quantities but heads have a prior: that row is no datum, laws differ in it."""
+    return sum(q.prior_sd is not None and q.role != "head" for q in layout.free)
+
+
 def _result(
     tests: tuple[Observed, ...],
     design: FitDesign,
@@ -308,7 +313,8 @@ def _result(
     asked: int,
 ) -> FitResult:
     layout = design.layout
-    count = design.residual_count
+    count = design.residual_count - _with_own_prior(layout)
+    counted = asked + sum(shares_told(layout, estimate.covariance))
     message = estimate.message
     if not estimate.converged:
         message = f"{message}. Look at: {what_to_look_at(tests, design, estimate)}"
@@ -324,8 +330,10 @@ def _result(
         vector=estimate.vector,
         covariance=estimate.covariance,
         sum_of_squares=estimate.sum_of_squares,
-        aicc=corrected_aic(estimate.sum_of_squares, count, asked),
-        bic=schwarz_bic(estimate.sum_of_squares, count, asked),
+        aicc=corrected_aic(estimate.sum_of_squares, count, counted),
+        bic=schwarz_bic(estimate.sum_of_squares, count, counted),
+        criterion_points=count,
+        criterion_quantities=counted,
         degrees_of_freedom=estimate.degrees_of_freedom,
         n_tests=len(tests),
         n_points=design.value.size,

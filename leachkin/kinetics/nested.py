@@ -22,7 +22,7 @@ class NestedTest:
     statistic : float
         Fall of the sum of squares (chi-square), or its mean square over the scatter (F).
     extra, degrees_of_freedom : int
-        Quantities more in the larger law, and degrees of freedom left there.
+        Quantities more in the larger law that the tests tell, and degrees of freedom left there.
     chance : float
         Chance of so large a statistic if the smaller law is true. Conservative for a resistance,
         which cannot be negative.
@@ -71,7 +71,7 @@ def nested_test(larger: FitResult, smaller: FitResult) -> NestedTest:
         raise argument_error(
             "larger", f"{larger.n_points} values", "two converged fits of the same values"
         )
-    extra = len(larger.names) - len(smaller.names)
+    extra = round(larger.informed - smaller.informed)
     names = (larger.law_name, smaller.law_name)
     freedom = larger.degrees_of_freedom
     fall = max(smaller.sum_of_squares - larger.sum_of_squares, 0.0)

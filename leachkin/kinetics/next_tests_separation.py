@@ -16,7 +16,6 @@ import numpy as np
 from numpy.typing import NDArray
 
 from leachkin.inference import akaike_weights, corrected_aic
-from leachkin.kinetics.fit_result import FitResult
 from leachkin.kinetics.next_tests_candidate import Candidate
 from leachkin.kinetics.next_tests_information import SINGULAR_FLOOR, Known
 from leachkin.kinetics.next_tests_result import Separation
@@ -158,22 +157,13 @@ def _unexplained(known: Known, its: _Readings, sd: Array) -> Array:
     return np.asarray(np.eye(new.shape[0]) - fitted @ fitted.T)
 
 
-def _counts(known: Known, own: _Readings) -> tuple[int, int]:
+def _counts(known: Known, own: _Readings) -> tuple[int, float]:
     """Return the residuals and the quantities of a fit with the candidate, as AICc counts them."""
     fit = known.fit
-    points = fit.estimate.residuals.size
     more = own.heads.shape[1]
     freed = len(known.columns) - len(fit.names)
-    return points + own.expected.size + more, quantities_asked(fit) + more + freed
-
-
-def quantities_asked(fit: FitResult) -> int:
-    """Return how many quantities AICc counted, those found not needed among them."""
-    points = fit.estimate.residuals.size
-    for fitted in range(len(fit.names), points - 2):
-        if np.isclose(corrected_aic(fit.sum_of_squares, points, fitted), fit.aicc, atol=1e-9):
-            return fitted
-    return len(fit.names)
+    quantities = fit.criterion_quantities + more + freed
+    return fit.criterion_points + own.expected.size + more, quantities
 
 
 def _lead(known: Known, other: Known, own_squares: Array, squares: Array, own: _Readings) -> Array:

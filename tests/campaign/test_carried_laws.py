@@ -283,3 +283,13 @@ def test_a_law_that_does_not_describe_the_tests_is_said_to_carry_the_plant(tmp_p
     law = result.kinetics["pit/Cu"].law.name
     assert f"rests on {law}, for want of a better one" in verdict
     assert verdict in result.headline()
+
+
+def test_what_is_assumed_of_one_law_does_not_name_the_other(tmp_path):
+    """One temperature: an energy from print tells nothing of which law it is."""
+    both = '["chemical", "ash_layer"]'
+    path = bottles(tmp_path, HEAP + ASSUMED, times=ONE_TIME, laws=both)
+    result = run_campaign(read_campaign(path), draws=50)
+    rows = result.kinetics["pit/Cu"].ranking.rows
+    assert [row.weight for row in rows] == pytest.approx([0.5, 0.5], abs=1e-6)
+    assert result.heap.other_laws

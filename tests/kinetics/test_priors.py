@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from leachkin.errors import InputProblems
-from leachkin.kinetics import ParticleLaw, fit_tests
+from leachkin.kinetics import ParticleLaw, fit_tests, nested_test, rank_tests
 from leachkin.testwork import Observed, SizeDistribution, observed_from_extraction
 
 TIME_H = np.array([1.0, 2.0, 4.0, 8.0, 16.0, 24.0])
@@ -119,3 +119,42 @@ def test_fixed_and_prior_exclude_each_other():
             fixed={"ultimate": 0.9},
             priors={"ultimate": (0.9, 0.1)},
         )
+
+
+def test_what_is_assumed_and_not_tested_does_not_move_the_ranking():
+    """A prior that the tests tell nothing of is a held value: neither a row nor a quantity."""
+    name = "activation_energy_chemical"
+    prior = fit_tests(bench(), "chemical", priors={name: (45.0, 8.0)}, ultimate="one")
+    held = fit_tests(bench(), "chemical", fixed={name: 45.0}, ultimate="one")
+    assert prior.aicc == pytest.approx(held.aicc, abs=1e-9)
+    assert prior.bic == pytest.approx(held.bic, abs=1e-9)
+    plain = rank_tests(bench(), ("chemical", "ash_layer"), ultimate="one")
+    ranked = rank_tests(
+        bench(), ("chemical", "ash_layer"), ultimate="one", priors={name: (45.0, 8.0)}
+    )
+    for law in ("chemical", "ash_layer"):
+        assert ranked.fit_of(law).aicc == pytest.approx(plain.fit_of(law).aicc, abs=1e-6)
+
+
+def test_a_prior_that_hardly_counts_leaves_a_quantity_whole():
+    tests = bench(kelvin=(288.15, 298.15, 318.15))
+    free = fit_tests(tests, "chemical", ultimate="one")
+    wide = fit_tests(
+        tests, "chemical", ultimate="one", priors={"activation_energy_chemical": (46.0, 1e4)}
+    )
+    assert wide.aicc == pytest.approx(free.aicc, abs=1e-4)
+    error = free.parameter("activation_energy_chemical").standard_error
+    half = fit_tests(
+        tests, "chemical", ultimate="one", priors={"activation_energy_chemical": (46.0, error)}
+    )
+    assert free.informed - half.informed == pytest.approx(0.5, abs=0.02)
+
+
+def test_a_further_part_that_is_known_beforehand_costs_its_time_alone():
+    names = {"activation_energy_chemical": (45.0, 8.0), "activation_energy_ash_layer": (20.0, 5.0)}
+    tests = bench()
+    larger = fit_tests(tests, "ash_layer+chemical", ultimate="one", priors=names)
+    smaller = fit_tests(
+        tests, "ash_layer", ultimate="one", priors={"activation_energy_ash_layer": (20.0, 5.0)}
+    )
+    assert nested_test(larger, smaller).extra == (0 if larger.not_needed else 1)
