@@ -168,9 +168,7 @@ def rank_tests(
 
     A prior on a resistance that a law does not have is left out there.
     """
-    return rank_by(
-        lambda law: fit_tests(observed, law, **options_of_law(law, same)), laws, within
-    )
+    return rank_by(lambda law: fit_tests(observed, law, **options_of_law(law, same)), laws, within)
 
 
 def options_of_law(law: str, same: Mapping[str, Any]) -> dict[str, Any]:
