@@ -19,7 +19,7 @@ from leachkin.kinetics.fit_grains import GrainSteps
 from leachkin.kinetics.fit_layout import SLOW, Key, Layout
 from leachkin.kinetics.ore_terms import effective_hours
 from leachkin.kinetics.other_laws import clock_conversion_and_sensitivities
-from leachkin.kinetics.particle_law import conversion_and_log_sensitivities
+from leachkin.kinetics.particle_law import conversion_and_log_sensitivities, particle_conversion
 
 Array = NDArray[np.float64]
 PARTICLE_KINDS = ("film", "ash_layer", "chemical")
@@ -99,9 +99,11 @@ class ClockPath:
         hours = self._hours(layout, full, part, wanted)
         at = hours.hours[..., el.reading_of]
         times = {kind: np.exp(ln_times(layout, el, full, part + kind)) for kind in kinds}
-        X, by_kind, by_shape = _law(layout, full, part, times, at)
-        by_hours = -sum(by_kind.values())  # dX/d ln(hours)
+        X, by_kind, by_shape = _law(layout, full, part, times, at, sloped=bool(wanted))
         slopes: dict[Key, Array] = {}
+        if not wanted:
+            return X, slopes
+        by_hours = -sum(by_kind.values())  # dX/d ln(hours)
         for kind in kinds:
             own = self._by_time(layout, full, part + kind, by_kind[kind], wanted)
             for key, slope in own.items():
@@ -190,9 +192,14 @@ def drive_at_nodes(
 
 
 def _law(
-    layout: Layout, full: Array, part: str, times: Mapping[str, Array], at: Array
+    layout: Layout,
+    full: Array,
+    part: str,
+    times: Mapping[str, Array],
+    at: Array,
+    sloped: bool,
 ) -> tuple[Array, dict[str, Array], dict[str, Array]]:
-    """X, dX/d ln(time) by kind, dX/d(shape) by name."""
+    """X, dX/d ln(time) by kind, dX/d(shape) by name; no derivatives of a particle unless asked."""
     if "clock" in times:
         name = layout.slow_law_name if part else layout.law_name
         shapes = {k: v[..., None] for k, v in layout.shapes(full, part).items()}
@@ -200,6 +207,8 @@ def _law(
         X, slope, by_shape = clock_conversion_and_sensitivities(name, theta, shapes)
         return X, {"clock": -theta * slope}, dict(by_shape)
     film, ash_layer, chemical = (times.get(kind, np.zeros(())) for kind in PARTICLE_KINDS)
+    if not sloped:
+        return particle_conversion(film, ash_layer, chemical, at), {}, {}
     X, *slopes = conversion_and_log_sensitivities(film, ash_layer, chemical, at)
     by_kind = dict(zip(PARTICLE_KINDS, slopes, strict=True))
     return X, {kind: by_kind[kind] for kind in times}, {}
