@@ -30,7 +30,15 @@ from leachkin.kinetics import (
 #: a reagent is followed by its balance, whose fits take seconds.
 MOST_TESTS, MOST_LAWS = 40, 3
 #: Terms whose need is tested where nothing is said; a slow fraction is tried on request.
-USUAL_TERMS = ("lag", "soluble", "fade", "loss", "reagent order", "size exponents")
+USUAL_TERMS = (
+    "lag",
+    "soluble",
+    "fade",
+    "loss",
+    "reagent order",
+    "size exponents",
+    "ultimate by test",
+)
 
 
 def with_evidence(

@@ -101,7 +101,10 @@ def _flatten(observed: Observed, layout: Layout) -> dict[str, Array]:
         deviate, share = spread_classes(layout.size_family)
         size = np.repeat(size, deviate.size)
     c = size.size
-    if layout.knot_temperature_K is None:
+    if layout.knot_tests:
+        own = layout.knot_tests.index(observed.test) if observed.test in layout.knot_tests else None
+        weights = np.tile(_of_test(len(layout.knot_tests), own), (c, 1))
+    elif layout.knot_temperature_K is None:
         weights = knot_weights(size, layout.knot_size_mm)
     else:
         at = np.full(c, observed.temperature_K)
@@ -120,6 +123,11 @@ def _flatten(observed: Observed, layout: Layout) -> dict[str, Array]:
         "share": np.tile(share, m),
         "weights": np.tile(weights, (m, 1)),
     }
+
+
+def _of_test(count: int, own: int | None) -> Array:
+    """Return the weights of ultimates by test; of a test that has none their mean."""
+    return np.full(count, 1.0 / count) if own is None else np.eye(count)[own]
 
 
 def spread_classes(family: str) -> tuple[Array, Array]:

@@ -92,6 +92,7 @@ class Layout:
     drive_form: DriveForm = field(default_factory=DriveForm)
     drive_reference: Mapping[str, float] = field(default_factory=dict)
     knot_temperature_K: Array | None = None
+    knot_tests: tuple[str, ...] = ()
     size_family: str = "log_normal"
 
     @cached_property
@@ -156,7 +157,7 @@ class Layout:
         return found
 
     def ultimates(self, full: Array) -> Array:
-        """Return the ultimate extraction at the knots, shape B + (knots,)."""
+        """Return the ultimate extraction at the knots (sizes, temperatures or tests), B + (k,)."""
         return np.stack([self.natural(full, i) for i in self.positions("ultimate")], axis=-1)
 
     def drive_parameters(self, full: Array) -> dict[str, Array]:
@@ -202,7 +203,7 @@ class Layout:
             resistances=tuple(self._resistance(full, kind) for kind in self.kinds),
             reference=self.reference,
             ultimate_size_mm=self.knot_size_mm,
-            ultimate=self.ultimates(full),
+            ultimate=self._law_ultimates(full),
             shape_parameters=self.shapes(full),
             box=self.box,
             lag_h=self._term(full, "lag", "lag"),
@@ -218,6 +219,11 @@ class Layout:
         """Return the heads [kg/t] by test, each of shape B."""
         full = self.expand(np.asarray(vector, dtype=np.float64))
         return {self.quantities[i].which: self.natural(full, i) for i in self.positions("head")}
+
+    def _law_ultimates(self, full: Array) -> Array:
+        """Of ultimates by test a law has the mean: no size and no temperature explains them."""
+        found = self.ultimates(full)
+        return found.mean(axis=-1, keepdims=True) if self.knot_tests else found
 
     def _slow(self, full: Array, drive: Drive | None) -> RateLaw | None:
         if not self.slow_kinds:

@@ -37,7 +37,7 @@ class FitOptions:
     free: Collection[str] = ()
     fixed: Mapping[str, float] = field(default_factory=dict)
     priors: Mapping[str, tuple[float, float]] = field(default_factory=dict)
-    ultimate: float | Literal["by size", "by temperature", "one"] = "by size"
+    ultimate: float | Literal["by size", "by temperature", "by test", "one"] = "by size"
     reference: Reference | None = None
     size_exponents: Literal["theory", "free"] = "theory"
     reagent_order: float | Literal["free"] | Mapping[str, float | str] = 1.0

@@ -66,6 +66,7 @@ def layout_of(options: FitOptions, tests: Sequence[Observed]) -> tuple[Layout, t
     remarks: list[str] = []
     reference = options.reference or reference_of(spread)
     knots, kelvin = _knots(options, spread)
+    by_test = options.ultimate == "by test" and options.law not in NO_ULTIMATE
     bare = Layout(
         law_name=options.law,
         kinds=kinds,
@@ -75,6 +76,7 @@ def layout_of(options: FitOptions, tests: Sequence[Observed]) -> tuple[Layout, t
         box=box_of(tests, spread, reference),
         drive_form=options.drive,
         knot_temperature_K=kelvin,
+        knot_tests=tuple(o.test for o in tests) if by_test else (),
         size_family=options.size_family,
     )
     bare = replace(bare, drive_reference=drive_reference_of(options.drive, tests, bare))
@@ -244,10 +246,9 @@ def _ultimates(options: FitOptions, tests: Sequence[Observed], layout: Layout) -
             )
         held = Quantity("ultimate", "ultimate", "0", "linear", float(asked), 0.0, 1.0, free=False)
         return [held]
-    if asked not in ("by size", "by temperature", "one"):
-        raise argument_error(
-            "ultimate", repr(asked), "'by size', 'by temperature', 'one', or a number up to 1"
-        )
+    if asked not in ("by size", "by temperature", "by test", "one"):
+        allowed = "'by size', 'by temperature', 'by test', 'one', or a number up to 1"
+        raise argument_error("ultimate", repr(asked), allowed)
     starts = rough_ultimates(tests, [_test_weights(o, layout) for o in tests])
     return [
         quantity(name, "ultimate", str(i), "logit", float(starts[i]), ULTIMATE_BOUNDS)
@@ -256,6 +257,8 @@ def _ultimates(options: FitOptions, tests: Sequence[Observed], layout: Layout) -
 
 
 def _ultimate_names(layout: Layout) -> list[str]:
+    if layout.knot_tests:
+        return [f"ultimate_{test}" for test in layout.knot_tests]
     if layout.knot_temperature_K is not None:
         return [f"ultimate_{kelvin:.4g}_K" for kelvin in layout.knot_temperature_K.tolist()]
     sizes = layout.knot_size_mm.tolist()
@@ -264,6 +267,8 @@ def _ultimate_names(layout: Layout) -> list[str]:
 
 def _test_weights(observed: Observed, layout: Layout) -> Array:
     knots = layout.knot_size_mm
+    if layout.knot_tests:
+        return np.asarray(np.eye(len(layout.knot_tests))[layout.knot_tests.index(observed.test)])
     if layout.knot_temperature_K is not None:
         return linear_weights(np.asarray(observed.temperature_K), layout.knot_temperature_K)
     if observed.sizes is None:

@@ -47,7 +47,7 @@ def fit_tests(
     fixed: Mapping[str, float] | None = None,
     *,
     priors: Mapping[str, tuple[float, float]] | None = None,
-    ultimate: float | Literal["by size", "by temperature", "one"] = "by size",
+    ultimate: float | Literal["by size", "by temperature", "by test", "one"] = "by size",
     reference: Reference | None = None,
     size_exponents: Literal["theory", "free"] = "theory",
     reagent_order: float | Literal["free"] | Mapping[str, float | str] = 1.0,
@@ -78,9 +78,9 @@ def fit_tests(
     priors : mapping of str to (value, standard deviation), optional
         What is known of parameters beforehand (from print, from sequential assays), each a row of
         the likelihood of its own: where the tests tell nothing the interval is that of the prior.
-    ultimate : "by size", "by temperature", "one" or float
-        Ultimate extraction: one for each test size (linear in ln d between) or temperature, one
-        for all, or held.
+    ultimate : "by size", "by temperature", "by test", "one" or float
+        Ultimate extraction: one for each test size (linear in ln d between), temperature or test
+        (the law then has their mean), one for all, or held.
     reference : Reference, optional
         State the times refer to; the middle of the tests where left out.
     size_exponents : "theory" or "free"

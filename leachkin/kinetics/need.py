@@ -26,6 +26,7 @@ TERM_OPTIONS: dict[str, dict[str, Any]] = {
     "slow fraction": {"slow_law": "chemical"},
     "reagent order": {"reagent_order": "free"},
     "size exponents": {"size_exponents": "free"},
+    "ultimate by test": {"ultimate": "by test"},
 }
 MEANING = {
     "lag": "nothing dissolves at first: wetting, or a film to break",
@@ -35,6 +36,7 @@ MEANING = {
     "slow fraction": "a second, slower mineral or size",
     "reagent order": "the order in the reagent is not the one held",
     "size exponents": "the sizes do not scale by theory",
+    "ultimate by test": "charges differ in what can be leached, beyond their size",
 }
 #: Parameters that belong to a term.
 _OWN = {
@@ -161,7 +163,8 @@ def _tested(
     if len(fit.names) <= len(base.names):
         return TermTest(term, None, note="the tests do not vary what it needs")
     found = nested_test(fit, base)
-    names = _OWN.get(term) or tuple(n for n in fit.names if n.startswith("size_exponent"))
+    stem = "ultimate" if term == "ultimate by test" else "size_exponent"
+    names = _OWN.get(term) or tuple(n for n in fit.names if n.startswith(stem))
     parameters = tuple(p for p in fit.parameters if p.name in names)
     gain = base.aicc - fit.aicc
     return TermTest(term, found, found.chance < NEEDED_CHANCE, gain, parameters, fit)

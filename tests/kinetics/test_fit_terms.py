@@ -38,6 +38,7 @@ CASES = {
     "slow first order": {"slow_law": "first_order"},
     "by temperature": {"ultimate": "by temperature"},
     "spread": {"spread": "free"},
+    "by test": {"ultimate": "by test"},
 }
 
 
@@ -237,6 +238,25 @@ def test_ultimate_by_temperature_comes_back():
     fit = fit_tests(tests, "chemical", ultimate="by temperature")
     near(fit, "ultimate_288.1_K", 0.7)
     near(fit, "ultimate_313.1_K", 0.85)
+
+
+def test_an_ultimate_for_each_test_where_the_charges_ask_for_it():
+    from leachkin.kinetics import tests_of_need as needs_of
+
+    truths = {"a": 0.70, "b": 0.80, "c": 0.90}
+    tests = [
+        observed(name, law(ultimate=[u]).extraction(TIME_H, ORE)) for name, u in truths.items()
+    ]
+    same = {"ultimate": "one", "reference": Reference(size_mm=1.0)}
+    fit = fit_tests(tests, "chemical", **{**same, "ultimate": "by test"})
+    for name, truth in truths.items():
+        near(fit, f"ultimate_{name}", truth)
+    near(fit, "tau_chemical", 12.0)
+    mean = np.mean([fit.parameter(f"ultimate_{name}").value for name in truths])
+    assert float(fit.law.ultimate[0]) == pytest.approx(mean)
+    assert needs_of(tests, "chemical", ["ultimate by test"], **same)[0].needed
+    alike = [observed(name, law().extraction(TIME_H, ORE)) for name in truths]
+    assert not needs_of(alike, "chemical", ["ultimate by test"], **same)[0].needed
 
 
 def test_a_spread_comes_back_where_only_p80_is_known():

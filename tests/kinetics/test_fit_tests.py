@@ -327,7 +327,7 @@ def test_names_and_values_are_checked():
         fit_tests([], "chemical")
     with pytest.raises(InputProblems, match="value with a value that is not a number"):
         fit_tests([replace(tests[0], value=tests[0].value * np.nan)], "chemical")
-    with pytest.raises(InputProblems, match="'by size', 'by temperature', 'one'"):
+    with pytest.raises(InputProblems, match="'by size', 'by temperature', 'by test', 'one'"):
         fit_tests(tests, "chemical", ultimate="each")
 
 
