@@ -52,6 +52,8 @@ _HOME_OF = {
     "tests_of_need": "leachkin.kinetics",
     "profile_intervals": "leachkin.kinetics",
     "bootstrap_tests": "leachkin.kinetics",
+    "fit_with_intervals": "leachkin.kinetics",
+    "posterior_tests": "leachkin.kinetics",
     "batch_leach": "leachkin.scaleup",
     "tank_train": "leachkin.scaleup",
     "heap": "leachkin.scaleup",
