@@ -43,6 +43,7 @@ from leachkin.chemistry.liquors import (
     acid_pH,
     ferric_limit_g_per_L,
     free_cyanide,
+    sulphuric_species,
 )
 from leachkin.chemistry.mass_balances import Balanced, solve_mass_balances
 from leachkin.chemistry.potentials import (
@@ -168,6 +169,7 @@ __all__ = [
     "stoichiometric_use",
     "stoichiometric_uses",
     "stoichiometry_table",
+    "sulphuric_species",
     "suspended_dust",
     "temperature_coefficient_from_entropies",
     "transfer_ratio",

@@ -134,6 +134,36 @@ def acid_pH(
     return speciate(totals, None, temperature_K, other_ions_mol_per_L=other)
 
 
+def sulphuric_species(
+    acid_mol_per_L: ArrayLike, other_sulphate_mol_per_L: ArrayLike, ln_K: ArrayLike
+) -> tuple[Array, Array, Array]:
+    """Return H+, HSO4- and SO4 2- of a sulphuric liquor in closed form [mol/L].
+
+    Parameters
+    ----------
+    acid_mol_per_L, other_sulphate_mol_per_L : array_like, shape B
+        Free acid, and the sulphate of the metals.
+    ln_K : array_like, shape B
+        Logarithm of ``[H+][SO4 2-]/[HSO4-]`` on concentrations.
+
+    Returns
+    -------
+    tuple of ndarray, each shape B
+
+    Examples
+    --------
+    >>> H, HSO4, SO4 = sulphuric_species(0.05, 0.0, np.log(0.01))
+    >>> round(float(H * SO4 / HSO4), 12)
+    0.01
+    """
+    acid = np.asarray(acid_mol_per_L, dtype=np.float64)
+    other = np.asarray(other_sulphate_mol_per_L, dtype=np.float64)
+    half = 0.5 * (3.0 * acid + other + np.exp(ln_K))
+    product = 2.0 * acid * (acid + other)
+    bisulphate = product / (half + np.sqrt(np.maximum(half * half - product, 0.0)))
+    return 2.0 * acid - bisulphate, np.asarray(bisulphate), acid + other - bisulphate
+
+
 def ferric_limit_g_per_L(
     pH: ArrayLike,
     sulphate_mol_per_L: ArrayLike = 0.0,

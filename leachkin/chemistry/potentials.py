@@ -228,6 +228,7 @@ def potential_by_source(couple: str, source: str | None = None) -> Potential:
     return by_source[source]
 
 
+@cache
 def known_couples() -> tuple[str, ...]:
     """Return every couple for which a potential is held, tabulated ones first."""
     names = dict.fromkeys(row.text("couple") for row in read_table("electrode_potentials").rows)
@@ -237,6 +238,7 @@ def known_couples() -> tuple[str, ...]:
     return tuple(names)
 
 
+@cache
 def canonical_couple(couple: str) -> str:
     """Return a couple as the tables write it: ``"Cu+2 / Cu"`` becomes ``"Cu2+/Cu"``.
 
