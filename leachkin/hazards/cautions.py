@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
-from leachkin.hazards import gas_rules, site_rules
+from leachkin.hazards import gas_rules, reagent_rules, site_rules
 from leachkin.hazards.caution import Caution
 from leachkin.hazards.facts import Facts
 
@@ -17,6 +17,9 @@ RULES: tuple[Callable[[Facts], Caution | None], ...] = (
     site_rules.strong_acid,
     gas_rules.carbon_dioxide,
     gas_rules.hydrogen_sulphide,
+    reagent_rules.ammonia,
+    reagent_rules.sulphur_dioxide,
+    reagent_rules.chlorine,
     site_rules.zinc_dust,
     site_rules.mercury,
     site_rules.open_water,

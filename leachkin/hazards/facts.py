@@ -42,6 +42,13 @@ class Facts:
         Fraction of the ore that is sulphide sulphur, and CaCO3.
     bottle_solids_g : float or None
         Ore in a closed bottle, where acid bottles are rolled.
+    reagents : frozenset of str
+        Other reagents in use, by formula or name as the table of gas reagents has them.
+    solution_pH : float or None
+        Lowest pH of the solutions that these reagents meet.
+    ammonia_g_per_L : float or None
+        All ammonia of the solution, as NH3.
+    chloride_g_per_L : float or None
     lift_m, solution_m3_per_h : float or None
     below_detection : frozenset of str
         Fields whose figure is a detection limit, the reading being below it.
@@ -66,18 +73,24 @@ class Facts:
     sulphide_share: float | None = None
     carbonate_share: float | None = None
     bottle_solids_g: float | None = None
+    reagents: frozenset[str] = frozenset()
+    solution_pH: float | None = None
+    ammonia_g_per_L: float | None = None
+    chloride_g_per_L: float | None = None
     lift_m: float | None = None
     solution_m3_per_h: float | None = None
     below_detection: frozenset[str] = frozenset()
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "below_detection", frozenset(self.below_detection))
+        object.__setattr__(self, "reagents", frozenset(self.reagents))
         names = [item.name for item in fields(self)]
         for name in self.below_detection:
             if name not in names:
                 raise InputProblems([unknown_name("fact", name, names, column="below_detection")])
-        if self.pH is not None:
-            check_pH(self.pH)
+        for acidity in (self.pH, self.solution_pH):
+            if acidity is not None:
+                check_pH(acidity)
         check_temperature(self.temperature_K)
         for name in names:
             _check_number(name, getattr(self, name))
@@ -122,6 +135,7 @@ def facts_with_cementation(facts: Facts, demand: CementationDemand) -> Facts:
         "arsenic_mg_per_L": _median(solution.arsenic_mg_per_L),
         "antimony_mg_per_L": _median(solution.antimony_mg_per_L),
         "solution_m3_per_h": _median(solution.flow_m3_per_h),
+        "solution_pH": _median(solution.pH),
         "acid": facts.acid or demand.medium == "acid",
         "cyanide": facts.cyanide or demand.medium == "cyanide",
     }

@@ -104,8 +104,8 @@ def carbon_dioxide(facts: Facts) -> Caution | None:
         litres,
         "L a bottle",
         text,
-        "",
-        "molar_masses",
+        limits_of("CO2")[0],
+        ", ".join(("molar_masses", *limits_of("CO2")[1])),
         "laboratory rules on closed vessels",
     )
 

@@ -57,7 +57,9 @@ def mercury(facts: Facts) -> Caution | None:
         "not measured": "mercury in ore and solution not measured: it follows gold and silver",
         "below limit": "mercury below its detection limit: it gathers in the precipitate",
     }[state]
-    return Caution("mercury", state, number, unit, text, "", _PRACTICE, "national exposure limits")
+    limit, sources = limits_of("Hg")
+    keys = ", ".join((_PRACTICE, *sources))
+    return Caution("mercury", state, number, unit, text, limit, keys, "national exposure limits")
 
 
 def open_water(facts: Facts) -> Caution | None:

@@ -3,6 +3,7 @@
 import dataclasses
 import itertools
 
+import chemicals
 import pytest
 from numpy.testing import assert_allclose
 
@@ -12,12 +13,15 @@ from leachkin.hazards import (
     GENERAL_CAUTION,
     RULES,
     Facts,
+    ammonia_share,
     carbon_dioxide_L,
     cautions,
     cautions_table,
     facts_with_cementation,
+    gas_reagents,
     limit_value,
     limits_of,
+    sulphur_dioxide_share,
 )
 from leachkin.tables import sources
 
@@ -71,6 +75,19 @@ STATES = [
     ("containment", Facts(heap=True, solution_m3_per_h=797.0), "present"),
     ("containment", Facts(heap=True), "not measured"),
     ("zinc dust", Facts(cyanide=True, precipitant="zinc"), "present"),
+    ("ammonia", Facts(reagents={"NH3"}, solution_pH=10.0), "present"),
+    ("ammonia", Facts(reagents={"(NH4)2SO4"}), "not measured"),
+    ("ammonia", Facts(ammonia_g_per_L=0.01, below_detection={"ammonia_g_per_L"}), "below limit"),
+    ("sulphur dioxide", Facts(acid=True, reagents={"Na2S2O5"}, solution_pH=2.0), "present"),
+    ("sulphur dioxide", Facts(reagents={"SO2"}), "not measured"),
+    ("sulphur dioxide", Facts(cyanide=True, reagents={"SO2"}, solution_pH=9.0), "below limit"),
+    ("chlorine", Facts(acid=True, reagents={"NaClO"}), "present"),
+    ("chlorine", Facts(acid=True, reagents={"MnO2"}, chloride_g_per_L=2.0), "present"),
+    ("chlorine", Facts(acid=True, reagents={"NaClO3", "HCl"}), "present"),
+    ("chlorine", Facts(acid=True, reagents={"NaClO3"}), "not measured"),
+    ("chlorine", Facts(cyanide=True, reagents={"NaClO"}), "not measured"),
+    ("chlorine", Facts(acid=True, reagents={"KMnO4"}, chloride_g_per_L=0.0), "below limit"),
+    ("chlorine", Facts(cyanide=True, reagents={"Ca(ClO)2"}, solution_pH=11.0), "below limit"),
 ]  # fmt: skip
 
 
@@ -116,6 +133,42 @@ def test_carbon_dioxide_of_a_bottle():
     assert_allclose(by_name(COPPER)["carbon dioxide in a closed bottle"].number, 1.1, atol=0.05)
 
 
+def test_limits_that_an_independent_library_prints():
+    """``chemicals`` carries the limits of Ontario."""
+    numbers = {"NH3": "7664-41-7", "SO2": "7446-09-5", "Cl2": "7782-50-5", "CO2": "124-38-9"}
+    for substance, registry in numbers.items():
+        value, unit = chemicals.TWA(registry)
+        assert unit == "ppm"
+        assert limit_value(substance, "Ontario TWA") == value
+    mercury_ppm, _ = chemicals.TWA("7439-97-6")
+    assert_allclose(limit_value("Hg", "Ontario TWA") / 200.59 * 24.465, mercury_ppm, rtol=1e-3)
+
+
+def test_shares_of_gas_turn_at_their_pKa():
+    assert_allclose(ammonia_share(9.25), 0.5, rtol=1e-12)
+    assert_allclose(sulphur_dioxide_share(1.85), 0.5, rtol=1e-12)
+    assert ammonia_share(11.0) > ammonia_share(8.0)
+    assert sulphur_dioxide_share(1.0) > sulphur_dioxide_share(4.0)
+    assert (
+        "85 % of the ammonia is NH3 at pH 10"
+        in by_name(Facts(reagents={"NH3"}, solution_pH=10.0))["ammonia"].text
+    )
+
+
+def test_reagents_are_known_by_formula_and_by_name():
+    found = gas_reagents(["sodium metabisulphite", "NACLO3", "H2SO4", "scrap iron"])
+    assert found == {"Na2S2O5", "NaClO3"}
+
+
+def test_hypochlorite_and_cyanide_carry_a_word_of_their_own():
+    text = by_name(Facts(cyanide=True, reagents={"NaClO"}, solution_pH=11.0))["chlorine"].text
+    assert "cyanogen chloride" in text
+
+
+def test_oxidants_without_acid_raise_no_chlorine():
+    assert "chlorine" not in by_name(Facts(cyanide=True, reagents={"KMnO4"}, solution_pH=10.5))
+
+
 def test_limits_in_print():
     assert limit_value("HCN", "NIOSH REL STEL") == 4.7
     assert limit_value("AsH3", "OSHA PEL TWA") == 0.05
@@ -143,6 +196,8 @@ def all_facts():
                 sulphide_share=None if value is None else value / 10,
                 carbonate_share=None if value is None else value / 10,
                 bottle_solids_g=500.0, lift_m=value, solution_m3_per_h=value,
+                reagents={"NH3", "SO2", "NaClO", "MnO2"}, chloride_g_per_L=value,
+                solution_pH=None if value is None else value + 6,
             )  # fmt: skip
 
 
