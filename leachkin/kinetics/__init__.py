@@ -91,7 +91,9 @@ from leachkin.kinetics.simulate import (
     simulate_observed,
     simulate_tests,
     solution_operator,
+    true_extraction,
 )
+from leachkin.kinetics.simulate_sheets import simulated_sheets, write_simulated
 from leachkin.kinetics.straightened import StraightenedTest, straightened
 from leachkin.kinetics.time_factors import TimeFactor, time_factors, total_time
 
@@ -181,6 +183,9 @@ __all__ = [
     "observed_of",
     "simulate_observed",
     "simulate_tests",
+    "simulated_sheets",
+    "true_extraction",
+    "write_simulated",
     "solution_operator",
     "CLOCK_LAWS",
     "LAW_NAMES",

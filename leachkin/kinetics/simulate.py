@@ -13,47 +13,15 @@ import numpy as np
 from numpy.typing import NDArray
 
 from leachkin.kinetics.gangue import GangueLaw
-from leachkin.kinetics.grain_path import extraction_along
 from leachkin.kinetics.rate_law import RateLaw
+from leachkin.kinetics.simulate_course import true_extraction
+from leachkin.kinetics.simulate_design import Bottle, course_of, solution_operator
 from leachkin.problems import argument_error
-from leachkin.testwork import AliquotPolicy, History, Observed, SizeDistribution
+from leachkin.testwork import History, Observed
 
 Array = NDArray[np.float64]
-#: Steps between readings along a history.
-HISTORY_STEPS = 40
-
-
-@dataclass(frozen=True)
-class Bottle:
-    """The design of one bottle roll.
-
-    Attributes
-    ----------
-    name : str
-    sizes : SizeDistribution
-    temperature_K : float
-    time_h : ndarray, shape (m,)
-    reagent_g_per_L : float
-        Start and set-point: reagent is added as the ore takes it, so that it holds.
-    solids_g, solution_mL, aliquot_mL : float
-    aliquots : str
-        "replaced by reagent solution", "replaced by water", "not replaced", "returned".
-    domain : str
-    history : History or None
-        Temperature and strength that change along the test; both are held without one.
-    """
-
-    name: str
-    sizes: SizeDistribution
-    temperature_K: float
-    time_h: Array
-    reagent_g_per_L: float
-    solids_g: float = 500.0
-    solution_mL: float = 1000.0
-    aliquot_mL: float = 20.0
-    aliquots: AliquotPolicy = "replaced by reagent solution"
-    domain: str = ""
-    history: History | None = None
+__all__ = ["Bottle", "Noise", "SimulatedTest", "observed_of", "simulate_observed"]
+__all__ += ["simulate_tests", "solution_operator", "true_extraction"]
 
 
 @dataclass(frozen=True)
@@ -82,7 +50,7 @@ class SimulatedTest:
         Metal assays.
     free_reagent_g_per_L, reagent_added_g : ndarray, shape (m,)
         Titration at each reading, and what was added since the one before to hold the set-point,
-        on top of what came with the make-up.
+        on top of what came with the make-up; nothing where the strength follows a history.
     tail_kg_per_t, residue_g : float
     head_assay_kg_per_t, head_true_kg_per_t : float
     extraction_true : ndarray, shape (m,)
@@ -90,6 +58,8 @@ class SimulatedTest:
         By metal and gangue, the truth.
     gangue_taken_kg_per_t : ndarray, shape (m,)
         By gangue, as the titrations and the metal assays give it.
+    history : History or None
+        Conditions along the test; None where they are held.
     """
 
     bottle: Bottle
@@ -103,26 +73,7 @@ class SimulatedTest:
     extraction_true: Array
     reagent_taken_kg_per_t: Array
     gangue_taken_kg_per_t: Array = field(default_factory=lambda: np.zeros(0))
-
-
-def solution_operator(bottle: Bottle) -> Array:
-    """Return the matrix (m, m) from extraction to solution grade for a head of 1 kg/t [g/L].
-
-    ``C_i V_i = solids E_i - sum over earlier aliquots of C_j v``; a returned aliquot takes nothing,
-    one that is not replaced shrinks V.
-    """
-    m = bottle.time_h.size
-    matrix = np.zeros((m, m))
-    volume, taken = bottle.solution_mL, np.zeros(m)
-    for i in range(m):
-        row = -taken
-        row[i] += bottle.solids_g
-        matrix[i] = row / volume
-        if bottle.aliquots != "returned":
-            taken = taken + bottle.aliquot_mL * matrix[i]
-        if bottle.aliquots == "not replaced":
-            volume -= bottle.aliquot_mL
-    return matrix
+    history: History | None = None
 
 
 def simulate_tests(
@@ -140,8 +91,10 @@ def simulate_tests(
     Parameters
     ----------
     law : RateLaw
-        The truth; reagent is held at its set-point.
+        The truth: any law, as ``true_extraction`` follows it.
     bottles : sequence of Bottle
+        Strength is held at its set-point, or follows the history of the bottle; then what the ore
+        takes is what that history says, and gangue and metal have no part in it.
     head_kg_per_t : float
         Head assay; the true head of each charge scatters about it.
     seed : int
@@ -202,37 +155,14 @@ def observed_of(test: SimulatedTest, noise: Noise) -> Observed:
         sizes=bottle.sizes,
         temperature_K=bottle.temperature_K,
         reagent_g_per_L=bottle.reagent_g_per_L,
-        history=bottle.history,
+        stirring_rpm=bottle.stirring_rpm,
+        history=test.history,
     )
 
 
 def _floored(sd: Array | float) -> Array:
     """Keep a standard deviation above 0 where the noise is switched off."""
     return np.asarray(np.maximum(sd, 1e-6))
-
-
-def true_extraction(law: RateLaw, bottle: Bottle) -> Array:
-    """Return the extraction of a bottle under a law, shape (m,), along its history if it has one.
-
-    Any law: film, ash layer, chemical step, one clock, with a lag, a fade, a soluble share or a
-    second fraction; a lag or a fade needs conditions that are held.
-    """
-    conditions = (bottle.temperature_K, bottle.reagent_g_per_L)
-    history = bottle.history
-    if history is None:
-        return np.asarray(law.extraction(bottle.time_h, bottle.sizes, *conditions))
-    strength = history.reagent_g_per_L
-    if strength is None:
-        strength = np.full(history.time_h.size, bottle.reagent_g_per_L)
-    at = history.time_h
-    return extraction_along(
-        law,
-        bottle.sizes,
-        bottle.time_h,
-        lambda t: float(np.interp(t, at, history.temperature_K)),
-        lambda t: float(np.interp(t, at, strength)),
-        HISTORY_STEPS,
-    )
 
 
 def _one(
@@ -252,16 +182,17 @@ def _one(
     measured = solution * (1.0 + noise.solution * generator.standard_normal(m))
     residue = bottle.solids_g * (1.0 - noise.mass_loss)
     tail = head * bottle.solids_g * (1.0 - E[-1]) / residue
-    taken_by_gangue = (
-        np.zeros(m)
-        if gangue is None
-        else gangue.taken_kg_per_t(bottle.time_h, bottle.temperature_K)
-    )
-    taken = per_metal_kg_per_kg * head * E + taken_by_gangue
+    course = course_of(bottle)
+    by_metal = per_metal_kg_per_kg * head * E
     tail_measured = tail * (1.0 + noise.tail * generator.standard_normal())
     residue_measured = residue * (1.0 + noise.residue * generator.standard_normal())
     errors = noise.titration * generator.standard_normal(m)
-    free, added, found = _held_strength(bottle, taken, errors)
+    if bottle.strength_is_held:
+        taken = by_metal + _taken_by_gangue(gangue, bottle)
+        free, added, found = _held_strength(bottle, taken, errors)
+    else:
+        free, taken, found = _followed_strength(bottle, course, errors)
+        added = np.zeros(m)
     return SimulatedTest(
         bottle=bottle,
         solution_g_per_L=measured,
@@ -273,8 +204,15 @@ def _one(
         head_true_kg_per_t=float(head),
         extraction_true=E,
         reagent_taken_kg_per_t=taken,
-        gangue_taken_kg_per_t=found - per_metal_kg_per_kg * head * E,
+        gangue_taken_kg_per_t=found - by_metal,
+        history=course,
     )
+
+
+def _taken_by_gangue(gangue: GangueLaw | None, bottle: Bottle) -> Array:
+    if gangue is None:
+        return np.zeros(bottle.time_h.size)
+    return gangue.taken_kg_per_t(bottle.time_h, bottle.temperature_K)
 
 
 def _held_strength(bottle: Bottle, taken: Array, errors: Array) -> tuple[Array, Array, Array]:
@@ -282,15 +220,37 @@ def _held_strength(bottle: Bottle, taken: Array, errors: Array) -> tuple[Array, 
 
     The strength is held by what is added as the ore takes it; the titration may be off.
     """
-    set_point, litres = bottle.reagent_g_per_L, 0.001 * bottle.solution_mL
+    set_point = bottle.reagent_g_per_L
+    watered = bottle.aliquots == "replaced by water"
+    free = set_point * (1.0 + errors)
+    added = np.diff(taken, prepend=0.0) * bottle.solids_g / 1000.0
+    added[1:] += 0.001 * bottle.aliquot_mL * set_point * watered
+    return free, added, _taken_by_balance(bottle, free, np.cumsum(added), set_point)
+
+
+def _followed_strength(
+    bottle: Bottle, course: History | None, errors: Array
+) -> tuple[Array, Array, Array]:
+    """Return titrated strength, and the cumulative take, true and by the titrations [kg/t]."""
+    if course is None or course.reagent_g_per_L is None:
+        raise argument_error("bottle", "no history of the strength", "a history with one")
+    true = np.interp(bottle.time_h, course.time_h, course.reagent_g_per_L)
+    free, start = true * (1.0 + errors), float(course.reagent_g_per_L[0])
+    none = np.zeros(true.size)
+    return (
+        free,
+        _taken_by_balance(bottle, true, none, start),
+        _taken_by_balance(bottle, free, none, start),
+    )
+
+
+def _taken_by_balance(bottle: Bottle, free: Array, added_g: Array, start: float) -> Array:
+    """Return what start, make-up and additions brought less what is left and was drawn [kg/t]."""
+    litres = 0.001 * bottle.solution_mL
     drawn = 0.0 if bottle.aliquots == "returned" else 0.001 * bottle.aliquot_mL
     shrinks, watered = bottle.aliquots == "not replaced", bottle.aliquots == "replaced by water"
-    earlier = np.arange(taken.size)
+    earlier = np.arange(free.size)
     volume = litres - drawn * earlier * shrinks
-    per_t = 1000.0 / bottle.solids_g
-    free = set_point * (1.0 + errors)
-    added = np.diff(taken, prepend=0.0) / per_t
-    added[1:] += watered * drawn * set_point
-    came = set_point * (litres + drawn * earlier * (not (shrinks or watered))) + np.cumsum(added)
+    came = start * (litres + drawn * earlier * (not (shrinks or watered))) + added_g
     left = free * volume + drawn * np.concatenate([[0.0], np.cumsum(free)[:-1]])
-    return free, added, np.asarray((came - left) * per_t)
+    return np.asarray((came - left) * 1000.0 / bottle.solids_g)
