@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 from leachkin.errors import InputProblems
@@ -14,7 +14,8 @@ from leachkin.problems import unknown_name
 from leachkin.result_table import Column, ResultTable
 from leachkin.testwork import Observed
 
-#: A term is needed where chance gives its gain less often than this, as a part of a law is.
+#: A term is needed where chance gives its gain less often than this, whatever term it is: each
+#: chance counts as many times as terms were tried (Bonferroni).
 NEEDED_CHANCE = 0.01
 
 #: What each term changes in the fit, and what stands for it where the data ask for it.
@@ -96,8 +97,8 @@ def tests_of_need(
     Returns
     -------
     tuple of TermTest
-        In the order asked for. Needed where chance gives the gain less than once in 100; the test
-        is conservative for a term that cannot be negative.
+        In the order asked for. Needed where chance gives such a gain less than once in 100 among
+        all terms tried; the test is conservative for a term that cannot be negative.
 
     Raises
     ------
@@ -109,7 +110,9 @@ def tests_of_need(
         if term not in TERM_OPTIONS:
             raise InputProblems([unknown_name("term", term, TERM_OPTIONS, column="terms")])
     base = fit_tests(observed, law, **same)
-    return tuple(_tested(observed, law, term, base, same) for term in asked)
+    found = [_tested(observed, law, term, base, same) for term in asked]
+    judged = sum(one.test is not None for one in found)
+    return tuple(replace(one, needed=_needed(one, judged)) for one in found)
 
 
 def need_table(tests: Sequence[TermTest]) -> ResultTable:
@@ -167,7 +170,12 @@ def _tested(
     names = _OWN.get(term) or tuple(n for n in fit.names if n.startswith(stem))
     parameters = tuple(p for p in fit.parameters if p.name in names)
     gain = base.aicc - fit.aicc
-    return TermTest(term, found, found.chance < NEEDED_CHANCE, gain, parameters, fit)
+    return TermTest(term, found, False, gain, parameters, fit)
+
+
+def _needed(one: TermTest, judged: int) -> bool:
+    """Return whether chance gives the best of so many terms such a gain less than once in 100."""
+    return one.test is not None and one.test.chance * judged < NEEDED_CHANCE
 
 
 def _wider(term: str, same: Mapping[str, Any]) -> dict[str, Any] | None:
