@@ -34,9 +34,10 @@ def _gangue(settings: Settings) -> GangueLaw | None:
 
 
 def _balance(test: Test, per_metal_kg_per_kg: float, gangue: GangueLaw | None) -> ReagentBalance:
-    replaced = test.aliquots in ("replaced by reagent solution", "replaced by water")
+    policy = test.aliquots or ""
+    replaced = policy.startswith(("replaced", "made up"))
     share = np.nan_to_num(test.aliquot_mL) / test.solution_mL if replaced else None
-    fresh = test.reagent_g_per_L if test.aliquots == "replaced by reagent solution" else 0.0
+    fresh = test.reagent_g_per_L if policy.endswith("reagent solution") else 0.0
     return ReagentBalance(
         start_g_per_L=float(test.reagent_g_per_L or 0.0),
         solids_kg_per_m3=1000.0 * test.solids_g / test.solution_mL,

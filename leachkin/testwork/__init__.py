@@ -27,6 +27,7 @@ from leachkin.testwork.records import (
     Observed,
     Product,
     Test,
+    VesselLog,
 )
 from leachkin.testwork.result_tables import balance_table, extraction_table, test_inventory
 from leachkin.testwork.settings import BalanceLimits, TestworkSettings, read_precision
@@ -51,6 +52,7 @@ __all__ = [
     "SizeDistribution",
     "Test",
     "TestworkSettings",
+    "VesselLog",
     "balance_table",
     "domain_heads",
     "explain_balance",

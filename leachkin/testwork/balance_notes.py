@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+from typing import get_args
+
 import numpy as np
 
 from leachkin.problems import Problem
-from leachkin.testwork.records import MetalBalance, Test
+from leachkin.testwork.records import AliquotPolicy, MetalBalance, Test
 from leachkin.testwork.recursion import assays_for_balance, solution_ledger
 from leachkin.testwork.settings import BalanceLimits
 
@@ -25,6 +27,8 @@ def balance_notes(
     return [
         *_no_tail(test, balance),
         *_no_head(test, balance),
+        *_carbon(test, balance),
+        *_gravity(test, balance),
         *_over_extraction(test, balance, chosen),
         *_closure(test, balance, chosen),
         *_residue_mass(test, balance, mass_is_known),
@@ -48,7 +52,7 @@ def policy_note(test: Test, replaced: MetalBalance, unreplaced: MetalBalance) ->
         f"{replaced.analyte} extraction is {_percent(one)} if they were and {_percent(other)} if "
         f"not, {100.0 * abs(one - other):.1f} points apart; the first is taken meanwhile"
     )
-    allowed = "replaced by reagent solution / replaced by water / not replaced / returned"
+    allowed = " / ".join(get_args(AliquotPolicy))
     return [
         _note(
             test, "tests", "aliquots", found, allowed, "write one of these in the column aliquots"
@@ -118,6 +122,37 @@ def _no_head(test: Test, balance: MetalBalance) -> list[Problem]:
     ]
 
 
+def _carbon(test: Test, balance: MetalBalance) -> list[Problem]:
+    """Say what readings mean where carbon takes the metal out of the solution."""
+    if not test.has_carbon(balance.analyte):
+        return []
+    if balance.final_dissolved_g is None:
+        found = (
+            f"carbon is in the vessel and not assayed in test {test.name}: no {balance.analyte} "
+            "extraction before it is"
+        )
+        try_this = "add the carbon to the close-out sheet with its mass and assay"
+        return [_note(test, "closeout", "", found, "a carbon with mass and assay", try_this)]
+    found = (
+        f"carbon took {balance.analyte} out of the solution in test {test.name}: its readings give "
+        "no extraction by time, the close-out does"
+    )
+    return [_note(test, "readings", balance.analyte, found)]
+
+
+def _gravity(test: Test, balance: MetalBalance) -> list[Problem]:
+    """Say what the extractions are of where a gravity concentrate was taken out first."""
+    if not balance.before_leach_g:
+        return []
+    found = (
+        f"{balance.before_leach_g:.4g} g of {balance.analyte} in a gravity concentrate before the "
+        f"leach of test {test.name}: extractions are of what the leach was fed"
+    )
+    if balance.final_with_gravity is not None:
+        found += f"; with the concentrate {_percent(balance.final_with_gravity)} of the head"
+    return [_note(test, "closeout", "", found)]
+
+
 def _over_extraction(test: Test, balance: MetalBalance, limits: BalanceLimits) -> list[Problem]:
     extraction = balance.extraction_on_assay_head
     high = np.flatnonzero(np.nan_to_num(extraction) > limits.over_extraction)
@@ -168,7 +203,7 @@ def _closure(test: Test, balance: MetalBalance, limits: BalanceLimits) -> list[P
 
 
 def _residue_mass(test: Test, balance: MetalBalance, mass_is_known: bool) -> list[Problem]:
-    solids = [p for p in test.products if not p.is_dissolved_metal and p.amount is not None]
+    solids = [p for p in test.products if p.is_undissolved_metal and p.amount is not None]
     mass = sum(p.amount or 0.0 for p in solids)
     if mass > test.solids_g * (1.0 + 2.0 * test.residue_mass_sd_relative):
         found = f"test {test.name} has {mass:g} g of residue from a charge of {test.solids_g:g} g"
@@ -189,6 +224,8 @@ def _residue_mass(test: Test, balance: MetalBalance, mass_is_known: bool) -> lis
 def _fall(test: Test, balance: MetalBalance) -> list[Problem]:
     """Say how much of a falling concentration is dilution by make-up."""
     if balance.analyte not in test.solution or balance.time_h.size < 2:
+        return []
+    if test.has_carbon(balance.analyte):
         return []
     used = assays_for_balance(test, balance.analyte)
     peak, last = int(np.argmax(used.value)), used.value.size - 1

@@ -154,9 +154,12 @@ def _products(
     both = (mass is not None or bool(solid[0])) and (volume is not None or bool(solution[0]))
     made = []
     if mass is not None or solid[0]:
-        made.append(Product(f"{name} solids" if both else name, False, mass, *solid))
+        written = _replicates(rows, columns.solid, reader)
+        made.append(Product(f"{name} solids" if both else name, False, mass, *solid, *written))
     if volume is not None or solution[0]:
-        made.append(Product(f"{name} solution" if both else name, True, volume, *solution))
+        written = _replicates(rows, columns.solution, reader)
+        named = f"{name} solution" if both else name
+        made.append(Product(named, True, volume, *solution, *written))
     for product in made:
         if product.amount is None:
             reader.problems.append(_no_amount(reader, rows[0], product))
@@ -191,6 +194,20 @@ def _grades(
             grades[analyte] = (limit, float(settings.sd(kind, limit, analyte)), len(known))
             bounds[analyte] = int(bound[known[0]])
     return grades, bounds
+
+
+def _replicates(
+    rows: list[int], columns: Mapping[str, tuple[Array, Array]], reader: CellReader
+) -> tuple[dict[str, tuple[float, ...]], dict[str, tuple[int, ...]]]:
+    """Every assay that is a value, and its row, by analyte."""
+    values: dict[str, tuple[float, ...]] = {}
+    numbers: dict[str, tuple[int, ...]] = {}
+    for analyte, (read, bound) in columns.items():
+        plain = [i for i in rows if not np.isnan(read[i]) and bound[i] == 0]
+        if plain:
+            values[analyte] = tuple(float(read[i]) for i in plain)
+            numbers[analyte] = tuple(reader.sheet.rows[i].number for i in plain)
+    return values, numbers
 
 
 def _no_amount(reader: CellReader, i: int, product: Product) -> Problem:

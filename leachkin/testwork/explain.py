@@ -96,7 +96,7 @@ def _terms(concentrations: np.ndarray, volumes: np.ndarray) -> str:
 
 def _filtrate(test: Test, analyte: str, balance: MetalBalance) -> list[str]:
     if not leached_metal(test, analyte).by_filtrate:
-        carbon = [p for p in test.products if p.is_dissolved_metal and not p.is_solution]
+        carbon = [p for p in test.products if p.is_carbon]
         if not any(analyte in p.grade for p in carbon):
             return []
     parts = [

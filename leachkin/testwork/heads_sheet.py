@@ -14,6 +14,7 @@ from leachkin.testwork.cells import CellReader
 from leachkin.testwork.columns import FORMULA, Family, Field, of_family, resolve_columns
 from leachkin.testwork.names import TEST_NAMES, fold_name
 from leachkin.testwork.records import Array, Head
+from leachkin.testwork.screen_assay import read_screens
 from leachkin.testwork.settings import TestworkSettings
 
 FIELDS = (
@@ -22,6 +23,8 @@ FIELDS = (
     Field("lower", "size lower (mm)", ("mm",), ("lower size",)),
     Field("upper", "size upper (mm)", ("mm",), ("upper size", "top size")),
     Field("replicate", "replicate"),
+    Field("screen", "screen fraction", names=("fraction", "metallics fraction", "screen")),
+    Field("screened", "fraction mass (g)", ("g",), ("mass of fraction", "screened mass")),
 )
 _PART_OF = (
     r"(?:(?:acid|cyanide|CN|water|weak-acid|strong-acid)-soluble|total|residual|sulphide|sulfide"
@@ -110,20 +113,27 @@ def read_heads_sheet(
     -------
     Heads
         Replicates averaged. The standard deviation of a mean comes from its replicates where
-        there are two or more that differ, and from the precision otherwise.
+        there are two or more that differ, and from the precision otherwise. Rows with a screen
+        fraction are one screen assay: the coarse part whole, the fine part by its replicates, each
+        with its mass.
     """
     uses = resolve_columns(sheet, FIELDS, FAMILIES, problems, settings, "heads")
     reader = CellReader(sheet, uses, problems, settings.answers)
     analytes = of_family(uses, "assay")
     values = {name: found for name in analytes if (found := reader.assays(f"assay:{name}"))}
     groups = _grouped_rows(reader)
+    screens = read_screens(reader)
     reader.finish()
     _unknown_domains(reader, domains)
     made = []
     for (domain, test, size), rows in groups.items():
         heads = {}
         for name, (assays, bounds) in values.items():
-            head = _head(name, assays[rows], bounds[rows], settings)
+            numbers = tuple(sheet.rows[i].number for i in rows)
+            if screens.has_any(rows):
+                head = screens.head(rows, numbers, (name, assays, bounds), settings, problems)
+            else:
+                head = _head(name, assays[rows], bounds[rows], numbers, settings)
             if head is not None:
                 heads[name] = head
         made.append(HeadRows(domain, test, size, heads))
@@ -145,10 +155,15 @@ def _grouped_rows(
 
 
 def _head(
-    name: str, assays: Array, bounds: NDArray[np.int64], settings: TestworkSettings
+    name: str,
+    assays: Array,
+    bounds: NDArray[np.int64],
+    rows: tuple[int, ...],
+    settings: TestworkSettings,
 ) -> Head | None:
     """Mean of the replicates with the standard deviation of the mean, None without a value."""
-    values = assays[(bounds == 0) & ~np.isnan(assays)]
+    kept = np.flatnonzero((bounds == 0) & ~np.isnan(assays))
+    values = assays[kept]
     if not values.size or values.mean() <= 0.0:
         return None
     mean = float(values.mean())
@@ -156,7 +171,16 @@ def _head(
     if values.size > 1 and values.std(ddof=1) > 0.0:
         sd = float(values.std(ddof=1)) / np.sqrt(values.size)
     scatter = settings.precision_of("head", name)[1] * mean
-    return Head(mean, float(sd), int(values.size), scatter)
+    stated = settings.sd("head", values, name)
+    return Head(
+        mean,
+        float(sd),
+        int(values.size),
+        scatter,
+        tuple(values.tolist()),
+        tuple(stated.tolist()),
+        tuple(rows[i] for i in kept),
+    )
 
 
 def _unknown_domains(reader: CellReader, domains: Sequence[str]) -> None:

@@ -54,7 +54,11 @@ def merged(first: Readings, second: Readings, test: str, problems: list[Problem]
         makeup_mL=join(first.makeup_mL, second.makeup_mL, "make-up"),
         pH=join(first.pH, second.pH, "pH"),
         temperature_K=join(first.temperature_K, second.temperature_K, "temperature"),
-        assays=_joined_assays(first, second, places, time_h.size, told),
+        assays=_joined_assays(first.assays, second.assays, places, time_h.size, told),
+        solids_assays=_joined_assays(
+            first.solids_assays, second.solids_assays, places, time_h.size, told
+        ),
+        vessel=join_all(first.vessel, second.vessel),
         free_g_per_L=join_all(first.free_g_per_L, second.free_g_per_L),
         added_g=join_all(first.added_g, second.added_g),
         makeup_metal_g_per_L=join_all(first.makeup_metal_g_per_L, second.makeup_metal_g_per_L),
@@ -101,11 +105,15 @@ def _joined(
 
 
 def _joined_assays(
-    first: Readings, second: Readings, places: Places, count: int, told: list[str]
+    first: Mapping[str, Assays],
+    second: Mapping[str, Assays],
+    places: Places,
+    count: int,
+    told: list[str],
 ) -> dict[str, Assays]:
     found = {}
-    for name in dict.fromkeys([*first.assays, *second.assays]):
-        one, other = first.assays.get(name), second.assays.get(name)
+    for name in dict.fromkeys([*first, *second]):
+        one, other = first.get(name), second.get(name)
         value = _joined(
             None if one is None else one.value,
             None if other is None else other.value,

@@ -25,6 +25,12 @@ _OTHER_POLICY_NAMES: dict[str, AliquotPolicy] = {
     "fresh solution": "replaced by reagent solution",
     "water": "replaced by water",
     "replaced with water": "replaced by water",
+    "made up to volume with reagent solution": "made up with reagent solution",
+    "made up to volume with water": "made up with water",
+    "made up to mass with reagent solution": "made up with reagent solution",
+    "made up to mass with water": "made up with water",
+    "made up to the mark with reagent solution": "made up with reagent solution",
+    "made up to the mark with water": "made up with water",
     "none": "not replaced",
     "no": "not replaced",
 }
@@ -55,11 +61,11 @@ def is_test_heading(heading: str) -> bool:
 
 def find_policy(text: str) -> AliquotPolicy | None:
     """Return the aliquot policy that a text names, None if it names none."""
-    folded = " ".join(text.casefold().replace("_", " ").split()).replace(" with ", " by ")
-    for policy in POLICIES:
-        if folded == policy:
+    folded = " ".join(text.casefold().replace("_", " ").split()).replace(" by ", " with ")
+    for written, policy in (*zip(POLICIES, POLICIES, strict=True), *_OTHER_POLICY_NAMES.items()):
+        if folded == written.replace(" by ", " with "):
             return policy
-    return _OTHER_POLICY_NAMES.get(folded)
+    return None
 
 
 class TestNames:

@@ -8,9 +8,20 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from leachkin.problems import argument_error
-from leachkin.testwork.balance import metal_balance, undissolved_metal
+from leachkin.testwork.balance import (
+    leached_metal,
+    metal_balance,
+    metal_before_leach,
+    undissolved_metal,
+)
 from leachkin.testwork.records import Array, History, Observed, Test
-from leachkin.testwork.recursion import balance_matrix, brought_mg, solution_ledger
+from leachkin.testwork.recursion import (
+    balance_matrix,
+    brought_mg,
+    leach_matrix,
+    solids_left_g,
+    solution_ledger,
+)
 from leachkin.testwork.sizes import SizeDistribution
 
 #: The expected values of one test are a matrix of readings by readings.
@@ -32,8 +43,11 @@ def observe(test: Test, analyte: str, exclude: Iterable[float | str] = ()) -> Ob
     Returns
     -------
     Observed
-        Solution assays in order of time, then the tail. An excluded or missing assay has no row;
-        its aliquot is still part of the arithmetic, which needs no measured concentration.
+        Solution assays in order of time, solids sampled as slurry, then the tail. An excluded or
+        missing assay has no row; its aliquot is still part of the arithmetic, which needs no
+        measured concentration. With carbon in the vessel the solution assays say nothing of the
+        extraction: the metal in solution and on carbon at close-out stands for them, in kg per
+        tonne of charge. The head is that of what was leached: less a gravity concentrate.
 
     Raises
     ------
@@ -56,7 +70,8 @@ def observe(test: Test, analyte: str, exclude: Iterable[float | str] = ()) -> Ob
         )
     head, head_sd = _head(test, analyte)
     out = _excluded(test, exclude)
-    rows = [*_solution_rows(test, analyte, out), *_tail_rows(test, analyte, out)]
+    rows = [*_solution_rows(test, analyte, out), *_sampled_rows(test, analyte, out)]
+    rows += _tail_rows(test, analyte, out)
     operator = np.array([row.operator for row in rows]).reshape(len(rows), test.time_h.size)
     return Observed(
         test=test.name,
@@ -174,18 +189,21 @@ class _Row:
 
 
 def _head(test: Test, analyte: str) -> tuple[float, float]:
-    head = test.heads.get(analyte)
-    if head is not None:
-        return head.value_kg_per_t, head.charge_sd_kg_per_t
+    head, before = test.heads.get(analyte), metal_before_leach(test, analyte)
+    gravity = 1000.0 / test.solids_g * np.array([before.value_g, before.sd_g] if before else [0, 0])
+    if head is not None and head.value_kg_per_t > gravity[0]:
+        left = head.value_kg_per_t - float(gravity[0])
+        return left, float(np.hypot(head.charge_sd_kg_per_t, gravity[1]))
     calculated = metal_balance(test, analyte).head_calculated_kg_per_t
-    if calculated is None or calculated <= 0.0:
+    if calculated is None or calculated <= gravity[0]:
         raise argument_error(
             "heads",
             f"test {test.name} has neither a {analyte} head assay nor a calculated head",
             "a head assay, or a residue with mass and assay",
             f"add {analyte} to the heads sheet for domain {test.domain!r}",
         )
-    return calculated, calculated
+    left = calculated - float(gravity[0])
+    return left, left
 
 
 def _excluded(test: Test, exclude: Iterable[float | str]) -> set[float | str]:
@@ -219,13 +237,15 @@ def solution_operator(test: Test, analyte: str) -> tuple[Array, Array]:
     """
     ledger = solution_ledger(test)
     matrix = balance_matrix(ledger)
-    leached = test.solids_g * np.eye(test.time_h.size)
+    leached = test.solids_g * leach_matrix(ledger)
     columns = np.column_stack([leached, brought_mg(test, analyte, ledger)[:-1]])
     solved: Array = np.linalg.solve(matrix, columns).astype(np.float64)
     return solved[:, :-1], solved[:, -1]
 
 
 def _solution_rows(test: Test, analyte: str, out: set[float | str]) -> list[_Row]:
+    if test.has_carbon(analyte):
+        return _close_out_rows(test, analyte, out)
     assays = test.solution[analyte]
     operator, brought = solution_operator(test, analyte)
     kept = ~np.isnan(assays.value)
@@ -247,18 +267,49 @@ def _solution_rows(test: Test, analyte: str, out: set[float | str]) -> list[_Row
     return rows
 
 
+def _close_out_rows(test: Test, analyte: str, out: set[float | str]) -> list[_Row]:
+    """What solution and carbon hold at close-out, in kg per tonne of charge."""
+    final = leached_metal(test, analyte).final
+    last = float(test.time_h[-1])
+    if final is None or "all" in out or any(t == last for t in out):
+        return []
+    operator = np.zeros(test.time_h.size)
+    operator[-1] = 1.0
+    per_t = 1000.0 / test.solids_g
+    return [_Row(operator, per_t * final.value_g, per_t * final.sd_g, 0, "solution", last)]
+
+
+def _sampled_rows(test: Test, analyte: str, out: set[float | str]) -> list[_Row]:
+    """The solids that left with slurry samples: what of the head was left in them by then."""
+    assays = test.vessel.solids_assays.get(analyte)
+    if assays is None or "all" in out:
+        return []
+    per_mass = test.solids_g / solids_left_g(test)
+    rows = []
+    for i in np.flatnonzero(~np.isnan(assays.value)):
+        if any(_is_near(test.time_h[i : i + 1], t)[0] for t in out if not isinstance(t, str)):
+            continue
+        operator = np.zeros(test.time_h.size)
+        operator[i] = -per_mass
+        numbers = float(assays.value[i]), float(assays.sd[i]), int(assays.bound[i])
+        row = _Row(operator, *numbers, "tail", float(test.time_h[i]))
+        row.offset, row.file_row = per_mass, assays.rows[i] if assays.rows else 0
+        rows.append(row)
+    return rows
+
+
 def _tail_rows(test: Test, analyte: str, out: set[float | str]) -> list[_Row]:
     """The tail: what of the head is left, over the mass that is left, at the last reading."""
     solids = undissolved_metal(test, analyte)
     if solids is None or out & {"tail", "all"}:
         return []
-    per_residue = test.solids_g / solids.mass_g
+    per_residue = test.solids_g / solids.whole_mass_g
     operator = np.zeros(test.time_h.size)
     operator[-1] = -per_residue
-    products = [p for p in test.products if not p.is_dissolved_metal and analyte in p.grade]
+    products = [p for p in test.products if p.is_undissolved_metal and analyte in p.grade]
     bound = products[0].bound.get(analyte, 0) if len(products) == 1 else 0
     value = products[0].grade[analyte][0] if bound else solids.grade_kg_per_t
-    sd = 1000.0 * solids.metal.sd_g / solids.mass_g
+    sd = solids.grade_sd_kg_per_t
     row = _Row(operator, value, sd, bound, "tail", float(test.time_h[-1]))
     row.offset = per_residue
     return [row]

@@ -16,12 +16,21 @@ from leachkin.testwork.merge_readings import merged
 from leachkin.testwork.names import EXAMPLE, POLICIES, TestNames, fold_name, is_test_heading
 from leachkin.testwork.readings_sheet import Readings, read_readings_sheet
 from leachkin.testwork.reagent_use import history_of
-from leachkin.testwork.records import Array, Exclusion, Head, History, Product, Test
-from leachkin.testwork.recursion import solution_ledger
+from leachkin.testwork.records import (
+    Array,
+    Exclusion,
+    Head,
+    History,
+    Product,
+    Test,
+    VesselLog,
+)
+from leachkin.testwork.recursion import is_drained, solution_ledger
 from leachkin.testwork.settings import TestworkSettings
 from leachkin.testwork.sieves_sheet import SieveTable, read_sieves_sheet
 from leachkin.testwork.suspicious import suspicions
 from leachkin.testwork.tests_sheet import ROOM_TEMPERATURE_K, TestRow, read_tests_sheet
+from leachkin.testwork.vessel_log import vessel_volumes
 from leachkin.testwork.written_sizes import sizes_of_row
 
 SHEETS = ("tests", "readings", "heads", "closeout", "sieves")
@@ -231,9 +240,14 @@ def _test(row: TestRow, parts: _Parts, settings: TestworkSettings, problems: lis
         sizes_by_analyte=table.by_analyte if table is not None else {},
         exclusions=tuple(e for e in settings.exclusions if e.test == row.name),
         files=files,
+        vessel=VesselLog(carbon_g=row.weighed.carbon_g),
+        start_g_per_L=row.start_g_per_L,
+        set_point_g_per_L=row.set_point_g_per_L,
+        planned_h=row.planned_h,
+        started=row.start,
     )
     if readings is not None:
-        test = _with_readings(test, readings, settings, problems)
+        test = _with_readings(test, row, readings, settings, problems)
     _policy_problem(test, row, problems)
     return test
 
@@ -273,15 +287,22 @@ def _rows_of(
 
 
 def _with_readings(
-    test: Test, readings: Readings, settings: TestworkSettings, problems: list[Problem]
+    test: Test,
+    row: TestRow,
+    readings: Readings,
+    settings: TestworkSettings,
+    problems: list[Problem],
 ) -> Test:
     count = readings.time_h.size
+    vessel = vessel_volumes(
+        test.name, test.solids_g, test.solution_mL, row.weighed, readings, problems
+    )
     reagent = settings.reagent or _only(readings.free_g_per_L) or _only(readings.added_g)
     test = replace(
         test,
         time_h=readings.time_h,
-        aliquot_mL=_aliquots(test, readings, problems),
-        makeup_mL=np.full(count, np.nan) if readings.makeup_mL is None else readings.makeup_mL,
+        aliquot_mL=_aliquots(test, vessel.aliquot_mL, readings, problems),
+        makeup_mL=vessel.makeup_mL,
         solution=readings.assays,
         pH=readings.pH,
         reagent=reagent,
@@ -290,14 +311,15 @@ def _with_readings(
         added_g=readings.added_g,
         makeup_metal_g_per_L=readings.makeup_metal_g_per_L,
         logged=readings.logged,
+        vessel=vessel.log,
+        free_g_per_L=readings.free_g_per_L,
     )
     test = _start_strength(test, problems)
-    ledger = solution_ledger(test)
-    if count and (ledger.volume_mL - ledger.removed_mL).min() <= 0.0:
-        i = int(np.argmin(ledger.volume_mL - ledger.removed_mL))
-        problems.append(_drained(test, readings, i))
+    if is_drained(solution_ledger(test)):
+        problems.append(_drained(test, readings))
         nothing = np.zeros(count)
-        return replace(test, aliquot_mL=nothing, makeup_mL=nothing)
+        log = VesselLog(carbon_g=test.vessel.carbon_g)
+        return replace(test, aliquot_mL=nothing, makeup_mL=nothing, vessel=log)
     return replace(test, history=history_of(test, readings.temperature_K))
 
 
@@ -305,9 +327,7 @@ def _only(columns: Mapping[str, Array]) -> str | None:
     return next(iter(columns)) if len(columns) == 1 else None
 
 
-def _aliquots(test: Test, readings: Readings, problems: list[Problem]) -> Array:
-    count = readings.time_h.size
-    written = np.full(count, np.nan) if readings.aliquot_mL is None else readings.aliquot_mL
+def _aliquots(test: Test, written: Array, readings: Readings, problems: list[Problem]) -> Array:
     if np.isnan(written).any() and test.aliquots != "returned":
         i = int(np.flatnonzero(np.isnan(written))[0])
         problems.append(
@@ -345,15 +365,22 @@ def _start_strength(test: Test, problems: list[Problem]) -> Test:
     return test
 
 
-def _drained(test: Test, readings: Readings, i: int) -> Problem:
+def _drained(test: Test, readings: Readings) -> Problem:
     ledger = solution_ledger(test)
+    left = ledger.volume_mL - ledger.removed_mL
+    empty = np.flatnonzero(left + ledger.makeup_mL <= 0.0)
+    i = int(empty[0] if empty.size else np.argmin(left))
+    found = f"{ledger.removed_mL[i]:g} mL are taken out of the {ledger.volume_mL[i]:g} mL there are"
+    if ledger.share.min() <= 0.0:
+        i = int(np.argmin(ledger.share)) - 1
+        found = "the samples of slurry hold more solids than the charge"
     return Problem(
         test.files["readings"],
         readings.rows[i],
-        "aliquot (mL)",
+        "aliquot (mL)" if ledger.share.min() > 0.0 else "sampled solids (g)",
         "stop",
-        f"{ledger.removed_mL[i]:g} mL are taken out of the {ledger.volume_mL[i]:g} mL there are",
-        "less than what is in the vessel",
+        found,
+        "less than what is in the vessel, or all of it where as much is put in",
         "look at the units of the aliquot and of the solution",
     )
 

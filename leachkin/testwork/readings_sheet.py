@@ -27,6 +27,29 @@ FIELDS = (
         "aliquot", "aliquot (mL)", ("mL",), ("sample volume", "aliquot volume", "sample", "aliq")
     ),
     Field("makeup", "make-up (mL)", ("mL",), ("makeup volume", "replaced", "topup", "top up")),
+    Field("returned", "returned (mL)", ("mL",), ("aliquot returned", "sample returned")),
+    Field(
+        "decanted",
+        "decanted (mL)",
+        ("mL",),
+        ("drained", "poured off", "solution change", "drawn off"),
+    ),
+    Field("volume", "volume (mL)", ("mL",), ("solution volume", "volume before sample")),
+    Field("bottle", "bottle mass (g)", ("g",), ("gross mass", "bottle weight", "gross weight")),
+    Field(
+        "bottle after",
+        "bottle mass after (g)",
+        ("g",),
+        ("gross mass after", "bottle mass after make-up", "bottle weight after"),
+    ),
+    Field("evaporated", "evaporated (mL)", ("mL",), ("evaporation", "water lost")),
+    Field("slurry", "slurry sample (g)", ("g",), ("slurry mass", "pulp sample")),
+    Field(
+        "solids taken",
+        "sampled solids (g)",
+        ("g",),
+        ("solids in sample", "dry solids in sample", "solids taken"),
+    ),
     Field("pH", "pH", ("",)),
     Field("temperature", "temperature (degC)", ("K",), ("temp", "t")),
     Field("Eh", "Eh (mV)", (SHE_MV,), ("ORP", "redox", "redox potential", "potential")),
@@ -35,12 +58,24 @@ FIELDS = (
 FAMILIES = (
     Family("free", "free {} (g/L)", rf"free {FORMULA}", ("g/L",), ("H2SO4", "NaCN")),
     Family("added", "{} added (g)", rf"{FORMULA} added", ("g",), ("H2SO4", "NaCN", "CaO")),
+    Family(
+        "in solids",
+        "{} in sampled solids (%)",
+        rf"{ANALYTE} in (?:sampled )?solids",
+        ("kg/t",),
+        ("Cu", "Au"),
+    ),
     Family("made up", "{} in make-up (g/L)", rf"{ANALYTE} in make-?up", ("g/L",), ("Cu", "Au")),
     Family("assay", "{} (g/L)", ASSAYED, ("g/L",), ("Cu", "Fe", "Zn", "Ni", "Co", "Au", "Ag")),
 )
 
 
 _LARGEST_EH_MV = 2000.0  #: beyond it water does not stand
+#: Columns about the vessel, kept as they were written.
+VESSEL_COLUMNS = (
+    "returned", "decanted", "volume", "bottle", "bottle after", "evaporated", "slurry",
+    "solids taken",
+)  # fmt: skip
 _LOGGED = {"Eh": "Eh_mV_SHE", "DO": "DO_mg_per_L"}
 
 
@@ -60,6 +95,8 @@ class Readings:
     rows: tuple[int, ...]
     logged: Mapping[str, Array] = field(default_factory=dict)
     file: str = ""
+    vessel: Mapping[str, Array] = field(default_factory=dict)
+    solids_assays: Mapping[str, Assays] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
@@ -68,6 +105,7 @@ class _Columns:
 
     numbers: Mapping[str, Array]
     assays: Mapping[str, tuple[Array, Array, NDArray[np.int64]]] = field(default_factory=dict)
+    in_solids: Mapping[str, tuple[Array, Array, NDArray[np.int64]]] = field(default_factory=dict)
 
 
 def read_readings_sheet(
@@ -114,18 +152,19 @@ def read_readings_sheet(
 
 def _columns(reader: CellReader, settings: TestworkSettings) -> _Columns:
     numbers: dict[str, Array] = {}
-    assays: dict[str, tuple[Array, Array, NDArray[np.int64]]] = {}
+    assays: dict[str, dict[str, tuple[Array, Array, NDArray[np.int64]]]] = {}
+    kinds = {"assay": "solution", "in solids": "tail"}
     for key in reader.uses:
         family, _, name = key.partition(":")
-        if family == "assay":
+        if family in kinds:
             found = reader.assays(key)
             if found is not None:
-                sd = settings.sd("solution", found[0], name)
-                assays[name] = (found[0], sd, found[1])
+                sd = settings.sd(kinds[family], found[0], name)
+                assays.setdefault(family, {})[name] = (found[0], sd, found[1])
         elif key not in ("test", "sample id") and (values := reader.numbers(key)) is not None:
             numbers[key] = values
     _check(reader, numbers)
-    return _Columns(numbers, assays)
+    return _Columns(numbers, assays.get("assay", {}), assays.get("in solids", {}))
 
 
 def _check(reader: CellReader, numbers: dict[str, Array]) -> None:
@@ -200,11 +239,14 @@ def _time_problem(reader: CellReader, i: int, found: str, level: str) -> Problem
 def _readings(rows: NDArray[np.int64], columns: _Columns, reader: CellReader) -> Readings:
     numbers = {key: values[rows] for key, values in columns.numbers.items()}
     row_numbers = tuple(reader.sheet.rows[i].number for i in rows)
-    assays = {
-        name: Assays(value[rows], sd[rows], bound[rows], row_numbers)
-        for name, (value, sd, bound) in columns.assays.items()
-        if not np.isnan(value[rows]).all()
-    }
+    assays, in_solids = (
+        {
+            name: Assays(value[rows], sd[rows], bound[rows], row_numbers)
+            for name, (value, sd, bound) in read.items()
+            if not np.isnan(value[rows]).all()
+        }
+        for read in (columns.assays, columns.in_solids)
+    )
     return Readings(
         time_h=numbers["time"],
         aliquot_mL=numbers.get("aliquot"),
@@ -218,6 +260,12 @@ def _readings(rows: NDArray[np.int64], columns: _Columns, reader: CellReader) ->
         rows=row_numbers,
         logged={name: numbers[key] for key, name in _LOGGED.items() if key in numbers},
         file=reader.sheet.file,
+        vessel={
+            key: numbers[key]
+            for key in VESSEL_COLUMNS
+            if key in numbers and not np.isnan(numbers[key]).all()
+        },
+        solids_assays=in_solids,
     )
 
 

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from leachkin.testwork.records import Array, History, Test
-from leachkin.testwork.recursion import REPLACED, SolutionLedger, solution_ledger
+from leachkin.testwork.recursion import FRESH, REPLACED, SolutionLedger, solution_ledger
 
 #: An addition is a step; its two sides stand this far apart in a history.
 STEP_h = 1e-6
@@ -46,8 +46,9 @@ class ReagentUse:
 def reagent_use(test: Test) -> ReagentUse | None:
     """Return the reagent balance of a test, None where nothing was titrated or added.
 
-    Aliquots take reagent out; make-up brings it in at the starting strength where aliquots are
-    replaced by reagent solution, and none otherwise.
+    Aliquots take reagent out; make-up brings it in at the starting strength where it is reagent
+    solution, and none otherwise. Water that evaporates takes none. Where slurry was sampled, the
+    reagent taken is that of the whole charge.
     """
     if test.reagent_g_per_L is None or not test.time_h.size:
         return None
@@ -70,7 +71,8 @@ def reagent_use(test: Test) -> ReagentUse | None:
             after, additions = held, "before the titration"
     else:
         after = np.full(added.size, test.reagent_g_per_L)
-        before = np.maximum((after * after_mL - fresh_mg - 1000.0 * added) / kept_mL, 0.0)
+        held_mg = np.maximum(after * after_mL - fresh_mg - 1000.0 * added, 0.0)
+        before = np.divide(held_mg, kept_mL, out=after.copy(), where=kept_mL > 0.0)
     return _use(test, ledger, (before, after), added, fresh_mg, additions)
 
 
@@ -93,10 +95,11 @@ def _use(
     in_time = added_by_then if additions == "before the titration" else _earlier(1000.0 * added)
     came_mg = start_mg + _earlier(fresh_mg) + in_time
     left_mg = before * ledger.volume_mL + _earlier(before * ledger.removed_mL)
+    taken_mg = np.cumsum(np.diff(came_mg - left_mg, prepend=0.0) / ledger.share[:-1])
     per_t = 1.0 / test.solids_g
     return ReagentUse(
         test.time_h,
-        (came_mg - left_mg) * per_t,
+        taken_mg * per_t,
         (start_mg + added_by_then) * per_t,
         before,
         after,
@@ -162,7 +165,7 @@ def _others(test: Test, time_h: Array) -> dict[str, Array]:
 
 def _makeup_strength(test: Test) -> float:
     policy = test.aliquots or REPLACED[0]
-    return (test.reagent_g_per_L or 0.0) if policy == REPLACED[0] else 0.0
+    return (test.reagent_g_per_L or 0.0) if policy in FRESH else 0.0
 
 
 def _or_zero(values: Array | None, count: int) -> Array:

@@ -14,7 +14,12 @@ from leachkin.testwork.sizes import SizeDistribution
 
 Array = NDArray[np.float64]
 AliquotPolicy = Literal[
-    "replaced by reagent solution", "replaced by water", "not replaced", "returned"
+    "replaced by reagent solution",
+    "replaced by water",
+    "not replaced",
+    "returned",
+    "made up with reagent solution",
+    "made up with water",
 ]
 
 
@@ -60,6 +65,36 @@ class History:
 
 
 @dataclass(frozen=True)
+class VesselLog:
+    """What was weighed or measured in the vessel beside the assays; all of it may be absent.
+
+    Attributes
+    ----------
+    volume_mL : ndarray, shape (m,), or None
+        Solution before each sample as measured or weighed, NaN where it was not: what the ledger
+        of aliquots and make-up misses has evaporated.
+    evaporated_mL : ndarray, shape (m,), or None
+        Water lost since the reading before, where it was written down.
+    returned_mL, decanted_mL : ndarray, shape (m,), or None
+        Part of each aliquot that went back; solution poured off beside it.
+    solids_g : ndarray, shape (m,), or None
+        Dry solids that left with each sample of slurry.
+    solids_assays : mapping of analyte to Assays
+        Grade of those solids [kg/t].
+    carbon_g : float
+        Carbon or resin in the vessel while it leaches.
+    """
+
+    volume_mL: Array | None = None
+    evaporated_mL: Array | None = None
+    returned_mL: Array | None = None
+    decanted_mL: Array | None = None
+    solids_g: Array | None = None
+    solids_assays: Mapping[str, Assays] = field(default_factory=dict)
+    carbon_g: float = 0.0
+
+
+@dataclass(frozen=True)
 class Head:
     """Head assay of one analyte in one domain or test.
 
@@ -70,12 +105,19 @@ class Head:
     replicates : int
     scatter_kg_per_t : float
         Standard deviation of one charge's head about the mean of its domain.
+    values_kg_per_t, sds_kg_per_t : tuple of float
+        Every assay and its stated precision, one standard deviation.
+    rows : tuple of int
+        Row of each assay in its file.
     """
 
     value_kg_per_t: float
     sd_kg_per_t: float
     replicates: int = 1
     scatter_kg_per_t: float = 0.0
+    values_kg_per_t: tuple[float, ...] = ()
+    sds_kg_per_t: tuple[float, ...] = ()
+    rows: tuple[int, ...] = field(default=(), compare=False)
 
     @property
     def charge_sd_kg_per_t(self) -> float:
@@ -98,6 +140,10 @@ class Product:
         Mean of the replicates, kg/t for a solid, g/L for a solution.
     bound : mapping of analyte to int
         -1 where every replicate was below its limit, +1 above; absent for values.
+    values : mapping of analyte to tuple of float
+        Every replicate, in the unit of the grade.
+    rows : mapping of analyte to tuple of int
+        Row of each replicate in its file.
     """
 
     name: str
@@ -105,12 +151,38 @@ class Product:
     amount: float | None
     grade: Mapping[str, tuple[float, float, int]]
     bound: Mapping[str, int] = field(default_factory=dict)
+    values: Mapping[str, tuple[float, ...]] = field(default_factory=dict)
+    rows: Mapping[str, tuple[int, ...]] = field(default_factory=dict, compare=False)
 
     @property
     def is_dissolved_metal(self) -> bool:
         """True for solutions, and for carbon or resin, which took their metal from solution."""
-        words = self.name.casefold().replace("-", " ").split()
-        return self.is_solution or "carbon" in words or "resin" in words
+        return self.is_solution or self.is_carbon
+
+    @property
+    def is_carbon(self) -> bool:
+        """True for carbon and resin."""
+        words = self._words
+        return not self.is_solution and ("carbon" in words or "resin" in words)
+
+    @property
+    def is_before_leach(self) -> bool:
+        """True for a gravity concentrate, which was taken out before the leach.
+
+        One made from the residue (its name says tail or residue) is part of what stayed.
+        """
+        words = self._words
+        after = {"tail", "tails", "tailings", "residue"} & words
+        return not self.is_solution and "gravity" in words and not after
+
+    @property
+    def is_undissolved_metal(self) -> bool:
+        """True for what stayed in solids through the leach."""
+        return not self.is_dissolved_metal and not self.is_before_leach
+
+    @property
+    def _words(self) -> set[str]:
+        return set(self.name.casefold().replace("-", " ").replace("_", " ").split())
 
 
 @dataclass(frozen=True)
@@ -182,6 +254,18 @@ class Test:
     logged : mapping of str to ndarray, shape (m,)
         What else was read at the times of the test, by name with its unit: "Eh_mV_SHE",
         "DO_mg_per_L".
+    vessel : VesselLog
+        Volumes as weighed or measured, what was put back, slurry samples, carbon.
+    free_g_per_L : mapping of reagent to ndarray, shape (m,)
+        Every titration, the campaign's reagent among them.
+    start_g_per_L : mapping of reagent to float
+        Every starting strength that was written.
+    set_point_g_per_L : float or None
+        Strength that the campaign's reagent is to be brought back to; the starting one if None.
+    planned_h : tuple of float
+        Times at which samples are planned.
+    started : str
+        When the test was started, as written.
     """
 
     __test__ = False  # not a test case for pytest
@@ -217,6 +301,12 @@ class Test:
     exclusions: tuple[Exclusion, ...] = ()
     files: Mapping[str, str] = field(default_factory=dict)
     logged: Mapping[str, Array] = field(default_factory=dict)
+    vessel: VesselLog = field(default_factory=VesselLog)
+    free_g_per_L: Mapping[str, Array] = field(default_factory=dict)
+    start_g_per_L: Mapping[str, float] = field(default_factory=dict)
+    set_point_g_per_L: float | None = None
+    planned_h: tuple[float, ...] = ()
+    started: str = ""
 
     @property
     def is_excluded(self) -> bool:
@@ -226,7 +316,15 @@ class Test:
     @property
     def is_closed_out(self) -> bool:
         """True where a solid product that holds what did not dissolve has been assayed."""
-        return any(not p.is_dissolved_metal and p.grade for p in self.products)
+        return any(p.is_undissolved_metal and p.grade for p in self.products)
+
+    def has_carbon(self, analyte: str) -> bool:
+        """Return True where carbon takes this metal out of the solution while it leaches.
+
+        Carbon that is not assayed yet may hold any of them.
+        """
+        loaded = {a for p in self.products if p.is_carbon for a in p.grade}
+        return analyte in loaded if loaded else self.vessel.carbon_g > 0.0
 
     @property
     def state(self) -> str:
@@ -270,7 +368,13 @@ class MetalBalance:
         True where a tail or a policy is missing; the reasons stand in problems.
     problems : tuple of Problem
     final_dissolved_g, final_undissolved_g : float or None
-        Metal in all solutions and carbon, and in all other solids, at close-out [g].
+        Metal in all solutions and carbon, and in all other solids, at close-out [g]. Where samples
+        of slurry were taken, as it would be for the whole charge.
+    before_leach_g : float or None
+        Metal that a gravity concentrate took out before the leach [g]. It is part of the heads and
+        the closure; the extractions are of what the leach was fed.
+    final_with_gravity : float or None
+        Gravity concentrate and solution together, over the calculated head.
     """
 
     test: str
@@ -294,6 +398,8 @@ class MetalBalance:
     problems: tuple[Problem, ...] = ()
     final_dissolved_g: float | None = None
     final_undissolved_g: float | None = None
+    before_leach_g: float | None = None
+    final_with_gravity: float | None = None
 
     @property
     def correction_g(self) -> Array:
@@ -323,7 +429,8 @@ class Observed:
     bound : ndarray of int, shape (k,)
         0 value, -1 "less than", +1 "greater than".
     row_kind : tuple of str
-        "solution", "tail" or "extraction" for each row.
+        "solution", "tail" or "extraction" for each row; a tail may be of solids sampled while it
+        leached.
     row_time_h : ndarray, shape (k,)
     head_kg_per_t, head_sd_kg_per_t : float
         Head assay and the standard deviation of this test's head about it (assay precision and

@@ -2,21 +2,32 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 
 from leachkin.constants import ZERO_CELSIUS_K
-from leachkin.files import Sheet
+from leachkin.errors import UnitError
+from leachkin.files import Sheet, parse_numeral
 from leachkin.problems import Level, Problem, unknown_name
 from leachkin.testwork.cells import CellReader, code_meanings
+from leachkin.testwork.charge import (
+    CHARGE_COLUMNS,
+    SOLUTION_COLUMNS,
+    Weighed,
+    charge_of_row,
+    stands_otherwise,
+    weighed_of_row,
+)
 from leachkin.testwork.columns import ANALYTE, FORMULA, Family, Field, of_family, resolve_columns
 from leachkin.testwork.names import KINDS, POLICIES, TEST_NAMES, TestNames, find_policy
 from leachkin.testwork.records import AliquotPolicy, Array
 from leachkin.testwork.settings import TestworkSettings
 from leachkin.testwork.written_sizes import SizeProblem, WrittenSize, read_size
 from leachkin.testwork.written_units import known_meshes
+from leachkin.units import convert
 
 FIELDS = (
     Field("test", "test", names=TEST_NAMES, needed=True),
@@ -38,6 +49,21 @@ FIELDS = (
     Field("moisture", "moisture (%)", ("1",), ("moisture content", "ore moisture")),
     Field("solution", "solution (mL)", ("mL",), ("solution volume", "soln", "volume"), True),
     Field("solids share", "solids (%)", ("1",), ("pulp density", "pulp solids")),
+    Field("pulp mass", "pulp mass (g)", ("g",), ("slurry mass", "pulp weight")),
+    Field("pulp volume", "pulp volume (mL)", ("mL",), ("slurry volume",)),
+    Field(
+        "pulp density",
+        "pulp density (g/mL)",
+        ("g/mL",),
+        ("slurry density", "pulp SG", "slurry SG"),
+    ),
+    Field(
+        "solids density", "solids density (g/mL)", ("g/mL",), ("solids SG", "ore SG", "ore density")
+    ),
+    Field("density", "solution density (g/mL)", ("g/mL",), ("solution SG", "liquor density")),
+    Field("bottle", "bottle mass at start (g)", ("g",), ("gross mass at start", "start mass")),
+    Field("tare", "bottle tare (g)", ("g",), ("tare", "empty bottle", "bottle empty")),
+    Field("carbon", "carbon (g)", ("g",), ("carbon mass", "carbon added", "resin", "resin mass")),
     Field("lower", "size lower (mm)", ("mm",), ("lower size",)),
     Field("upper", "size upper (mm)", ("mm",), ("upper size", "top size")),
     Field(
@@ -46,11 +72,24 @@ FIELDS = (
     Field("P80", "P80 (um)", names=("K80", "F80", "80 % passing"), in_words=True),
     Field("temperature", "temperature (degC)", ("K",), ("temp", "t")),
     Field("start", "started", names=("start", "start time", "start date", "date started")),
+    Field(
+        "planned",
+        "planned samples (h)",
+        names=("sample times", "planned", "sampling plan"),
+        in_words=True,
+    ),
     Field("aliquots", "aliquots", names=("aliquot policy", "aliquot")),
     Field("stirring", "stirring (rpm)", ("rpm",), ("stirring speed", "rolling speed", "agitation")),
 )
 FAMILIES = (
     Family("start", "start {} (g/L)", rf"start {FORMULA}", ("g/L",), ("H2SO4", "NaCN")),
+    Family(
+        "set point",
+        "set-point {} (g/L)",
+        rf"(?:set[ -]?point|target) {FORMULA}",
+        ("g/L",),
+        ("NaCN",),
+    ),
     Family(
         "start metal",
         "{} in start solution (g/L)",
@@ -85,6 +124,10 @@ class TestRow:
     p80_mm: float | None = None
     start: str = ""
     file: str = ""
+    weighed: Weighed = Weighed()
+    start_g_per_L: Mapping[str, float] = field(default_factory=dict)
+    set_point_g_per_L: float | None = None
+    planned_h: tuple[float, ...] = ()
 
     @property
     def has_size(self) -> bool:
@@ -116,9 +159,9 @@ def read_tests_sheet(
     """
     found_problems: list[Problem] = []
     uses = resolve_columns(sheet, FIELDS, FAMILIES, found_problems, settings, "tests")
-    problems.extend(p for p in found_problems if not _stands_otherwise(p, set(uses)))
+    problems.extend(p for p in found_problems if not stands_otherwise(p, set(uses)))
     charged = {"solids", "wet"} & set(uses)
-    if "test" not in uses or not charged or not {"solution", "solids share"} & set(uses):
+    if "test" not in uses or not charged or not SOLUTION_COLUMNS & set(uses):
         return {}
     reader = CellReader(sheet, uses, problems, settings.answers)
     columns = _columns(reader, settings)
@@ -134,22 +177,13 @@ def read_tests_sheet(
     return found
 
 
-def _stands_otherwise(problem: Problem, keys: set[str]) -> bool:
-    """Whether a column that is not there can be worked out from others."""
-    instead = {"'dry solids (g)'": "wet", "'solution (mL)'": "solids share"}
-    return any(
-        key in keys and problem.found == f"there is no column {name}"
-        for name, key in instead.items()
-    )
-
-
 def _columns(reader: CellReader, settings: TestworkSettings) -> dict[str, Array]:
     """The numeric columns by key, NaN where there is none, checked against what has meaning."""
     absent = np.full(len(reader.sheet.rows), np.nan)
-    keys = ["solids", "wet", "moisture", "solution", "solids share", "lower", "upper"]
+    keys = [*CHARGE_COLUMNS, "moisture", "solids share", "lower", "upper"]
     keys += ["temperature", "stirring"]
     columns = {key: _or_absent(reader.numbers(key), absent) for key in keys}
-    for key in ("solids", "wet", "solution", "lower", "upper"):
+    for key in (*CHARGE_COLUMNS, "lower", "upper"):
         if key in reader.uses:
             reader.flag(key, columns[key] <= 0.0, "a number above 0")
             columns[key][columns[key] <= 0.0] = np.nan
@@ -167,6 +201,14 @@ def _columns(reader: CellReader, settings: TestworkSettings) -> dict[str, Array]
     if settings.reagent is None and len(reagents) == 1:
         chosen = next(iter(reagents))
     columns["reagent"] = _or_absent(reader.numbers(f"start:{chosen}") if chosen else None, absent)
+    for name in reagents:
+        columns[f"start:{name}"] = _or_absent(reader.numbers(f"start:{name}"), absent)
+    points = of_family(reader.uses, "set point")
+    point = chosen or settings.reagent
+    point = point if point in points else next(iter(points)) if len(points) == 1 else None
+    columns["set point"] = _or_absent(
+        reader.numbers(f"set point:{point}") if point else None, absent
+    )
     _reagent_problems(reader, settings, set(reagents))
     for metal in of_family(reader.uses, "start metal"):
         columns[f"start metal:{metal}"] = _or_absent(reader.numbers(f"start metal:{metal}"), absent)
@@ -189,7 +231,7 @@ def _reagent_problems(reader: CellReader, settings: TestworkSettings, reagents: 
                 reader.sheet.header_row,
                 use.heading,
                 "note",
-                f"the campaign's reagent is {settings.reagent}; {other} is not used",
+                f"the campaign's reagent is {settings.reagent}; {other} is in its own balance only",
                 try_this=f'for {other} as the reagent, write reagent = "{other}" in the settings',
             )
         )
@@ -232,7 +274,7 @@ def _row(
     settings: TestworkSettings,
 ) -> TestRow | None:
     number = reader.sheet.rows[i].number
-    charge = _charge(i, reader, columns)
+    charge = charge_of_row(i, reader, columns, settings)
     if charge is None:
         return None
     metals = of_family(reader.uses, "start metal")
@@ -259,83 +301,44 @@ def _row(
         p80_mm=size.p80_mm,
         start=reader.texts("start")[i],
         file=reader.sheet.file,
+        weighed=weighed_of_row(i, columns, settings),
+        start_g_per_L={
+            name: value * charge.dilution
+            for name in of_family(reader.uses, "start")
+            if (value := _or_none(columns[f"start:{name}"][i])) is not None
+        },
+        set_point_g_per_L=_or_none(columns["set point"][i]),
+        planned_h=_planned(i, reader),
     )
 
 
-def _or_none(value: float) -> float | None:
-    return None if np.isnan(value) else float(value)
-
-
-@dataclass(frozen=True)
-class _Charge:
-    """Dry solids and solution of a test; what came with wet ore dilutes what was added."""
-
-    solids_g: float
-    solution_mL: float
-    dilution: float = 1.0
-
-
-def _charge(i: int, reader: CellReader, columns: Mapping[str, Array]) -> _Charge | None:
-    solids, water = _dry_solids(i, reader, columns)
-    solution = float(columns["solution"][i])
-    share = float(columns["solids share"][i])
-    if np.isnan(solution) and not np.isnan(share + solids):
-        solution, water = solids * (1.0 - share) / share, 0.0
-        found = f"the solution is worked out from {100 * share:g} % solids: {solution:.5g} mL"
-        where = (reader.sheet.file, reader.sheet.rows[i].number, "solution (mL)")
-        reader.problems.append(Problem(*where, "note", f"{found}, at 1 g/mL"))
-    if np.isnan(solids) or np.isnan(solution):
-        _say_what_is_missing(i, reader, np.isnan(solids), np.isnan(solution))
-        return None
-    return _Charge(solids, solution + water, solution / (solution + water))
-
-
-def _dry_solids(i: int, reader: CellReader, columns: Mapping[str, Array]) -> tuple[float, float]:
-    """Dry solids [g] and the water that came with them [mL]."""
-    dry, wet, moisture = (float(columns[key][i]) for key in ("solids", "wet", "moisture"))
-    if np.isnan(wet):
-        return dry, 0.0
-    where = (reader.sheet.file, reader.sheet.rows[i].number, reader.uses["wet"].heading)
-    if not np.isnan(dry):
-        return dry, max(wet - dry, 0.0)
-    if np.isnan(moisture):
-        reader.problems.append(
-            Problem(
-                *where,
-                "ask",
-                f"{wet:g} g wet and no moisture; taken as dry meanwhile, which reads heads high "
-                "and extraction low",
-                "the dry mass, or the moisture in per cent of the wet mass",
-                'add a column "moisture (%)" or "dry solids (g)"',
-            )
+def _planned(i: int, reader: CellReader) -> tuple[float, ...]:
+    """Times at which samples are planned, as "2; 6; 24; 48"."""
+    separators = r"[;/\s]+" if reader.sheet.decimal == "," else r"[;/,\s]+"
+    parts = [part.strip(",h") for part in re.split(separators, reader.texts("planned")[i])]
+    unit = reader.uses["planned"].spelling if "planned" in reader.uses else ""
+    try:
+        hours = convert(1.0, unit or "h", "h")
+        return tuple(
+            sorted({hours * parse_numeral(part, reader.sheet.decimal) for part in parts if part})
         )
-        return wet, 0.0
-    dry = wet * (1.0 - moisture)
-    found = f"charge {wet:g} g with {100 * moisture:g} % moisture: dry {dry:.1f} g used, and "
-    found += f"{wet - dry:.1f} mL of water joins the solution"
-    reader.problems.append(Problem(*where, "note", found))
-    return dry, wet - dry
-
-
-def _say_what_is_missing(i: int, reader: CellReader, solids: bool, solution: bool) -> None:
-    for key, missing, what in (
-        ("solids", solids, "the dry solids are missing"),
-        ("solution", solution, "the solution is missing"),
-    ):
-        if not missing or reader.texts(key)[i]:
-            continue
-        use = reader.uses.get(key)
+    except (ValueError, UnitError):
         reader.problems.append(
             Problem(
                 reader.sheet.file,
                 reader.sheet.rows[i].number,
-                use.heading if use is not None else "",
-                "stop",
-                what,
-                "a number above 0",
-                "dry mass, not as received" if key == "solids" else "the starting volume",
+                reader.uses["planned"].heading,
+                "ask",
+                f"{reader.texts('planned')[i]!r} is no list of times; the plan is not used",
+                "hours with semicolons between them",
+                'write "2; 6; 24; 48"',
             )
         )
+        return ()
+
+
+def _or_none(value: float) -> float | None:
+    return None if np.isnan(value) else float(value)
 
 
 def _kind(text: str, reader: CellReader, number: int) -> str:
