@@ -284,7 +284,7 @@ def stirring_power(
 
 
 def _paced(observed: Observed, factor: float) -> Observed:
-    """Return a test with all its times multiplied."""
+    """Return a test with all its times multiplied, and no speed that a fit could answer to."""
     history = observed.history
     if history is not None:
         history = replace(history, time_h=factor * history.time_h)
@@ -293,6 +293,7 @@ def _paced(observed: Observed, factor: float) -> Observed:
         time_h=factor * observed.time_h,
         row_time_h=factor * observed.row_time_h,
         history=history,
+        stirring_rpm=None,
     )
 
 
