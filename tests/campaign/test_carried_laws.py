@@ -110,6 +110,7 @@ def test_one_batch_is_each_law_where_it_was_drawn():
         assert_allclose(curve(TIME_H)[j], own, atol=1e-4)
 
 
+@pytest.mark.slow
 def test_laws_that_cannot_be_told_apart_widen_the_band_and_are_named(tmp_path):
     """One size and one time were tested: the laws part company at others."""
     path = bottles(tmp_path, HEAP, times=ONE_TIME, laws='["chemical", "ash_layer"]')

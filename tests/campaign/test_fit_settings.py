@@ -97,6 +97,7 @@ def test_orders_by_resistance(tmp_path):
     assert stage.fit.parameter("order_chemical").standard_error > 0
 
 
+@pytest.mark.slow
 def test_the_reagent_by_balance_where_nobody_titrated(tmp_path):
     """Cyanide that the gold takes is far below what was added: nearly the law that is held."""
     held = fitted(write(tmp_path, "", titrated=False))

@@ -59,6 +59,7 @@ def test_profile_is_the_default_and_no_assumption(plain):
 @pytest.mark.parametrize(
     ("asked", "words"), [("linearised", "linearised"), ("bootstrap", "bootstrap of 8 groups")]
 )
+@pytest.mark.slow
 def test_the_method_asked_for_stands_beside_every_interval(file, asked, words):
     stage = stage_of(result_of(file, intervals=asked))
     assert stage.intervals == asked
@@ -73,6 +74,7 @@ def test_the_energy_beside_the_two_steps_has_the_same_interval(plain):
     assert stage.diagnostics.arrhenius[0].shared == stage.fit.parameter(name)
 
 
+@pytest.mark.slow
 def test_posterior_draws_make_the_bands(file, plain):
     pytest.importorskip("emcee", reason=NEEDS_EMCEE)
     result = result_of(file, intervals="posterior")

@@ -123,6 +123,7 @@ def with_two_gangues(edit, folder):
     (folder / "readings.csv").write_text("\n".join([*lines, ""]))
 
 
+@pytest.mark.slow
 def test_another_domain_has_its_own_gangue(edit, folder, heap_text):
     with_two_gangues(edit, folder)
     path = edit("campaign.toml", '["ash_layer", "chemical"]\n', '["ash_layer"]\n')

@@ -104,6 +104,7 @@ def test_unfitted_it_says_that_it_sets_no_budget():
     assert NO_BUDGET in way.way_table().caption
 
 
+@pytest.mark.slow
 def test_a_site_fit_recovers_known_factors():
     true = electrode_kinetics(IRON, {"Cu": 1.0}, hydrogen_factor=40.0)
     way = mixed_course(FEED, IRON, {"Cu2+": 1e-5, "Fe3+": 1.5e-5}, {"Cu": 0.1}, true, steps=40)

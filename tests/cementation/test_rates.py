@@ -242,6 +242,7 @@ def test_ranking_finds_the_law_behind_clear_data(law):
     assert ranking.table().caption == ranking.verdict
 
 
+@pytest.mark.slow
 def test_ranking_names_no_larger_law_than_the_readings_ask_for():
     named = 0
     for seed in range(20):

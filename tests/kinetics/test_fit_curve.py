@@ -207,6 +207,7 @@ def test_shape_names_all_have_bounds_and_starts():
     assert names <= set(SHAPE_BOUNDS) and names <= set(SHAPE_STARTS)
 
 
+@pytest.mark.slow
 def test_film_alone_is_tried_from_every_dip():
     """The sum of squares of a film has a kink at each reading: against a scan of the time."""
     generator = np.random.default_rng(1)

@@ -105,6 +105,7 @@ def test_grain_derivatives_against_differences(law):
     assert_allclose(design.expected(both)[1], design.expected(vector + 0.01), rtol=1e-12)
 
 
+@pytest.mark.slow
 def test_the_grains_of_a_fit_step_as_those_of_the_law():
     tests = marched_tests(0.0)
     layout, _ = layout_of(FitOptions(law="ash_layer+chemical", ultimate="one"), tests)

@@ -200,6 +200,7 @@ def test_resamples_that_pile_up_at_a_bound_leave_that_side_open(fit):
     assert "of the resamples end at the end of its range" in p.why_no_interval
 
 
+@pytest.mark.slow
 def test_drawing_the_same_readings_again_does_not_close_what_the_fit_found_open():
     hours = np.array([0.25, 0.5, 0.75, 1.0])
     tests = bottles(hours, celsius=(25, 30), ultimate=(0.5, 0.5))
