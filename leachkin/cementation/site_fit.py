@@ -151,7 +151,7 @@ def fit_to_barren(
 
 
 class _Task:
-    """Readings of a site, and what the course says of them."""
+    """Readings of a site, and what the profile along the vessel says of them."""
 
     def __init__(
         self,
