@@ -19,17 +19,25 @@ from leachkin.inference.leverage import (
 from leachkin.inference.limits import below_limit_residual
 from leachkin.inference.posterior import Posterior, sample_posterior
 from leachkin.inference.profile import profile_interval, refit_by_solver, refit_held
+from leachkin.inference.reconciliation import (
+    Constraints,
+    Reconciled,
+    linear_constraints,
+    reconcile,
+)
 from leachkin.inference.scales import Scale, from_natural, natural_slope, to_natural
 from leachkin.inference.straight_line import StraightLine, weighted_line
 
 __all__ = [
     "LEAST_GROUPS",
     "Bootstrap",
+    "Constraints",
     "Estimate",
     "Held",
     "Interval",
     "LeastSquaresProblem",
     "Posterior",
+    "Reconciled",
     "Scale",
     "StraightLine",
     "akaike_weights",
@@ -43,10 +51,12 @@ __all__ = [
     "held_covariance",
     "least_squares",
     "leverage_of",
+    "linear_constraints",
     "natural_slope",
     "normal_multiplier",
     "one_sided_reach",
     "profile_interval",
+    "reconcile",
     "refit_by_solver",
     "refit_held",
     "sample_posterior",

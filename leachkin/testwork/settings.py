@@ -26,12 +26,15 @@ class BalanceLimits:
         Calculated head over assay head; "" is for every analyte not named.
     over_extraction : float
         Extraction on the assay head above which the likely causes are named.
+    most_mass_loss : float
+        Share of the charge that a residue which was not weighed may have lost.
     """
 
     closure: Mapping[str, tuple[float, float]] = field(
         default_factory=lambda: {"": (0.90, 1.10), "Au": (0.85, 1.15)}
     )
     over_extraction: float = 1.05
+    most_mass_loss: float = 0.10
 
     def closure_of(self, analyte: str) -> tuple[float, float]:
         """Return the limits of closure for an analyte."""
