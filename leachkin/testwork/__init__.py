@@ -17,6 +17,20 @@ from leachkin.testwork.quality import (
 )
 from leachkin.testwork.read import domain_heads, read_tests
 from leachkin.testwork.reagent_use import ReagentUse, reagent_use
+from leachkin.testwork.reconcile import (
+    Adjustment,
+    Candidate,
+    GroupTest,
+    Reconciliation,
+    reconcile_balance,
+)
+from leachkin.testwork.reconciliation_words import (
+    reconciled_table,
+    reconciliation_lines,
+    reconciliation_table,
+    repeat_of,
+    verdict_of,
+)
 from leachkin.testwork.records import (
     AliquotPolicy,
     Assays,
@@ -35,13 +49,16 @@ from leachkin.testwork.sizes import SizeDistribution
 
 __all__ = [
     "EXAMPLE",
+    "Adjustment",
     "AliquotPolicy",
     "Answers",
     "Assays",
     "BalanceLimits",
+    "Candidate",
     "DuplicatePair",
     "DuplicatePrecision",
     "Exclusion",
+    "GroupTest",
     "Head",
     "History",
     "MetalBalance",
@@ -49,6 +66,7 @@ __all__ = [
     "Product",
     "QualityRecord",
     "ReagentUse",
+    "Reconciliation",
     "SizeDistribution",
     "Test",
     "TestworkSettings",
@@ -70,7 +88,13 @@ __all__ = [
     "read_precision",
     "read_tests",
     "reagent_use",
+    "reconcile_balance",
+    "reconciled_table",
+    "reconciliation_lines",
+    "reconciliation_table",
+    "repeat_of",
     "tables_of_bench_sheet",
     "test_inventory",
     "test_names",
+    "verdict_of",
 ]

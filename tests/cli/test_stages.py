@@ -70,8 +70,9 @@ def test_extraction_and_its_explanation(invoke, bench):
     assert "Closure" in table.stdout
     assert "next: leachkin fit" in table.stderr
     lines = invoke("extraction", bench, "--explain", "B1", "--metal", "Cu").stdout.splitlines()
-    assert 8 <= len(lines) <= 14
+    assert 8 <= len(lines) <= 24
     assert "Calculated head" in "\n".join(lines)
+    assert "Reconciled extraction" in "\n".join(lines)
 
 
 @pytest.mark.parametrize(
