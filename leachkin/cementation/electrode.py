@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from leachkin.cementation.middle import middle
 from leachkin.cementation.solution import Precipitant
 from leachkin.errors import InputProblems
 from leachkin.problems import argument_error, unknown_name
@@ -132,7 +133,10 @@ def electrode_kinetics(
         _current(oxygen),
         oxygen.number("slope_V_per_decade"),
         hydrogen_factor,
-        tuple(dict.fromkeys(_words(row) for row in (dissolution, bare, *on_deposit, oxygen))),
+        (
+            *dict.fromkeys(_words(row) for row in (dissolution, bare, *on_deposit, oxygen)),
+            f"deposit on {100 * middle(deposit_share):g} % of the surface, not measured",
+        ),
         tuple(dict.fromkeys(r.text("source") for r in (dissolution, bare, *on_deposit, oxygen))),
     )
 

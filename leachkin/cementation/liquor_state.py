@@ -21,12 +21,13 @@ from leachkin.chemistry import (
     hcn_share,
     ion_of,
     is_complex,
+    log10_beta_at,
     log10_water_product,
     molar_mass,
     potential_range,
     sulphuric_species,
 )
-from leachkin.constants import STANDARD_TEMPERATURE_K, GAS_CONSTANT_J_per_mol_K
+from leachkin.constants import GAS_CONSTANT_J_per_mol_K
 
 Array = NDArray[np.float64]
 
@@ -221,7 +222,7 @@ def _acid_of(
     if solution.acid_g_per_L is None:
         return _acid_of_pH(solution, square, other, kelvin, activities)
     moles = _grams(solution.acid_g_per_L) / molar_mass("H2SO4")
-    ln_K = -_LN10 * formation_constants()["HSO4-"][0].log10_beta * np.ones(())
+    ln_K = -_LN10 * log10_beta_at(formation_constants()["HSO4-"][0], kelvin)
     shift: Array = np.zeros(())
     strength = np.zeros(np.broadcast_shapes(moles.shape, other.shape))
     for _ in range(ROUNDS):
@@ -383,8 +384,6 @@ def _acid_notes(solution: Solution, acid: _Acid, activities: bool) -> list[str]:
                 f"pH {stated:.2f} is stated and the free acid gives {found:.2f}: the acid is used"
             )
     notes += [remark] if activities and (remark := davies_remark(acid.strength)) else []
-    if solution.temperature_K != STANDARD_TEMPERATURE_K:
-        notes.append("the constant of HSO4- is that of 25 degC")
     return notes
 
 

@@ -40,7 +40,7 @@ class Solution:
         As CN.
     pH : array_like, optional
         0 to 14.
-    arsenic_mg_per_L, antimony_mg_per_L : array_like, optional
+    arsenic_mg_per_L, antimony_mg_per_L, mercury_mg_per_L : array_like, optional
     temperature_K : float
     medium : str, optional
         "acid" or "cyanide"; by default "cyanide" where free cyanide is given or gold is present.
@@ -56,6 +56,7 @@ class Solution:
     pH: ArrayLike | None = None
     arsenic_mg_per_L: ArrayLike | None = None
     antimony_mg_per_L: ArrayLike | None = None
+    mercury_mg_per_L: ArrayLike | None = None
     temperature_K: float = STANDARD_TEMPERATURE_K
     medium: str | None = None
 
@@ -63,7 +64,8 @@ class Solution:
         for metal, value in self.metals.items():
             _not_negative(f"metals[{metal!r}]", value, "g/L")
         for name in ("ferric_g_per_L", "iron_g_per_L", "acid_g_per_L", "oxygen_mg_per_L",
-                     "free_cyanide_g_per_L", "arsenic_mg_per_L", "antimony_mg_per_L"):  # fmt: skip
+                     "free_cyanide_g_per_L", "arsenic_mg_per_L", "antimony_mg_per_L",
+                     "mercury_mg_per_L"):  # fmt: skip
             value = getattr(self, name)
             if value is not None:
                 unit = "mg/L" if name.endswith("mg_per_L") else "g/L"

@@ -14,6 +14,7 @@ from leachkin.chemistry.activity import (
 from leachkin.chemistry.aqueous_constants import (
     SolubilityProduct,
     formation_constants,
+    log10_beta_at,
     log10_water_product,
     solubility_products,
 )
@@ -146,6 +147,7 @@ __all__ = [
     "is_metal_couple",
     "known_couples",
     "ln_equilibrium_constant",
+    "log10_beta_at",
     "log10_water_product",
     "molar_mass",
     "named_factor",

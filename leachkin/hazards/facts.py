@@ -134,8 +134,10 @@ def facts_with_cementation(facts: Facts, demand: CementationDemand) -> Facts:
         "hydrogen_Nm3_per_h": None if hydrogen is None else float(np.quantile(hydrogen, 0.9)),
         "arsenic_mg_per_L": _median(solution.arsenic_mg_per_L),
         "antimony_mg_per_L": _median(solution.antimony_mg_per_L),
+        "mercury_mg_per_L": _median(solution.mercury_mg_per_L),
         "solution_m3_per_h": _median(solution.flow_m3_per_h),
         "solution_pH": _median(solution.pH),
+        "acid_g_per_L": _median(solution.acid_g_per_L),
         "acid": facts.acid or demand.medium == "acid",
         "cyanide": facts.cyanide or demand.medium == "cyanide",
     }

@@ -40,7 +40,7 @@ def gold(**changes):
 
 def test_launder_by_hand():
     """Plug flow: area = Q ln(C0/C) / k; length = volume over section."""
-    found = launder(copper(), 2e-5, width_m=2.0, depth_m=1.0, area_m2_per_m3=60.0)
+    found = launder(copper(), 2e-5, width_m=2.0, depth_m=1.0, area_m2_per_m3=60.0, voids=0.9)
     area = 797.0 / 3600 * np.log(20.0) / 2e-5
     assert_allclose(found.area_m2, area, rtol=1e-12)
     assert_allclose(found.vessel_m3, area / 60.0, rtol=1e-12)
@@ -51,7 +51,7 @@ def test_launder_by_hand():
 
 def test_replenishment_is_the_demand_and_a_charge_lasts_so_long():
     demand = copper()
-    found = launder(demand, 2e-5, width_m=2.0, depth_m=1.0, area_m2_per_m3=60.0,
+    found = launder(demand, 2e-5, width_m=2.0, depth_m=1.0, area_m2_per_m3=60.0, voids=0.9,
                     piece_thickness_mm=0.5)  # fmt: skip
     assert_allclose(found.refill_kg_per_h, demand.received_kg_per_h, rtol=1e-14)
     assert_allclose(found.charge_kg, found.area_m2 / piece_area_m2_per_kg("Fe", 0.5), rtol=1e-14)
@@ -75,8 +75,10 @@ def test_bed_takes_its_coefficient_from_the_correlation():
 
 
 def test_turning_a_bed_shortens_it_by_its_factor():
-    still = bed(copper(), piece_mm=20.0, cross_section_m2=20.0)
-    moving = bed(copper(), piece_mm=20.0, cross_section_m2=20.0, moving=True, turning_factor=2.0)
+    still = bed(copper(), piece_mm=20.0, cross_section_m2=20.0, voids=0.5)
+    moving = bed(
+        copper(), piece_mm=20.0, cross_section_m2=20.0, voids=0.5, moving=True, turning_factor=2.0
+    )
     assert_allclose(still.length_m / moving.length_m, 2.0, rtol=1e-12)
     assert moving.kind == "moving bed"
 
@@ -104,7 +106,7 @@ def test_a_two_stage_law_in_plug_flow_is_exact():
     law = CementationLaw(
         "two_stage", np.asarray(1e-5), "m/s", {"break": np.asarray(1.0), "ratio": np.asarray(2.0)}
     )
-    found = launder(copper(), law, width_m=2.0, depth_m=1.0, area_m2_per_m3=90.0)
+    found = launder(copper(), law, width_m=2.0, depth_m=1.0, area_m2_per_m3=90.0, voids=0.9)
     expected = (1.0 + (np.log(20.0) - 1.0) / 2.0) / (3600 * 1e-5 * 100.0)
     assert_allclose(found.contact_h, expected, rtol=1e-9)
 
@@ -113,18 +115,18 @@ def test_a_rate_from_another_temperature_is_marked():
     law = CementationLaw("first_order", np.asarray(1e-5), "m/s",
                          activation_energy_kJ_per_mol=np.asarray(15.0),
                          temperature_range_K=(293.0, 313.0))  # fmt: skip
-    found = launder(copper(), law, width_m=2.0, depth_m=1.0, area_m2_per_m3=60.0,
+    found = launder(copper(), law, width_m=2.0, depth_m=1.0, area_m2_per_m3=60.0, voids=0.9,
                     temperature_K=285.0)  # fmt: skip
     assert any("lies outside the tests" in note for note in found.notes)
-    warm = launder(copper(), law, width_m=2.0, depth_m=1.0, area_m2_per_m3=60.0,
+    warm = launder(copper(), law, width_m=2.0, depth_m=1.0, area_m2_per_m3=60.0, voids=0.9,
                    temperature_K=305.0)  # fmt: skip
     assert warm.length_m < found.length_m
 
 
 def test_dust_in_a_pipe_and_the_cake_behind_it():
     demand = gold()
-    found = dust_and_filter(demand, grain_um=7.0, pipe_contact_s=20.0, excess_g_per_m3=6.0,
-                            filter_m2=60.0)  # fmt: skip
+    found = dust_and_filter(demand, grain_um=7.0, cake_voids=0.5, pipe_contact_s=20.0,
+                            excess_g_per_m3=6.0, filter_m2=60.0)  # fmt: skip
     k = float(suspended_dust(7e-6, 7140.0, "Au(CN)2-").k_m_per_s)
     assert_allclose(found.k_m_per_s, k, rtol=1e-12)
     left = np.exp(-found.rate_per_h * 20.0 / 3600)
@@ -135,7 +137,9 @@ def test_dust_in_a_pipe_and_the_cake_behind_it():
 
 
 def test_enough_dust_in_a_long_pipe_needs_no_cake():
-    found = dust_and_filter(gold(), grain_um=3.0, pipe_contact_s=3600.0, excess_g_per_m3=50.0)
+    found = dust_and_filter(
+        gold(), grain_um=3.0, cake_voids=0.5, pipe_contact_s=3600.0, excess_g_per_m3=50.0
+    )
     assert found.charge_kg == 0.0
     assert any("the pipe alone reaches the barren" in note for note in found.notes)
 
@@ -174,20 +178,21 @@ def test_what_is_provisional_says_so_and_the_table_shows_no_unknowns():
 
 SECOND = CementationLaw("growing_area", np.ones(()), "1/h", {"power": np.asarray(1.5)})
 FLOOR = CementationLaw("back_dissolution", np.ones(()), "m/s", {"back": np.asarray(0.2)})
-LAUNDER = {"width_m": 2.0, "depth_m": 1.0, "area_m2_per_m3": 60.0}
+LAUNDER = {"width_m": 2.0, "depth_m": 1.0, "area_m2_per_m3": 60.0, "voids": 0.9}
 REFUSED = [
     (lambda: launder(copper(flow_m3_per_h=None), 2e-5, **LAUNDER), "no flow"),
     (lambda: launder(copper(), 0.0, **LAUNDER), "rate: 0"),
     (lambda: launder(copper(), 2e-5, **(LAUNDER | {"width_m": -1.0})), "width_m: -1"),
-    (lambda: launder(copper(), 2e-5, **LAUNDER, voids=1.0), "voids: 1"),
+    (lambda: launder(copper(), 2e-5, **(LAUNDER | {"voids": 1.0})), "voids: 1"),
     (lambda: launder(copper(1.0), 2e-5, **LAUNDER), "no vessel takes out all"),
     (lambda: launder(copper(), 2e-5, **LAUNDER, metal="Ag"), "metal: Ag"),
     (lambda: launder(copper(), FLOOR, **LAUNDER), "longer contact does not help"),
     (lambda: stirred_tanks(copper(), SECOND), "growing_area in a mixed tank"),
     (lambda: stirred_tanks(copper(), 2e-5), "no area"),
     (lambda: stirred_tanks(copper(), 2e-5, tanks=0, area_m2_per_m3=1.0), "tanks: 0"),
-    (lambda: bed(copper(), piece_mm=0.0, cross_section_m2=20.0), "piece_mm: 0"),
-    (lambda: dust_and_filter(gold(), grain_um=7.0, pipe_contact_s=0.0), "pipe_contact_s: 0"),
+    (lambda: bed(copper(), piece_mm=0.0, cross_section_m2=20.0, voids=0.5), "piece_mm: 0"),
+    (lambda: dust_and_filter(gold(), grain_um=7.0, cake_voids=0.5, pipe_contact_s=0.0),
+     "pipe_contact_s: 0"),
     (lambda: piece_area_m2_per_kg("Al", 0.5), "metal: Al"),
     (lambda: piece_area_m2_per_kg("Fe", 0.0), "thickness_mm: 0 mm"),
 ]  # fmt: skip
