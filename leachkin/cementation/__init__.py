@@ -6,9 +6,9 @@ the mixed potential, which explains and ranks sinks; vessels; the barren and the
 
 from leachkin.cementation.barren import (
     BarrenDrift,
-    Reconciliation,
+    FactorReconciliation,
     barren_drift,
-    reconcile,
+    reconcile_factor,
 )
 from leachkin.cementation.charge import (
     DepositGrade,
@@ -86,7 +86,7 @@ __all__ = [
     "Precipitant",
     "RankedRate",
     "RateResidual",
-    "Reconciliation",
+    "FactorReconciliation",
     "SinkLine",
     "SiteBarren",
     "SiteFit",
@@ -120,7 +120,7 @@ __all__ = [
     "piece_area_m2_per_kg",
     "rank_cementation",
     "rank_cementation_tests",
-    "reconcile",
+    "reconcile_factor",
     "share_left",
     "solution_order",
     "stirred_tanks",

@@ -220,7 +220,7 @@ def _acid(demand: CementationDemand) -> float | None:
 
 
 @dataclass(frozen=True)
-class Reconciliation:
+class FactorReconciliation:
     """The computed factor beside the plant's, and what is left to explain.
 
     Attributes
@@ -268,9 +268,9 @@ class Reconciliation:
         return ResultTable.from_records("cementation_site", columns, records, self.text)
 
 
-def reconcile(
+def reconcile_factor(
     demand: CementationDemand, plant_kg_per_kg: float, basis: str = "as received"
-) -> Reconciliation:
+) -> FactorReconciliation:
     """Return the computed factor beside that of the plant, with the part that is not explained.
 
     Parameters
@@ -283,7 +283,7 @@ def reconcile(
 
     Returns
     -------
-    Reconciliation
+    FactorReconciliation
 
     Raises
     ------
@@ -296,7 +296,7 @@ def reconcile(
     >>> liquor = Solution({"Cu": 2.0}, ferric_g_per_L=0.5, oxygen_mg_per_L=0.0)
     >>> iron = Precipitant("iron", purity=0.96)
     >>> demand = cementation_demand(liquor, iron, recovery=0.95, acid_taken_g_per_L=0.0)
-    >>> line = reconcile(demand, 1.6)
+    >>> line = reconcile_factor(demand, 1.6)
     >>> round(line.computed_kg_per_kg + line.unexplained_kg_per_kg, 12)
     1.6
     """
@@ -324,15 +324,13 @@ def reconcile(
     monthly = None
     if flow is not None:
         monthly = left * metal * middle(flow) * HOURS_PER_DAY * DAYS_PER_MONTH / 1e3
-    return Reconciliation(
+    return FactorReconciliation(
         basis, computed, top if ranged else None, plant_kg_per_kg, left, left / plant_kg_per_kg,
-        left * metal, monthly, _reconciliation_words(demand, computed, plant_kg_per_kg, left),
+        left * metal, monthly, _factor_words(demand, computed, plant_kg_per_kg, left),
     )  # fmt: skip
 
 
-def _reconciliation_words(
-    demand: CementationDemand, computed: float, plant: float, left: float
-) -> str:
+def _factor_words(demand: CementationDemand, computed: float, plant: float, left: float) -> str:
     share = 100.0 * left / plant
     if demand.provisional:
         return (

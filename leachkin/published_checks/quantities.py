@@ -28,6 +28,7 @@ from leachkin.kinetics import (
 )
 from leachkin.published_checks.bottle import bottle_balance
 from leachkin.published_checks.cases import Case, read_data
+from leachkin.published_checks.solution_quantities import SOLUTION_QUANTITIES
 from leachkin.scaleup import tank_train
 
 
@@ -189,4 +190,5 @@ _QUANTITIES: dict[str, Callable[[Case], float]] = {
     "stoichiometric_mass": _stoichiometric_mass,
     "standard_potential": _standard_potential,
     "potential_slope": _potential_slope,
+    **SOLUTION_QUANTITIES,
 }

@@ -13,7 +13,7 @@ from leachkin.cementation import (
     cyanide_window,
     deaeration_table,
     lead_salt,
-    reconcile,
+    reconcile_factor,
 )
 from leachkin.chemistry import acid_pH
 from leachkin.errors import InputProblems
@@ -82,7 +82,7 @@ def test_zinc_makes_hydroxide_in_cyanide():
 
 
 def test_reconciliation_line_adds_up():
-    line = reconcile(copper(), 1.9)
+    line = reconcile_factor(copper(), 1.9)
     assert_allclose(line.computed_kg_per_kg, 1.457, rtol=1e-3)
     assert_allclose(line.computed_kg_per_kg + line.unexplained_kg_per_kg, 1.9, rtol=1e-12)
     assert_allclose(
@@ -91,18 +91,18 @@ def test_reconciliation_line_adds_up():
     monthly = line.unexplained_kg_per_m3 * 797.0 * 24 * 30.4 / 1e3
     assert_allclose(line.unexplained_t_per_month, monthly, rtol=1e-12)
     assert "23 % of the plant's 1.9 kg/kg is not explained" in line.text
-    assert "agree within 5 %" in reconcile(copper(), 1.48).text
-    assert "less than the sinks take" in reconcile(copper(), 1.2).text
+    assert "agree within 5 %" in reconcile_factor(copper(), 1.48).text
+    assert "less than the sinks take" in reconcile_factor(copper(), 1.2).text
 
 
 def test_a_plant_factor_inside_the_range_leaves_nothing_open():
     solution = Solution({"Cu": 2.0}, iron_g_per_L=3.0, acid_g_per_L=3.0, oxygen_mg_per_L=6.0)
     ranged = cementation_demand(solution, IRON, recovery=0.95)
-    line = reconcile(ranged, 1.9)
+    line = reconcile_factor(ranged, 1.9)
     assert line.computed_kg_per_kg < 1.9 < line.computed_high_kg_per_kg
     assert line.unexplained_kg_per_kg == 0.0
     assert "nothing follows yet" in line.text
-    above = reconcile(ranged, 6.0)
+    above = reconcile_factor(ranged, 6.0)
     assert_allclose(above.unexplained_kg_per_kg, 6.0 - above.computed_high_kg_per_kg, rtol=1e-12)
 
 
@@ -162,15 +162,16 @@ def test_lead_salt_is_a_dose_with_its_zinc():
 
 def test_windows_and_tables_can_be_shown():
     assert barren_drift(copper()).table().rows
-    assert reconcile(copper(), 1.9).table().caption
+    assert reconcile_factor(copper(), 1.9).table().caption
     assert cyanide_window(GOLD, ZINC, {"CN-": 3e-5}).table().rows
 
 
 REFUSED = [
-    (lambda: reconcile(copper(), 0.0), "plant_kg_per_kg: 0"),
-    (lambda: reconcile(copper(), 1.9, "gross"), "basis: 'gross'"),
-    (lambda: reconcile(cementation_demand(Solution({"Cu": 2.0}), Precipitant("iron"), recovery=0.9),
-                       1.9), "no factor as received"),
+    (lambda: reconcile_factor(copper(), 0.0), "plant_kg_per_kg: 0"),
+    (lambda: reconcile_factor(copper(), 1.9, "gross"), "basis: 'gross'"),
+    (lambda: reconcile_factor(
+        cementation_demand(Solution({"Cu": 2.0}), Precipitant("iron"), recovery=0.9), 1.9
+     ), "no factor as received"),
     (lambda: lead_salt(-1.0), "dose_g_per_m3: -1"),
     (lambda: cyanide_window(Solution({"Cu": 2.0}, pH=2.0), ZINC, 1e-5), "no cyanide solution"),
     (lambda: air_saturation_mg_per_L(298.15, 9000.0), "altitude_m: 9000 m"),

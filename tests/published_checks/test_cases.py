@@ -33,6 +33,13 @@ def test_every_named_check_is_there():
         "gilbert_science_in_context": 1,
         "nbs1982_crc": 6,
         "common_practice": 4,
+        "shishkin2018": 3,
+        "molar_masses": 24,
+        "nist46": 5,
+        "korson1969": 5,
+        "tanaka2001": 4,
+        "levich1962": 1,
+        "crc_conductivity": 3,
     }
     assert {source: count.get(source, 0) >= n for source, n in at_least.items()} == dict.fromkeys(
         at_least, True
