@@ -4,16 +4,29 @@ from leachkin.testwork.answers import Answers
 from leachkin.testwork.balance import metal_balance
 from leachkin.testwork.bench_form import is_bench_sheet, tables_of_bench_sheet, test_names
 from leachkin.testwork.column_log import extraction_of_column_log, is_column_log
+from leachkin.testwork.control_chart import (
+    ControlChart,
+    RangeChart,
+    individuals_chart,
+    range_chart,
+    zone_signals,
+)
+from leachkin.testwork.detection_limit import DetectionLimit, detection_limit
 from leachkin.testwork.explain import explain_balance
-from leachkin.testwork.lab_export import is_lab_export, read_lab_export
+from leachkin.testwork.lab_export import is_lab_export, read_lab_export, read_quality
 from leachkin.testwork.names import EXAMPLE
 from leachkin.testwork.observe import observe, observed_from_extraction
+from leachkin.testwork.precision_estimate import DuplicatePrecision, precision_of_groups
 from leachkin.testwork.quality import (
     DuplicatePair,
-    DuplicatePrecision,
     QualityRecord,
     pair_values,
     precision_of_pairs,
+)
+from leachkin.testwork.quality_tables import (
+    charts_of_standards,
+    precision_by_analyte,
+    quality_tables,
 )
 from leachkin.testwork.read import domain_heads, read_tests
 from leachkin.testwork.reagent_use import ReagentUse, reagent_use
@@ -55,6 +68,8 @@ __all__ = [
     "Assays",
     "BalanceLimits",
     "Candidate",
+    "ControlChart",
+    "DetectionLimit",
     "DuplicatePair",
     "DuplicatePrecision",
     "Exclusion",
@@ -65,6 +80,7 @@ __all__ = [
     "Observed",
     "Product",
     "QualityRecord",
+    "RangeChart",
     "ReagentUse",
     "Reconciliation",
     "SizeDistribution",
@@ -72,10 +88,13 @@ __all__ = [
     "TestworkSettings",
     "VesselLog",
     "balance_table",
+    "charts_of_standards",
+    "detection_limit",
     "domain_heads",
     "explain_balance",
     "extraction_of_column_log",
     "extraction_table",
+    "individuals_chart",
     "is_bench_sheet",
     "is_column_log",
     "is_lab_export",
@@ -83,9 +102,14 @@ __all__ = [
     "observe",
     "observed_from_extraction",
     "pair_values",
+    "precision_by_analyte",
+    "precision_of_groups",
     "precision_of_pairs",
+    "quality_tables",
+    "range_chart",
     "read_lab_export",
     "read_precision",
+    "read_quality",
     "read_tests",
     "reagent_use",
     "reconcile_balance",
@@ -97,4 +121,5 @@ __all__ = [
     "test_inventory",
     "test_names",
     "verdict_of",
+    "zone_signals",
 ]

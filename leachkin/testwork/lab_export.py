@@ -14,8 +14,10 @@ from leachkin.testwork.names import fold_name
 from leachkin.testwork.quality import (
     DuplicatePair,
     QualityRecord,
+    kind_of_pair,
     kind_of_sample,
     quality_notes,
+    sample_without_mark,
 )
 from leachkin.testwork.sample_ids import Place, SampleNames
 from leachkin.testwork.settings import TestworkSettings
@@ -34,6 +36,8 @@ _COLUMNS = {
     "dilution": ("dilution", "df", "dilutionfactor"),
     "type": ("type", "sampletype", "qctype", "qc"),
     "expected": ("expected", "certified", "certifiedvalue", "target", "targetvalue"),
+    "job": ("job", "jobno", "jobnumber", "batch", "workorder", "certificate"),
+    "date": ("date", "datereported", "reported", "dateanalysed", "dateanalyzed", "datereceived"),
 }  # fmt: skip
 _NEEDED = ("sample", "analyte", "value", "unit")
 _ID_HEADINGS = ("sampleid", "sampleno", "samplenumber", "labno")
@@ -51,6 +55,8 @@ class _Result:
     text: str
     kind: str
     expected: str
+    job: str = ""
+    date: str = ""
 
 
 @dataclass
@@ -127,6 +133,42 @@ def read_lab_export(
     return export
 
 
+def read_quality(
+    grid: Grid, settings: TestworkSettings, problems: list[Problem]
+) -> tuple[list[QualityRecord], list[DuplicatePair]]:
+    """Return the blanks, standards and duplicates of an export of any job, other samples left.
+
+    Parameters
+    ----------
+    grid : Grid
+    settings : TestworkSettings
+    problems : list of Problem
+        Added to.
+
+    Returns
+    -------
+    records : list of QualityRecord
+    pairs : list of DuplicatePair
+        Two assays of one sample and analyte: the second one is marked as a duplicate, or has the
+        same name.
+    """
+    records: list[QualityRecord] = []
+    pairs: list[DuplicatePair] = []
+    first: dict[tuple[str, str, str], _Result] = {}
+    for result in _results(grid, _positions(grid.rows[0].cells), settings, problems):
+        kind = kind_of_sample(result.kind, result.sample)
+        if kind in ("blank", "standard"):
+            records.append(_quality(grid, result, kind))
+            continue
+        key = (result.job, fold_name(sample_without_mark(result.sample)), result.analyte)
+        before = first.setdefault(key, result)
+        if before is not result:
+            records.append(_quality(grid, result, "duplicate"))
+            both = [_quality(grid, r, "duplicate") for r in (before, result)]
+            pairs.append(DuplicatePair(kind_of_pair(result.sample, *both), both[0], both[1]))
+    return records, pairs
+
+
 def _positions(header: Sequence[str]) -> dict[str, int]:
     found: dict[str, int] = {}
     folded = [fold_heading(cell) for cell in header]
@@ -166,6 +208,8 @@ def _results(
                 text,
                 cells.get("type", ""),
                 cells.get("expected", ""),
+                cells.get("job", ""),
+                cells.get("date", ""),
             )
         )
     if diluted is not None and settings.answers.dilution is None:
@@ -370,4 +414,6 @@ def _quality(grid: Grid, result: _Result, kind: str) -> QualityRecord:
         grid.file,
         result.row,
         grid.decimal,
+        result.job,
+        result.date,
     )

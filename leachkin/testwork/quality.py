@@ -12,14 +12,14 @@ from leachkin.errors import UnitError
 from leachkin.files import parse_numeral
 from leachkin.files.numerals import DecimalMark
 from leachkin.problems import Problem
+from leachkin.testwork.precision_estimate import DuplicatePrecision, precision_of_squares
 from leachkin.testwork.records import Array
 from leachkin.units import convert
 
 _BLANK = re.compile(r"\b(?:blank|blk|method blank|reagent blank)\b", re.I)
 _STANDARD = re.compile(r"\b(?:standard|std|crm|reference material|control)\b", re.I)
+_TAIL = re.compile(r"\b(?:residue|tails?|tailings?)\b", re.I)
 _DUPLICATE = re.compile(r"\b(?:dup|duplicate|repeat|rpt|replicate)\b", re.I)
-_FEWEST_PAIRS = 3  #: below which no precision is given
-_PAIRS_FOR_FLOOR = 8  #: below which the floor is not told from the part
 
 
 @dataclass(frozen=True)
@@ -35,6 +35,8 @@ class QualityRecord:
     file : str
     row : int
     decimal : "." or ","
+    job, date : str
+        As written; "" where the file has no such column.
     """
 
     kind: str
@@ -46,6 +48,18 @@ class QualityRecord:
     file: str
     row: int
     decimal: DecimalMark = "."
+    job: str = ""
+    date: str = ""
+
+    @property
+    def is_below(self) -> bool:
+        """True for "<x"."""
+        return self.text.strip().startswith(("<", "\u2264"))
+
+    @property
+    def certified(self) -> float | None:
+        """The certified value of a standard, in the unit of the assay; None without one."""
+        return _number(self.expected, self.decimal)
 
     def value(self, target: str) -> float | None:
         """Return the assay in a unit; None where it is no number or the unit does not fit."""
@@ -53,22 +67,6 @@ class QualityRecord:
             return convert(parse_numeral(self.text, self.decimal), self.unit, target)
         except (ValueError, UnitError):
             return None
-
-
-@dataclass(frozen=True)
-class DuplicatePrecision:
-    """Standard deviation of one assay as floor + proportional * value, from pairs.
-
-    Attributes
-    ----------
-    floor, proportional : float
-        The floor in the unit of the pairs.
-    pairs : int
-    """
-
-    floor: float
-    proportional: float
-    pairs: int
 
 
 def kind_of_sample(kind: str, sample: str) -> str:
@@ -116,30 +114,7 @@ def precision_of_pairs(first: Array, second: Array) -> DuplicatePrecision | None
     one, other = np.asarray(first, dtype=float), np.asarray(second, dtype=float)
     good = np.isfinite(one + other) & (one + other > 0.0)
     mean, difference = 0.5 * (one + other)[good], (one - other)[good]
-    if mean.size < _FEWEST_PAIRS or not np.any(difference):
-        return None
-    relative = float(np.sqrt(np.mean((difference / mean) ** 2) / 2.0))
-    if mean.size < _PAIRS_FOR_FLOOR:
-        return DuplicatePrecision(0.0, relative, int(mean.size))
-    floor, part = _most_likely(mean, difference, relative)
-    return DuplicatePrecision(floor, part, int(mean.size))
-
-
-def _most_likely(mean: Array, difference: Array, relative: float) -> tuple[float, float]:
-    """Floor and part of the greatest likelihood, both from 0 up."""
-    from scipy.optimize import minimize
-
-    scale = float(np.median(mean))
-
-    def cost(parameters: Array) -> float:
-        sd = np.abs(parameters[0]) * scale + np.abs(parameters[1]) * mean
-        sd = np.maximum(sd, 1e-12 * scale)
-        return float(np.sum(np.log(sd) + difference**2 / (4.0 * sd**2)))
-
-    starts = ([0.1 * relative, relative], [relative, 0.1 * relative], [0.0, relative])
-    fits = [minimize(cost, start, method="Nelder-Mead") for start in starts]
-    best = np.abs(min(fits, key=lambda fit: float(fit.fun)).x)
-    return float(best[0]) * scale, float(best[1])
+    return precision_of_squares(mean, 0.5 * difference**2, np.ones(mean.size))
 
 
 @dataclass(frozen=True)
@@ -149,6 +124,24 @@ class DuplicatePair:
     kind: str
     first: QualityRecord
     second: QualityRecord
+
+
+def sample_without_mark(sample: str) -> str:
+    """Return the name of a sample without the word that marks it as a duplicate.
+
+    Examples
+    --------
+    >>> sample_without_mark("B40-24h dup")
+    'B40-24h'
+    """
+    return _DUPLICATE.sub("", sample.replace("_", " ")).strip(" -:#")
+
+
+def kind_of_pair(sample: str, first: QualityRecord, second: QualityRecord) -> str:
+    """Return "solution", "tail" or "head" for a pair, by its unit and its name."""
+    if first.value("g/L") is not None and second.value("g/L") is not None:
+        return "solution"
+    return "tail" if _TAIL.search(sample) else "head"
 
 
 _UNITS = {"solution": "g/L", "head": "kg/t", "tail": "kg/t"}
@@ -194,7 +187,7 @@ def quality_notes(
 def _of_standards(standards: Sequence[QualityRecord]) -> str:
     words = []
     for record in standards:
-        value, expected = record.value(record.unit), _number(record.expected, record.decimal)
+        value, expected = record.value(record.unit), record.certified
         if value is not None and expected:
             off = 100.0 * (value / expected - 1.0)
             words.append(f"{record.sample} {record.analyte} {off:+.1f} %")
