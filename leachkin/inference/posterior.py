@@ -1,6 +1,7 @@
 """The posterior of a least-squares problem, sampled by an ensemble of walkers.
 
-Flat within the bounds on the fitted scales; what is known beforehand enters as rows of the problem.
+Flat within the bounds on the fitted scales, for shares flat in the share itself; what is known
+beforehand enters as rows of the problem.
 Walkers step along the differences of others and stretch towards them, so that no step size is
 tuned [terbraak2006, goodman2010]. Needs the extra ``posterior``.
 """
@@ -55,7 +56,8 @@ class Posterior:
     names : tuple of str
     scales : tuple of "linear", "log", "logit"
     low, high : ndarray, shape (p,)
-        Bounds on the fitted scales, within which all values were equally likely beforehand.
+        Bounds on the fitted scales, within which all values were equally likely beforehand: on
+        that scale, and of a log-odds on the scale of the share.
     best : ndarray, shape (p,)
         The least-squares estimate.
     draws : ndarray, shape (n, p)
@@ -141,7 +143,10 @@ class Posterior:
             raise argument_error("j", str(j), f"0 to {len(self.names) - 1}")
         column = self.draws[:, j]
         value = float(to_natural(self.scales[j], self.best[j]))
-        open_low, open_high = open_ends(column, self.low[j], self.high[j], level)
+        bounds = _flat(self.scales[j], np.array([self.low[j], self.high[j]]))
+        open_low, open_high = open_ends(
+            _flat(self.scales[j], column), float(bounds[0]), float(bounds[1]), level
+        )
         if open_low and open_high:
             return Interval(value, None, None, None, level, "none", WHOLE_RANGE)
         one_sided = open_low or open_high
@@ -162,6 +167,11 @@ class Posterior:
     def method(self) -> str:
         """How intervals are made, and whether the chain was long enough for them."""
         return "posterior" if self.long_enough else "posterior, chain not long enough"
+
+
+def _flat(scale: Scale, fitted: Array) -> Array:
+    """Return values on the scale on which all were equally likely beforehand."""
+    return to_natural(scale, fitted) if scale == "logit" else fitted
 
 
 def open_ends(column: Array, low: float, high: float, level: float = 0.95) -> tuple[bool, bool]:
@@ -246,7 +256,8 @@ def sample_posterior(
     With stated precision the density is ``exp(-S/2)``. Where the scatter was estimated (none
     stated, or larger than stated) it is integrated over with 1/sigma: ``S^(-n/2)``, n rows, which
     is Student's t for a linear model, with the degrees of freedom of the linearised interval
-    [gelman2013].
+    [gelman2013]. Flat log-odds would put nearly all weight next to 0 and 1, so that shares are
+    flat as they are.
     """
     emcee = _emcee()
     count = _checked(problem, estimate, walkers, most_steps)
@@ -332,6 +343,7 @@ class _Density:
         if inside.any():
             with np.errstate(over="ignore", invalid="ignore", divide="ignore", under="ignore"):
                 found[inside] = self._of_squares(self.squares(vectors[inside]))
+                found[inside] += self._of_shares(vectors[inside])
         found[~np.isfinite(found)] = -np.inf
         return found
 
@@ -340,6 +352,12 @@ class _Density:
             return -0.5 * squares
         rows = self.estimate.residuals.size
         return np.asarray(-0.5 * rows * np.log(squares / self.estimate.sum_of_squares))
+
+    def _of_shares(self, vectors: Array) -> Array:
+        """Return what makes shares, and not their log-odds, equally likely: ln(u (1 - u))."""
+        shares = [j for j, scale in enumerate(self.problem.scales) if scale == "logit"]
+        odds = np.abs(vectors[:, shares])
+        return np.asarray(-np.sum(odds + 2.0 * np.log1p(np.exp(-odds)), axis=1))
 
 
 def _starts(

@@ -103,7 +103,8 @@ def posterior_tests(
     """Return the posterior of a fit, sampled by walkers that start from its covariance.
 
     Beforehand every value within the bounds of the fit is equally likely on the fitted scale
-    (logarithms of times, log-odds of ultimate extractions, energies and exponents as they are);
+    (logarithms of times, energies and exponents as they are; ultimate extractions and shares as the
+    share itself);
     head assays and ``priors`` of the fit count as they were stated.
 
     Parameters

@@ -1,9 +1,10 @@
 import sys
+from dataclasses import replace
 
 import numpy as np
 import pytest
 from numpy.testing import assert_allclose
-from scipy.stats import norm, truncnorm
+from scipy.stats import norm, truncnorm, uniform
 from scipy.stats import t as student
 
 from leachkin.errors import InputProblems, MissingExtraError
@@ -99,6 +100,21 @@ def test_a_quantity_that_the_data_do_not_hold_keeps_its_whole_range():
     assert (ends.low, ends.high, ends.method) == (None, None, "none")
     assert "whole range" in ends.why_not
     assert posterior.interval(1).low is not None
+
+
+def test_a_share_without_data_is_as_likely_anywhere():
+    """Uniform between its bounds, and not in its log-odds, which would pile up at the ends."""
+    columns = np.column_stack([COLUMNS, np.zeros_like(X)])
+    problem = replace(
+        problem_of(columns, low=[-50, -50, -4.0], high=[50, 50, 8.0]),
+        scales=("linear", "linear", "logit"),
+    )
+    _, posterior = sampled(problem, columns)
+    low, high = 1 / (1 + np.exp([4.0, -8.0]))
+    share = 1 / (1 + np.exp(-posterior.draws[:, 2]))
+    assert_quantiles(share, uniform(low, high - low), posterior.independent_draws)
+    ends = posterior.interval(2)
+    assert (ends.low, ends.high) == (None, None) and "whole range" in ends.why_not
 
 
 def test_a_chain_that_is_not_long_enough_says_so():
