@@ -15,6 +15,7 @@ from leachkin.campaign.plant_words import outside_words
 from leachkin.campaign.result import SCHEMA_VERSION, CampaignResult
 from leachkin.campaign.run import DEFAULT_DRAWS, DEFAULT_LEVEL, STAGES, run_campaign
 from leachkin.campaign.settings import Assumption, Settings, register_table
+from leachkin.campaign.stage_cementation_more import CementationMore
 from leachkin.campaign.stage_results import (
     BudgetStage,
     CementationStage,
@@ -39,6 +40,7 @@ __all__ = [
     "Campaign",
     "CampaignNextTests",
     "CampaignResult",
+    "CementationMore",
     "CementationStage",
     "CheckOutcome",
     "GangueStage",

@@ -17,11 +17,13 @@ from leachkin.campaign.settings_sheet import (
     read_settings_workbook,
 )
 from leachkin.campaign.sheets import (
+    cementation_tests_of_sheets,
     metals_of_sheets,
     observed_of_sheet,
     read_sheets,
     tests_of_sheets,
 )
+from leachkin.cementation import CementationTest
 from leachkin.errors import InputProblems
 from leachkin.files import (
     WORKBOOK_ENDINGS,
@@ -54,6 +56,8 @@ class Campaign:
     inputs : mapping of file name to SHA-256
     overrides : mapping of dotted key to text
         What-ifs of this run.
+    cementation_tests : tuple of CementationTest
+        Concentration against time over a precipitant.
     """
 
     file: str
@@ -64,6 +68,7 @@ class Campaign:
     problems: tuple[Problem, ...] = ()
     inputs: Mapping[str, str] = field(default_factory=dict)
     overrides: Mapping[str, str] = field(default_factory=dict)
+    cementation_tests: tuple[CementationTest, ...] = ()
 
     @property
     def title(self) -> str:
@@ -185,13 +190,14 @@ def _of_document(
     sheets, sheet_problems = read_sheets(settings, folder, document.file)
     tests, test_problems = tests_of_sheets(settings, sheets)
     observed, observed_problems = observed_of_sheet(settings, sheets)
+    cemented, cemented_problems = cementation_tests_of_sheets(settings, sheets)
     inputs = {document.file.split("#")[0]: sha256_of(document.content)}
     inputs |= {
         sheet.file.split("#")[0]: sha256_of(sheet.content)
         for found in sheets.values()
         for sheet in found
     }
-    found = (*sheet_problems, *test_problems, *observed_problems)
+    found = (*sheet_problems, *test_problems, *observed_problems, *cemented_problems)
     everything = (*before, *problems, *assumed_problems(settings, document.file), *found)
     return Campaign(
         document.file,
@@ -202,6 +208,7 @@ def _of_document(
         _without_repeats(everything),
         inputs,
         overrides,
+        cemented,
     )
 
 

@@ -5,10 +5,13 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
+import numpy as np
+
 from leachkin.campaign.bands import Quantity, in_words, listed
 from leachkin.campaign.plant_words import outside_words
 from leachkin.campaign.result import CampaignResult
 from leachkin.campaign.settings import Assumption
+from leachkin.campaign.stage_cementation_more import CementationMore
 from leachkin.campaign.stage_results import CementationStage, HeapStage, TankStage
 from leachkin.problems import Problem
 
@@ -33,6 +36,8 @@ def _lines(result: CampaignResult) -> Iterator[str]:
     yield from _reagent_lines(result)
     if result.cementation is not None:
         yield from _cementation_lines(result.cementation)
+    if result.cementation_more is not None:
+        yield from _further_cementation_lines(result.cementation_more)
     yield _assumed_line(result.assumed)
     yield from _outside_lines(result)
     yield from _law_lines(result)
@@ -184,6 +189,25 @@ def _cementation_lines(stage: CementationStage) -> Iterator[str]:
         f"({', '.join(shares)} kg/m3); {in_words(stage.net_kg_per_kg)} kg/kg net and "
         f"{in_words(stage.gross_kg_per_kg)} kg/kg as received, per kg recovered."
     )
+
+
+def _further_cementation_lines(found: CementationMore) -> Iterator[str]:
+    if found.reconciliation is not None:
+        yield f"Site: {found.reconciliation.text}."
+    if found.course is not None:
+        shares = {name: float(np.median(share)) for name, share in found.course.shares.items()}
+        ranked = sorted(shares.items(), key=lambda pair: -pair[1])
+        parts = [f"{name} {_PERCENT * share:.3g} %" for name, share in ranked]
+        yield f"Sinks by the mixed potential: {', '.join(parts)}. {found.course.remark}"
+    for metal, ranking in found.rankings.items():
+        yield f"{metal} cementation tests: {ranking.verdict}"
+    if found.vessel is not None:
+        vessel = found.vessel
+        size = f"{vessel.vessel_m3:.3g} m3, {60 * vessel.contact_h:.3g} min of contact"
+        yield (
+            f"{vessel.kind.capitalize()} for {vessel.barren_g_per_L:.3g} g/L {vessel.metal} left: "
+            f"{size}."
+        )
 
 
 def _assumed_line(assumed: tuple[Assumption, ...]) -> str:

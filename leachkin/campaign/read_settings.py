@@ -390,6 +390,8 @@ def _default_tables(walk: _Walk) -> Iterator[str]:
     measured = ("tests", "bench", "column_log", "extraction")
     if {f"tables.{name}" for name in measured} & set(walk.values):
         yield from ({"precision", "fit"} - walk.tables)
+    elif "tables.cementation_tests" in walk.values:
+        yield from ({"precision"} - walk.tables)
 
 
 def _put_in_defaults(walk: _Walk) -> None:

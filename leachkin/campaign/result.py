@@ -7,6 +7,7 @@ from dataclasses import dataclass, field
 from typing import Any
 
 from leachkin.campaign.settings import Assumption
+from leachkin.campaign.stage_cementation_more import CementationMore
 from leachkin.campaign.stage_results import (
     BudgetStage,
     CementationStage,
@@ -56,6 +57,8 @@ class CampaignResult:
         Level of the bands.
     next_test : tuple of str
         What further tests would tell, in sentences; empty where only some stages were run.
+    cementation_more : CementationMore or None
+        Order of potentials, rates, vessel, mixed potential, barren and site.
     """
 
     title: str
@@ -76,6 +79,7 @@ class CampaignResult:
     notes: tuple[str, ...] = ()
     level: float = 0.95
     next_test: tuple[str, ...] = ()
+    cementation_more: CementationMore | None = None
 
     def headline(self) -> tuple[str, ...]:
         """Return the first page in sentences: the answer, what rules, reagents, what is assumed."""

@@ -13,6 +13,7 @@ from leachkin.campaign.bands import Band, Quantity, plain_number
 from leachkin.campaign.diagnostics_dict import diagnostics_dict, posterior_dict
 from leachkin.campaign.evidence_tables import evidence_tables
 from leachkin.campaign.result import SCHEMA_VERSION, CampaignResult
+from leachkin.campaign.stage_cementation_more import CementationMore
 from leachkin.campaign.stage_results import (
     BudgetStage,
     CementationStage,
@@ -41,6 +42,7 @@ def result_dict(result: CampaignResult) -> dict[str, Any]:
         "tank": _or_none(result.tank, _tank),
         "heap": _or_none(result.heap, _heap),
         "cementation": _or_none(result.cementation, _cementation),
+        "cementation_more": _or_none(result.cementation_more, _cementation_more),
         "budget": _or_none(result.budget, _budget),
         "cautions": [_plain(asdict(caution)) for caution in result.cautions],
         "assumed": [_plain(asdict(row)) for row in result.assumed],
@@ -309,6 +311,33 @@ def _cementation(stage: CementationStage) -> dict[str, Any]:
         "sinks": _records(demand.table()),
         "band_holds": list(stage.contains),
         "notes": list(stage.notes),
+    }
+
+
+def _cementation_more(found: CementationMore) -> dict[str, Any]:
+    course = found.course
+    return {
+        "rates": {
+            metal: {
+                "law": ranking.best.law_name,
+                "parameters": [_parameter(p) for p in ranking.best.parameters],
+                "converged": ranking.best.converged,
+                "verdict": ranking.verdict,
+                "indistinguishable": list(ranking.indistinguishable),
+                "control": list(ranking.best.control),
+            }
+            for metal, ranking in found.rankings.items()
+        },
+        "mixed_potential": None
+        if course is None
+        else {
+            "fitted": course.fitted,
+            "remark": course.remark,
+            "factor_kg_per_kg": plain_number(course.factor_kg_per_kg),
+            "shares": {name: plain_number(share) for name, share in course.shares.items()},
+        },
+        "tables": {table.name: _records(table) for table in found.tables()},
+        "notes": list(found.notes),
     }
 
 

@@ -59,6 +59,8 @@ def _all(result: CampaignResult) -> Iterator[ResultTable]:
         yield from _law_tables(result.heap, "heap")
     if result.cementation is not None:
         yield from cementation_tables(result.cementation)
+    if result.cementation_more is not None:
+        yield from result.cementation_more.tables()
     if result.budget is not None:
         yield from budget_tables(result.budget)
     if result.cautions:

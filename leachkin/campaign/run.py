@@ -19,6 +19,7 @@ from leachkin.campaign.result import CampaignResult
 from leachkin.campaign.stage_balance import balance_stage
 from leachkin.campaign.stage_budget import budget_stage
 from leachkin.campaign.stage_cementation import cementation_stage
+from leachkin.campaign.stage_cementation_more import CementationMore, cementation_more
 from leachkin.campaign.stage_gangue import fitted_gangue, given_gangue
 from leachkin.campaign.stage_hazards import hazards_stage
 from leachkin.campaign.stage_heap import heap_stage
@@ -138,7 +139,8 @@ def _check(campaign: Campaign, upto: str | None, seed: int, draws: int, level: f
     names = [*STAGES, *_ALSO]
     if upto is not None and upto not in names:
         raise InputProblems([unknown_name("stage", upto, names, column="upto")])
-    if upto in _OWN_TABLE and not campaign.settings.has(upto):
+    tests_alone = upto == "cementation" and bool(campaign.cementation_tests)
+    if upto in _OWN_TABLE and not campaign.settings.has(upto) and not tests_alone:
         raise InputProblems(
             [
                 Problem(
@@ -232,6 +234,21 @@ def _do_cementation(run: _Run, reuse: CampaignResult | None) -> None:
                 run.level,
             ),
         )
+    if run.campaign.settings.has("cementation") or run.campaign.cementation_tests:
+        run.attempt("cementation_more", lambda: _cementation_more(run))
+
+
+def _cementation_more(run: _Run) -> CementationMore:
+    stage, campaign = run.found.get("cementation"), run.campaign
+    found = cementation_more(
+        campaign.settings,
+        campaign.cementation_tests,
+        None if stage is None else stage.demand,
+        run.level,
+        None if stage is None else stage.site,
+    )
+    run.problems += found.problems
+    return found
 
 
 def _do_budget(run: _Run, reuse: CampaignResult | None) -> None:
@@ -298,6 +315,7 @@ def _result(run: _Run, upto: str | None) -> CampaignResult:
         problems=problems,
         notes=_notes(found),
         level=run.level,
+        cementation_more=found.get("cementation_more"),
     )
 
 
@@ -314,7 +332,7 @@ def _notes(found: dict[str, Any]) -> tuple[str, ...]:
     notes: list[str] = []
     for stage in found.get("kinetics", {}).values():
         notes += [f"{stage.key}: {note}" for note in stage.notes]
-    for name in ("gangue", "tank", "heap", "cementation", "budget"):
+    for name in ("gangue", "tank", "heap", "cementation", "cementation_more", "budget"):
         stage = found.get(name)
         if stage is not None:
             notes += [*stage.notes, *getattr(stage, "outside", ())]
@@ -326,6 +344,8 @@ def _sources(found: dict[str, Any]) -> tuple[str, ...]:
     cementation = found.get("cementation")
     if cementation is not None:
         keys |= set(cementation.demand.sources)
+    if found.get("cementation_more") is not None:
+        keys |= set(found["cementation_more"].sources)
     for caution in found.get("hazards", ()):
         keys |= {key.strip() for key in caution.source.split(",") if key.strip()}
     if found.get("kinetics"):

@@ -46,6 +46,7 @@ TABLES = TableSchema(
         Key("export", "texts", "Exports of a laboratory system: one row a sample and analyte"),
         Key("column_log", "texts", "Daily logs of columns: day, feed, PLS and its assay"),
         Key("extraction", "text", "Extraction against time, where no bench sheet exists"),
+        Key("cementation_tests", "text", "Concentration against time over a precipitant"),
     ),
 )
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from leachkin.campaign.schema import COLDEST_K, HOTTEST_K, Key, TableSchema
+from leachkin.campaign.schema_cementation import MORE_KEYS
 
 CEMENTATION = TableSchema(
     "cementation",
@@ -75,7 +76,7 @@ CEMENTATION = TableSchema(
             default="both",
             choices=("2:1", "1:1", "both"),
         ),
-        Key("pH", "number", "pH of the solution", at_least=-2.0, at_most=14.0),
+        Key("pH", "number", "pH of the solution", at_least=0.0, at_most=14.0),
         Key("free_cyanide", "quantity", "Free cyanide as NaCN", "g/L", at_least=0.0),
         Key(
             "temperature",
@@ -87,6 +88,7 @@ CEMENTATION = TableSchema(
         ),
         Key("As", "quantity", "Arsenic in the solution", "mg/L", at_least=0.0),
         Key("Sb", "quantity", "Antimony in the solution", "mg/L", at_least=0.0),
+        *MORE_KEYS,
     ),
 )
 

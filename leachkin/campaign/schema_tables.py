@@ -18,6 +18,7 @@ from leachkin.campaign.schema_bench import (
     TABLES,
 )
 from leachkin.campaign.schema_candidates import CANDIDATES
+from leachkin.campaign.schema_cementation import MORE_TABLES as CEMENTATION_MORE
 from leachkin.campaign.schema_money import (
     BUDGET,
     BUDGET_CONSUMPTION,
@@ -52,6 +53,7 @@ SCHEMA = Schema(
         solution_table("heap"),
         CEMENTATION,
         CEMENTATION_METALS,
+        *CEMENTATION_MORE,
         BUDGET,
         BUDGET_PRICES,
         BUDGET_CONSUMPTION,

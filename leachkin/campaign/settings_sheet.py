@@ -25,6 +25,7 @@ _TABLE_TABS = {
     "products": "closeout",
     "sieves": "sieves",
     "extraction": "extraction",
+    "cementationtests": "cementation_tests",
 }
 _COLUMNS = ("key", "value", "unit", "low", "high", "source", "by")
 _HEADINGS = {"setting": "key", "name": "key", "parameter": "key", "note": "", "what": ""}

@@ -8,9 +8,11 @@ from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
+from leachkin.campaign.cementation_sheet import read_cementation_sheet
 from leachkin.campaign.extraction_sheet import read_extraction_sheet
 from leachkin.campaign.mapping import read_mappings, with_mapped_headings
 from leachkin.campaign.settings import Setting, Settings
+from leachkin.cementation import CementationTest
 from leachkin.errors import InputProblems
 from leachkin.files import (
     WORKBOOK_ENDINGS,
@@ -54,7 +56,7 @@ def read_sheets(
     problems: list[Problem] = []
     decimal_mark = settings.get("sheets.decimal_mark")
     mappings = read_mappings(settings, folder, file, problems)
-    for name in (*BENCH_SHEETS, "extraction"):
+    for name in (*BENCH_SHEETS, "extraction", "cementation_tests"):
         setting = settings.values.get(f"tables.{name}")
         if setting is not None:
             with _told(problems, setting, file):
@@ -275,3 +277,17 @@ def observed_of_sheet(
             observed += found
             problems += told
     return tuple(observed), tuple(problems)
+
+
+def cementation_tests_of_sheets(
+    settings: Settings, sheets: SheetsByTable
+) -> tuple[tuple[CementationTest, ...], tuple[Problem, ...]]:
+    """Return the tests of concentration against time over a precipitant, none without a sheet."""
+    tests: list[CementationTest] = []
+    problems: list[Problem] = []
+    for sheet in sheets.get("cementation_tests", ()):
+        if not any(p.level == "stop" for p in sheet.problems):
+            found, told = read_cementation_sheet(sheet, testwork_settings(settings))
+            tests += found
+            problems += told
+    return tuple(tests), tuple(problems)

@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from leachkin.campaign.bands import Quantity, quantity_of
 from leachkin.campaign.campaign import Campaign
+from leachkin.campaign.cementation_site import site_behind_demand, taken_by_mixed_potential
 from leachkin.campaign.settings import Settings, draw_setting
 from leachkin.campaign.stage_results import CementationStage, HeapStage, TankStage
 from leachkin.cementation import (
@@ -22,7 +23,7 @@ from leachkin.cementation import (
 )
 from leachkin.constants import STANDARD_TEMPERATURE_K
 from leachkin.errors import InputProblems
-from leachkin.problems import Problem
+from leachkin.problems import Problem, argument_error
 
 Array = NDArray[np.float64]
 
@@ -70,9 +71,12 @@ def cementation_stage(
         fines=settings.number("cementation.fines"),
     )
     solution = _solution(settings, liquor.stated, liquor.flow_m3_per_h, _stated)
-    demand = _demand(settings, solution, precipitant, _stated)
-    drawn = _drawn(settings, liquor, precipitant, draws, seed) if draws else None
-    return _stage(settings, liquor, demand, drawn, level, draws, seed)
+    site = site_behind_demand(settings, solution, precipitant)
+    taken = taken_by_mixed_potential(settings, site)
+    demand = _demand(settings, solution, precipitant, _stated, taken)
+    drawn = _drawn(settings, liquor, precipitant, taken, draws, seed) if draws else None
+    found = _stage(settings, liquor, demand, drawn, level, draws, seed)
+    return found if site is None else replace(found, site=site)
 
 
 def _liquor(
@@ -153,40 +157,70 @@ def _solution(
         dict(metals),
         flow_m3_per_h=flow,
         ferric_g_per_L=get(settings, "cementation.ferric"),
+        iron_g_per_L=settings.get("cementation.iron"),
         acid_g_per_L=settings.get("cementation.free_acid"),
         oxygen_mg_per_L=get(settings, "cementation.dissolved_oxygen"),
         free_cyanide_g_per_L=settings.get("cementation.free_cyanide"),
         pH=settings.get("cementation.pH"),
         arsenic_mg_per_L=settings.get("cementation.As"),
         antimony_mg_per_L=settings.get("cementation.Sb"),
+        mercury_mg_per_L=settings.get("cementation.Hg"),
         temperature_K=settings.get("cementation.temperature") or STANDARD_TEMPERATURE_K,
     )
 
 
 def _demand(
-    settings: Settings, solution: Solution, precipitant: Precipitant, get: Any
+    settings: Settings,
+    solution: Solution,
+    precipitant: Precipitant,
+    get: Any,
+    taken: Mapping[str, Any],
 ) -> CementationDemand:
+    given = {"acid_taken_g_per_L": get(settings, "cementation.acid_taken"), **taken}
     return cementation_demand(
         solution,
         precipitant,
-        recovery=get(settings, "cementation.recovery"),
-        acid_taken_g_per_L=get(settings, "cementation.acid_taken"),
+        recovery=_recovery(settings, solution, get),
         stoichiometry=str(settings.get("cementation.stoichiometry")),
+        **given,
     )
 
 
+def _recovery(settings: Settings, solution: Solution, get: Any) -> Any:
+    """Recovery of every metal as stated, that of the first by its barren where one is given."""
+    stated = get(settings, "cementation.recovery")
+    barren = get(settings, "cementation.barren")
+    if barren is None:
+        return stated
+    by_metal = dict.fromkeys(solution.metals, stated)
+    first = next(iter(solution.metals))
+    feed = solution.grade(first)
+    if np.any(np.asarray(barren) >= feed):
+        raise argument_error(
+            "cementation.barren",
+            f"{float(np.max(barren)):.3g} g/L left of {float(np.min(feed)):.3g} g/L {first}",
+            "less than the feed holds",
+        )
+    return by_metal | {first: 1.0 - np.asarray(barren) / feed}
+
+
 def _drawn(
-    settings: Settings, liquor: _Liquor, precipitant: Precipitant, draws: int, seed: int
+    settings: Settings,
+    liquor: _Liquor,
+    precipitant: Precipitant,
+    taken: Mapping[str, Any],
+    draws: int,
+    seed: int,
 ) -> CementationDemand | None:
     def get(source: Settings, key: str) -> Any:
         return source.draw(key, draws, seed)
 
-    keys = ("ferric", "acid_taken", "dissolved_oxygen", "recovery")
+    keys = ("ferric", "acid_taken", "dissolved_oxygen", "recovery", "barren")
     moving = [get(settings, f"cementation.{key}") for key in keys]
     if all(np.ndim(value) == 0 for value in (*moving, *liquor.drawn.values())):
         return None
     solution = _solution(settings, liquor.drawn, liquor.flow_m3_per_h, get)
-    return _demand(settings, solution, precipitant, get)
+    return _demand(settings, solution, precipitant, get, taken)
 
 
 def _stage(
@@ -208,7 +242,7 @@ def _stage(
         solution=demand.solution,
         precipitant=demand.precipitant,
         demand=demand,
-        recovery=settings.number("cementation.recovery"),
+        recovery=_first_recovery(demand, settings),
         basis=liquor.basis,
         flow_m3_per_h=liquor.flow_m3_per_h,
         solution_m3_per_t=liquor.m3_per_t,
@@ -222,6 +256,15 @@ def _stage(
         notes=(*demand.missing, *demand.warnings, *demand.defaults),
         drawn=drawn,
     )
+
+
+def _first_recovery(demand: CementationDemand, settings: Settings) -> float:
+    """Share of the first metal that is recovered."""
+    first = next(iter(demand.barren_g_per_L), None)
+    if first is None or settings.get("cementation.barren") is None:
+        return settings.number("cementation.recovery")
+    feed = float(np.median(demand.solution.grade(first)))
+    return 1.0 - float(np.median(demand.barren_g_per_L[first])) / feed
 
 
 def _quantity(value: Any, drawn: Any, unit: str, level: float) -> Quantity:

@@ -5,9 +5,10 @@ from __future__ import annotations
 from typing import Any
 
 from leachkin.campaign.campaign import Campaign
+from leachkin.campaign.settings import Settings
 from leachkin.campaign.stage_results import CementationStage, HeapStage
 from leachkin.constants import STANDARD_TEMPERATURE_K
-from leachkin.hazards import Caution, Facts, cautions, facts_with_cementation
+from leachkin.hazards import Caution, Facts, cautions, facts_with_cementation, gas_reagents
 
 ACIDS = ("H2SO4", "HCl", "HNO3")
 CYANIDES = ("NaCN", "KCN", "CN")
@@ -50,8 +51,17 @@ def _facts(campaign: Campaign, heap: HeapStage | None) -> dict[str, Any]:
         "mercury_mg_per_kg": _head(campaign, "Hg", _mg_per_kg_per_kg_per_t),
         "carbonate_share": _head(campaign, "CaCO3", 1.0 / _kg_per_t_of_ore),
         "sulphide_share": _sulphide(campaign),
+        "reagents": gas_reagents(_reagent_names(settings)) or None,
     }
     return {name: value for name, value in known.items() if value is not None}
+
+
+def _reagent_names(settings: Settings) -> set[str]:
+    """Every reagent that the campaign names: prices, consumption, own lines."""
+    names = {*settings.named.get("budget.prices", {}), *settings.free.get("budget.consumption", {})}
+    for group in settings.repeated.get("budget.lines", ()):
+        names |= {str(group["name"].value)} if "name" in group else set()
+    return names
 
 
 def _strongest(campaign: Campaign) -> float | None:

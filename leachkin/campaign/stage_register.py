@@ -32,7 +32,7 @@ def register_of_run(campaign: Campaign, found: Mapping[str, Any]) -> tuple[Assum
     rows = [
         replace(row, in_band=True) if row.key in drawn else row
         for row in campaign.assumed
-        if _used(row, found)
+        if _used(row, found) and not _acts_nowhere(row, campaign)
     ]
     rows += _reagent_rows(campaign, found)
     rows += _order_rows(campaign, found)
@@ -50,6 +50,14 @@ def _drawn_assumptions(campaign: Campaign, found: Mapping[str, Any]) -> tuple[st
 def _used(row: Assumption, found: Mapping[str, Any]) -> bool:
     stage = _STAGE_OF.get(row.key.split(".")[0])
     return stage is None or found.get(stage) is not None
+
+
+def _acts_nowhere(row: Assumption, campaign: Campaign) -> bool:
+    """A default recovery beside a barren; the precision of solids where none was tested."""
+    if row.key in ("precision.tail", "precision.head", "precision.residue"):
+        return bool(campaign.cementation_tests) and not campaign.tests and not campaign.observed
+    barren = campaign.settings.get("cementation.barren")
+    return row.key == "cementation.recovery" and barren is not None
 
 
 def _reagent_rows(campaign: Campaign, found: Mapping[str, Any]) -> list[Assumption]:

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from leachkin.campaign.bands import Band, Quantity
-from leachkin.cementation import CementationDemand, Precipitant, Solution
+from leachkin.cementation import CementationDemand, Precipitant, SiteFit, Solution
 from leachkin.kinetics import (
     Evidence,
     FitResult,
@@ -380,6 +380,8 @@ class CementationStage:
         For every draw, through the same function.
     draws : mapping of str to ndarray, shape (draws,)
         Draws of the figures per tonne of ore, by field name.
+    site : SiteFit or None
+        The fitted mixed potential, where the demand rests on it.
     """
 
     solution: Solution
@@ -399,6 +401,7 @@ class CementationStage:
     notes: tuple[str, ...] = ()
     drawn: CementationDemand | None = None
     draws: Mapping[str, Array] = field(default_factory=dict)
+    site: SiteFit | None = None
 
 
 @dataclass(frozen=True)

@@ -53,8 +53,11 @@ heap = _stage_command(
 )
 cementation = _stage_command(
     "cementation",
-    "Scrap iron or zinc dust by sink, hydrogen and feasibility.\n\nNeeds [cementation]; the "
-    "solution is stated there or comes from the heap or the tanks.",
+    "Scrap iron or zinc dust by sink, hydrogen, couples in order, rates, vessel and barren.\n\n"
+    "Needs [cementation], or cementation_tests under [tables] for rates alone. The solution is "
+    "stated there or comes from the heap or the tanks. [cementation.vessel] sizes a vessel, "
+    "[cementation.mixed_potential] ranks the sinks along it, [cementation.site] fits that to a "
+    "barren.",
 )
 budget = _stage_command(
     "budget",

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from leachkin.campaign import CampaignResult
+from leachkin.report.cementation_figures import cementation_figures
 from leachkin.report.figures.style import ReportFigure
 from leachkin.report.kinetics_figures import kinetics_figures
 from leachkin.report.plant_figures import plant_figures
@@ -20,4 +21,4 @@ def report_figures(result: CampaignResult) -> tuple[ReportFigure, ...]:
     tuple of ReportFigure
         SVG text, the same bytes for the same result.
     """
-    return (*kinetics_figures(result), *plant_figures(result))
+    return (*kinetics_figures(result), *plant_figures(result), *cementation_figures(result))

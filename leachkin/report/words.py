@@ -17,6 +17,8 @@ _IN_MODEL = {
     "tank": "ideally mixed tanks in series with their reagent balance",
     "heap": "plug flow through a lift with cure, contacted fraction, delivery factor and moisture",
     "cementation": "stoichiometric and stated losses of the precipitant, one pass",
+    "cementation_more": "couples at the activities of the solution; sinks by the mixed potential, "
+    "which sets no budget until it is fitted to a barren of the site",
 }
 _NOT_IN_MODEL = (
     "biology and heat balance",
