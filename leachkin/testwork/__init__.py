@@ -12,6 +12,7 @@ from leachkin.testwork.control_chart import (
     zone_signals,
 )
 from leachkin.testwork.detection_limit import DetectionLimit, detection_limit
+from leachkin.testwork.due import Addition, Due, addition_to_set_point, due_list, due_table
 from leachkin.testwork.explain import explain_balance
 from leachkin.testwork.lab_export import is_lab_export, read_lab_export, read_quality
 from leachkin.testwork.names import EXAMPLE
@@ -29,6 +30,13 @@ from leachkin.testwork.quality_tables import (
     quality_tables,
 )
 from leachkin.testwork.read import domain_heads, read_tests
+from leachkin.testwork.reagent_ledger import (
+    ReagentLedger,
+    reagent_by_time_table,
+    reagent_ledger,
+    reagent_table,
+    reagents_of,
+)
 from leachkin.testwork.reagent_use import ReagentUse, reagent_use
 from leachkin.testwork.reconcile import (
     Adjustment,
@@ -59,9 +67,16 @@ from leachkin.testwork.records import (
 from leachkin.testwork.result_tables import balance_table, extraction_table, test_inventory
 from leachkin.testwork.settings import BalanceLimits, TestworkSettings, read_precision
 from leachkin.testwork.sizes import SizeDistribution
+from leachkin.testwork.titration import (
+    grams_to_set_point,
+    stock_strength_g_per_L,
+    stock_to_set_point_mL,
+    strength_by_titration_g_per_L,
+)
 
 __all__ = [
     "EXAMPLE",
+    "Addition",
     "Adjustment",
     "AliquotPolicy",
     "Answers",
@@ -70,6 +85,7 @@ __all__ = [
     "Candidate",
     "ControlChart",
     "DetectionLimit",
+    "Due",
     "DuplicatePair",
     "DuplicatePrecision",
     "Exclusion",
@@ -81,19 +97,24 @@ __all__ = [
     "Product",
     "QualityRecord",
     "RangeChart",
+    "ReagentLedger",
     "ReagentUse",
     "Reconciliation",
     "SizeDistribution",
     "Test",
     "TestworkSettings",
     "VesselLog",
+    "addition_to_set_point",
     "balance_table",
     "charts_of_standards",
     "detection_limit",
     "domain_heads",
+    "due_list",
+    "due_table",
     "explain_balance",
     "extraction_of_column_log",
     "extraction_table",
+    "grams_to_set_point",
     "individuals_chart",
     "is_bench_sheet",
     "is_column_log",
@@ -111,12 +132,19 @@ __all__ = [
     "read_precision",
     "read_quality",
     "read_tests",
+    "reagent_by_time_table",
+    "reagent_ledger",
+    "reagent_table",
     "reagent_use",
+    "reagents_of",
     "reconcile_balance",
     "reconciled_table",
     "reconciliation_lines",
     "reconciliation_table",
     "repeat_of",
+    "stock_strength_g_per_L",
+    "stock_to_set_point_mL",
+    "strength_by_titration_g_per_L",
     "tables_of_bench_sheet",
     "test_inventory",
     "test_names",

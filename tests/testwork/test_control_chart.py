@@ -150,7 +150,7 @@ def test_levels_that_are_alike_tell_no_floor():
 
 JOBS = "job,date,sample,analyte,value,qualifier,unit,type,expected\n"
 JOBS += "".join(
-    f"J{n},2026-01-{n + 1:02d},OREAS-like A,Cu,{value},,%,standard,0.50\n"
+    f"J{n},2026-01-{n + 1:02d},house standard A,Cu,{value},,%,standard,0.50\n"
     for n, value in enumerate((0.50, 0.51, 0.49, 0.50, 0.51, 0.50, 0.49, 0.50, 0.58), start=1)
 )
 JOBS += "".join(f"J{n},2026-01-05,blank,Cu,{v},,mg/L,,\n" for n, v in enumerate((0.1, 0.2, 0.3)))
