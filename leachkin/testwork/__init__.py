@@ -14,7 +14,15 @@ from leachkin.testwork.control_chart import (
 from leachkin.testwork.detection_limit import DetectionLimit, detection_limit
 from leachkin.testwork.due import Addition, Due, addition_to_set_point, due_list, due_table
 from leachkin.testwork.explain import explain_balance
+from leachkin.testwork.judgement import (
+    Judgement,
+    JudgementLimits,
+    Reason,
+    judge_tests,
+    judgement_table,
+)
 from leachkin.testwork.lab_export import is_lab_export, read_lab_export, read_quality
+from leachkin.testwork.mixed_up import MixUp, mix_ups
 from leachkin.testwork.names import EXAMPLE
 from leachkin.testwork.observe import observe, observed_from_extraction
 from leachkin.testwork.precision_estimate import DuplicatePrecision, precision_of_groups
@@ -92,13 +100,17 @@ __all__ = [
     "GroupTest",
     "Head",
     "History",
+    "Judgement",
+    "JudgementLimits",
     "MetalBalance",
+    "MixUp",
     "Observed",
     "Product",
     "QualityRecord",
     "RangeChart",
     "ReagentLedger",
     "ReagentUse",
+    "Reason",
     "Reconciliation",
     "SizeDistribution",
     "Test",
@@ -119,7 +131,10 @@ __all__ = [
     "is_bench_sheet",
     "is_column_log",
     "is_lab_export",
+    "judge_tests",
+    "judgement_table",
     "metal_balance",
+    "mix_ups",
     "observe",
     "observed_from_extraction",
     "pair_values",

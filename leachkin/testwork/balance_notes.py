@@ -7,14 +7,10 @@ from typing import get_args
 import numpy as np
 
 from leachkin.problems import Problem
+from leachkin.testwork.falls import fall_of
 from leachkin.testwork.records import AliquotPolicy, MetalBalance, Test
-from leachkin.testwork.recursion import assays_for_balance, solution_ledger
 from leachkin.testwork.settings import BalanceLimits
 
-#: A fall of concentration is remarked on above this many standard deviations.
-_CLEAR_FALL_SD = 2.0
-#: Mass loss shown as the other bound where the residue was not weighed.
-_BOUND_OF_MASS_LOSS = 0.10
 #: Difference of two extractions that nobody would ask about.
 _SMALL_DIFFERENCE = 0.0005
 
@@ -31,7 +27,7 @@ def balance_notes(
         *_gravity(test, balance),
         *_over_extraction(test, balance, chosen),
         *_closure(test, balance, chosen),
-        *_residue_mass(test, balance, mass_is_known),
+        *_residue_mass(test, balance, mass_is_known, chosen.most_mass_loss),
         *_fall(test, balance),
         *_bounded(test, balance),
     ]
@@ -202,7 +198,9 @@ def _closure(test: Test, balance: MetalBalance, limits: BalanceLimits) -> list[P
     ]
 
 
-def _residue_mass(test: Test, balance: MetalBalance, mass_is_known: bool) -> list[Problem]:
+def _residue_mass(
+    test: Test, balance: MetalBalance, mass_is_known: bool, most_mass_loss: float
+) -> list[Problem]:
     solids = [p for p in test.products if p.is_undissolved_metal and p.amount is not None]
     mass = sum(p.amount or 0.0 for p in solids)
     if mass > test.solids_g * (1.0 + 2.0 * test.residue_mass_sd_relative):
@@ -212,53 +210,31 @@ def _residue_mass(test: Test, balance: MetalBalance, mass_is_known: bool) -> lis
     dissolved, left = balance.final_dissolved_g, balance.final_undissolved_g
     if mass_is_known or not dissolved or left is None:
         return []
-    lighter = dissolved / (dissolved + left * (1.0 - _BOUND_OF_MASS_LOSS))
+    lighter = dissolved / (dissolved + left * (1.0 - most_mass_loss))
     found = (
         f"the residue of test {test.name} was not weighed: "
         f"{_percent(dissolved / (dissolved + left))} without a loss of mass, {_percent(lighter)} "
-        f"with a loss of {100 * _BOUND_OF_MASS_LOSS:.0f} %"
+        f"with a loss of {100 * most_mass_loss:.0f} %"
     )
     return [_note(test, "closeout", "mass (g)", found, "a dry mass", "weigh the residue")]
 
 
 def _fall(test: Test, balance: MetalBalance) -> list[Problem]:
     """Say how much of a falling concentration is dilution by make-up."""
-    if balance.analyte not in test.solution or balance.time_h.size < 2:
+    fall = fall_of(test, balance.analyte)
+    if fall is None:
         return []
-    if test.has_carbon(balance.analyte):
-        return []
-    used = assays_for_balance(test, balance.analyte)
-    peak, last = int(np.argmax(used.value)), used.value.size - 1
-    noise = float(np.hypot(used.sd[peak], used.sd[last]))
-    fall = float(used.value[peak] - used.value[last])
-    if used.value[peak] <= 0.0 or fall <= _CLEAR_FALL_SD * noise or (used.bound != 0).any():
-        return []
-    diluted = _diluted(test, balance.analyte, float(used.value[peak]), peak, last)
-    rest = diluted - float(used.value[last])
     words = "the rest is within the precision of the assays"
-    if rest > _CLEAR_FALL_SD * noise:
-        words = "the rest may be precipitation, or an assay"
-    elif rest < -_CLEAR_FALL_SD * noise:
+    if fall.was_still_leaching:
         words = "so it was still leaching"
-    share = 100.0 / float(used.value[peak])
+    elif not fall.is_explained:
+        words = "the rest may be precipitation, or an assay"
     found = (
-        f"{balance.analyte} in test {test.name} falls by {share * fall:.1f} % from "
-        f"{balance.time_h[peak]:g} h to {balance.time_h[last]:g} h; dilution at the aliquots "
-        f"accounts for {share * (used.value[peak] - diluted):.1f} %, {words}"
+        f"{balance.analyte} in test {test.name} falls by {100.0 * fall.share:.1f} % from "
+        f"{fall.from_h:g} h to {fall.to_h:g} h; dilution at the aliquots "
+        f"accounts for {100.0 * fall.by_dilution:.1f} %, {words}"
     )
-    row = used.rows[last] if used.rows else None
-    return [_note(test, "readings", balance.analyte, found, row=row)]
-
-
-def _diluted(test: Test, analyte: str, concentration: float, first: int, last: int) -> float:
-    """Concentration at a later reading if nothing leached in between [g/L]."""
-    ledger = solution_ledger(test)
-    strength = test.makeup_metal_g_per_L.get(analyte, np.zeros(test.time_h.size))
-    for i in range(first, last):
-        kept = concentration * (ledger.volume_mL[i] - ledger.removed_mL[i])
-        came = float(np.nan_to_num(strength[i])) * ledger.makeup_mL[i]
-        concentration = (kept + came) / ledger.volume_mL[i + 1]
-    return float(concentration)
+    return [_note(test, "readings", balance.analyte, found, row=fall.row)]
 
 
 def _bounded(test: Test, balance: MetalBalance) -> list[Problem]:
